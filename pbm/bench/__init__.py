@@ -1,0 +1,1 @@
+"""The terminal screen at the bench; reads the store, never the feed."""

@@ -1,0 +1,1 @@
+"""Joins doors to rooms; owns stdout, stderr, exit codes and the clock. One file per command."""

@@ -1,0 +1,63 @@
+"""The laboratory's folder: where `lab.toml` is, and the places of what the commands read and write beside it."""
+
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from pbm.errors import InputError
+
+LabOption = Annotated[
+    Path | None, typer.Option("--lab", metavar="FOLDER", help="Folder that holds lab.toml.", show_default="the current folder")
+]
+JsonOption = Annotated[bool, typer.Option("--json", help="Print JSON for a program instead of text for a person.")]
+
+
+@dataclass(frozen=True)
+class LabFolder:
+    """The files a laboratory works with."""
+
+    root: Path
+
+    @classmethod
+    def find(cls, given: Path | None) -> "LabFolder":
+        """The folder given, or the current one; it must hold `lab.toml`.
+
+        Raises
+        ------
+        InputError
+            If there is no `lab.toml`.
+        """
+        root = given or Path()
+        if not (root / "lab.toml").is_file():
+            raise InputError(
+                f"There is no lab.toml in {root.absolute()}. Go to the folder that holds it, or name that folder with --lab FOLDER; "
+                "`pbm demo` makes an example."
+            )
+        return cls(root)
+
+    @property
+    def lab(self) -> Path:
+        """`lab.toml`."""
+        return self.root / "lab.toml"
+
+    @property
+    def history(self) -> Path:
+        """Parquet files, one folder per stream."""
+        return self.root / "history"
+
+    @property
+    def plan(self) -> Path:
+        """`plan.toml`."""
+        return self.root / "plan.toml"
+
+    @property
+    def reports(self) -> Path:
+        """Reports as HTML and JSON."""
+        return self.root / "reports"
+
+    @property
+    def store(self) -> Path:
+        """What `pbm watch` writes."""
+        return self.root / "watch.sqlite"

@@ -1,0 +1,1 @@
+"""Arithmetic: numbers and arrays in, numbers and arrays out. No clock, file, record or log."""

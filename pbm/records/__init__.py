@@ -1,0 +1,1 @@
+"""What is handed from room to room: frozen, typed records."""

@@ -1,0 +1,63 @@
+"""An alarm as the bench meets it: which stream, which side, how large, since when."""
+
+from dataclasses import dataclass
+from typing import Literal
+
+from pbm.records.stream import StreamName
+
+
+@dataclass(frozen=True, slots=True)
+class OnsetEstimate:
+    """When an error began and how large it is, judged from the results before the alarm.
+
+    Attributes
+    ----------
+    onset, onset_low, onset_high
+        UTC microseconds: the most likely first affected result and the ends of its 90 % set.
+    results
+        Offered results from the onset to the alarm, both included.
+    size
+        Estimated error in the stream's unit, signed.
+    size_in_tea
+        The same in units of TEa at the centre.
+    expected_unreliable
+        Expected number of unreliable results among them.
+    """
+
+    onset: int
+    onset_low: int
+    onset_high: int
+    results: int
+    size: float
+    size_in_tea: float
+    expected_unreliable: float
+
+
+@dataclass(frozen=True, slots=True)
+class Alarm:
+    """The opening of an episode.
+
+    Attributes
+    ----------
+    stream, monitor
+        The stream and the index of the monitor in its plan.
+    time, specimen
+        Of the result that opened the episode.
+    side
+        "HIGH" or "LOW".
+    statistic, value, limit
+        Name of the statistic, its value and the limit it crossed (on its own scale).
+    plan_sha256
+        Which plan was in force.
+    """
+
+    stream: StreamName
+    monitor: int
+    time: int
+    specimen: str
+    side: Literal["HIGH", "LOW"]
+    statistic: str
+    value: float
+    limit: float
+    estimate: OnsetEstimate
+    plan_sha256: str = ""

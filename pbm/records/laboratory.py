@@ -1,0 +1,177 @@
+"""The laboratory as its people describe it in `lab.toml`: extract columns, analytes, TEa, controls, alarm budget."""
+
+from typing import Annotated, Literal
+from zoneinfo import ZoneInfo, available_timezones
+
+from pydantic import AfterValidator, Field, model_validator
+
+from pbm.records.quantities import (
+    AlarmRate,
+    AllowableError,
+    AnalyticSd,
+    ClockTime,
+    EveryResults,
+    Finite,
+    Lag,
+    NotNegative,
+    Positive,
+    Rate,
+    ResponseLag,
+    Signs,
+    Written,
+)
+
+
+def _known_zone(name: str) -> str:
+    if name not in available_timezones():
+        raise ValueError('expected a time zone of the IANA database such as "Atlantic/Azores"')
+    return name
+
+
+class Identity(Written):
+    """Who the laboratory is and in which time zone its clocks stand."""
+
+    name: str = Field(min_length=1)
+    timezone: Annotated[str, AfterValidator(_known_zone)]
+
+    @property
+    def zone(self) -> ZoneInfo:
+        """The time zone of the laboratory's clocks."""
+        return ZoneInfo(self.timezone)
+
+
+class Extract(Written):
+    """Which column of the extract holds what; columns not named here are ignored."""
+
+    time: str
+    analyte: str
+    value: str
+    analyser: str | None = None
+    unit: str | None = None
+    specimen: str | None = None
+    ward: str | None = None
+    sex: str | None = None
+    age: str | None = None
+    priority: str | None = None
+    patient: str | None = None
+    kind: str | None = None
+    time_format: str | None = None
+    decimal: Literal[".", ","] = "."
+    delimiter: str | None = Field(default=None, min_length=1, max_length=1)
+    encoding: str | None = None
+    patient_kinds: tuple[str, ...] = ("P",)
+
+
+class Alarms(Written):
+    """How many false alarms the bench can bear, and how long it takes to stop reporting after one."""
+
+    budget: AlarmRate = Rate(1, 30)
+    fleet_budget: AlarmRate | None = None
+    response_lag: ResponseLag = Lag(results=10)
+
+
+class ControlLevel(Written):
+    """A control material: its mean and SD on the analyser, and how often it is measured at an event."""
+
+    mean: Finite
+    sd: Positive
+    repeats: int = Field(default=1, ge=1, le=10)
+
+
+class Controls(Written):
+    """A control schedule: clock times or a count of results, the rules, and the levels measured."""
+
+    times: tuple[ClockTime, ...] | None = None
+    every: EveryResults | None = None
+    rules: tuple[str, ...] | None = None
+    levels: tuple[ControlLevel, ...] = ()
+
+    @model_validator(mode="after")
+    def _times_or_count(self) -> "Controls":
+        if self.times is not None and self.every is not None:
+            raise ValueError('expected times or every, not both')
+        return self
+
+    def over(self, default: "Controls") -> "Controls":
+        """These controls with what is not said here taken from the laboratory's default."""
+        scheduled = self if self.times is not None or self.every is not None else default
+        return Controls(
+            times=scheduled.times,
+            every=scheduled.every,
+            rules=self.rules if self.rules is not None else default.rules,
+            levels=self.levels or default.levels,
+        )
+
+
+class FaultList(Written):
+    """Errors to simulate: one kind in several sizes. Sizes in TEa, in analytic SD ("SD"), or in the analyte's unit ("unit")."""
+
+    kind: Literal["shift", "drift", "noise", "sporadic"] = "shift"
+    sizes: tuple[Positive, ...] = Field(min_length=1)
+    unit: Literal["TEa", "SD", "unit", "percent"] = "TEa"
+    signs: Signs = "both"
+    over: EveryResults | None = None
+    share: Annotated[float, Field(gt=0, le=1)] | None = None
+    weight: Positive = 1.0
+
+
+DEFAULT_FAULTS = (FaultList(sizes=(0.25, 0.5, 0.75, 1.0, 1.5, 2.0)),)
+
+
+class Range(Written):
+    """A closed range of results; an open side is left out."""
+
+    low: Finite | None = None
+    high: Finite | None = None
+
+
+class Analyte(Written):
+    """One measurand: unit, resolution, TEa, analytic SD, spellings, controls and the errors to guard against."""
+
+    unit: str = Field(min_length=1)
+    step: Positive
+    allowable_error: AllowableError
+    analytic_sd: AnalyticSd
+    loinc: str | None = None
+    names: tuple[str, ...] = ()
+    unit_names: tuple[str, ...] = ()
+    reportable: Range = Range()
+    plausible: Range = Range()
+    leave_out_wards: tuple[str, ...] = ()
+    repeat_hours: NotNegative = 0.0
+    budget: AlarmRate | None = None
+    controls: Controls = Controls()
+    faults: tuple[FaultList, ...] = Field(default=DEFAULT_FAULTS, min_length=1)
+
+
+class Lab(Written):
+    """All of `lab.toml`."""
+
+    laboratory: Identity
+    extract: Extract
+    alarms: Alarms = Alarms()
+    controls: Controls = Controls()
+    analytes: dict[str, Analyte] = Field(min_length=1)
+
+    @model_validator(mode="after")
+    def _names_are_unambiguous(self) -> "Lab":
+        owner: dict[str, str] = {}
+        for key, analyte in self.analytes.items():
+            if "@" in key or "/" in key:
+                raise ValueError(f'analyte "{key}": a name may not hold "@" or "/"')
+            for name in {key, *analyte.names}:
+                if (other := owner.setdefault(name, key)) != key:
+                    raise ValueError(f'the spelling "{name}" is given for both {other} and {key}')
+        return self
+
+    def spellings(self) -> dict[str, str]:
+        """Every spelling met in an extract or feed -> the analyte's key."""
+        return {name: key for key, analyte in self.analytes.items() for name in (key, *analyte.names)}
+
+    def controls_of(self, analyte: str) -> Controls:
+        """The control schedule of an analyte: its own, filled up from the laboratory's default."""
+        return self.analytes[analyte].controls.over(self.controls)
+
+    def budget_of(self, analyte: str) -> Rate:
+        """The alarm budget of one stream of an analyte."""
+        return self.analytes[analyte].budget or self.alarms.budget

@@ -1,0 +1,31 @@
+"""One result as it arrives on the live feed."""
+
+from dataclasses import dataclass
+
+from pbm.records.stream import StreamName
+
+
+@dataclass(frozen=True, slots=True)
+class Result:
+    """A patient result.
+
+    Attributes
+    ----------
+    time
+        UTC microseconds since 1970: when it was measured (or, failing that, reported).
+    stream
+        Analyte and analyser.
+    value
+        In the stream's unit; for a censored result the limit that was printed.
+    censor
+        -1 for "<v", +1 for ">v", 0.
+    specimen, ward
+        Text, "" where not given.
+    """
+
+    time: int
+    stream: StreamName
+    value: float
+    censor: int = 0
+    specimen: str = ""
+    ward: str = ""
