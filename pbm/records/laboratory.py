@@ -89,7 +89,7 @@ class Controls(Written):
     @model_validator(mode="after")
     def _times_or_count(self) -> "Controls":
         if self.times is not None and self.every is not None:
-            raise ValueError('expected times or every, not both')
+            raise ValueError("expected times or every, not both")
         return self
 
     def over(self, default: "Controls") -> "Controls":

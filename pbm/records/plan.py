@@ -102,10 +102,12 @@ class MonitorPlan(Written):
         if not self.limits.low < self.centre < self.limits.high:
             raise ValueError("expected limits.low < centre < limits.high")
         if (self.transform == "boxcox") != (self.transform_lambda is not None):
-            raise ValueError("transform_lambda goes with transform = \"boxcox\" and only with it")
+            raise ValueError('transform_lambda goes with transform = "boxcox" and only with it')
         needs_weight = self.statistic in ("ewma", "ewsd")
         if needs_weight != (self.weight is not None) or needs_weight == (self.window is not None):
-            raise ValueError(f"statistic {self.statistic} takes {'weight' if needs_weight else 'window'} and not the other")
+            raise ValueError(
+                f"statistic {self.statistic} takes {'weight' if needs_weight else 'window'} and not the other"
+            )
         return self
 
 

@@ -103,7 +103,9 @@ class AllowableError(Written):
         return self
 
     def __str__(self) -> str:
-        parts = [f"{self.absolute:g}"] * (self.absolute is not None) + [f"{self.percent:g} %"] * (self.percent is not None)
+        parts = [f"{self.absolute:g}"] * (self.absolute is not None) + [f"{self.percent:g} %"] * (
+            self.percent is not None
+        )
         return " or ".join(parts) + (", the greater" if len(parts) == 2 else "")
 
 

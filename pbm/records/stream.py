@@ -27,7 +27,9 @@ class StreamName:
         """
         analyte, at, analyser = text.partition("@")
         if not (analyte and at and analyser):
-            raise InputError(f'"{text}" is not the name of a stream: write analyte@analyser, for example sodium@line-2.')
+            raise InputError(
+                f'"{text}" is not the name of a stream: write analyte@analyser, for example sodium@line-2.'
+            )
         return cls(analyte, analyser)
 
     def __str__(self) -> str:

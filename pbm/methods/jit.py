@@ -1,0 +1,217 @@
+"""One law, one body: a step is a plain Python function, and the loops over history are compiled around that same function.
+
+The live monitor calls a step as it stands, on a list. History and simulation call the loops made here, on arrays; numba compiles step
+and loop together on first use, once per process, without fast-math and without a disk cache (a cached loop keeps old numbers after an
+edit of a step in another file). A value that is not a number stands for a result that was dropped: it moves no state.
+"""
+
+from collections.abc import Callable, MutableSequence, Sequence
+from functools import cache, wraps
+from typing import Any, Protocol, TypeVar
+
+import numpy as np
+import numpy.typing as npt
+
+Floats = npt.NDArray[np.float64]
+Integers = npt.NDArray[np.int64]
+State = MutableSequence[float]
+Parameters = Sequence[float]
+F = TypeVar("F", bound=Callable[..., Any])
+
+
+class Step(Protocol):
+    """`step(state, x, par) -> value`: changes the state in place and returns the statistic (not a number: not judged yet)."""
+
+    __name__: str
+
+    def __call__(self, state: State, x: float, par: Parameters, /) -> float:
+        """Take one admitted value."""
+
+
+@cache
+def compiled(function: Callable[..., Any]) -> Callable[..., Any]:
+    """The function compiled by numba on first call; the same object each time it is asked for."""
+    import numba
+
+    made: Callable[..., Any] = numba.njit(function)
+    return made
+
+
+def kernel(function: F) -> F:
+    """A loop over arrays that is always run compiled (and compiled only when first called)."""
+
+    @wraps(function)
+    def run(*arguments: Any) -> Any:
+        return compiled(function)(*arguments)
+
+    return run  # type: ignore[return-value]
+
+
+@cache
+def _scan_loop(step: Step) -> Callable[..., Any]:
+    law = compiled(step)
+
+    def loop(state: Floats, xs: Floats, par: Parameters, out: Floats) -> None:
+        for i in range(len(xs)):
+            out[i] = law(state, xs[i], par) if xs[i] == xs[i] else np.nan
+
+    return compiled(loop)
+
+
+@cache
+def _until_loop(step: Step) -> Callable[..., Any]:
+    law = compiled(step)
+
+    def loop(
+        states: Floats,
+        starts: Integers,
+        ends: Integers,
+        xs: Floats,
+        par: Parameters,
+        low: float,
+        high: float,
+        found: Integers,
+    ) -> None:
+        state = np.empty(states.shape[1])
+        for j in range(len(starts)):
+            state[:] = states[j]
+            found[j] = -1
+            for i in range(starts[j], ends[j]):
+                if xs[i] == xs[i]:
+                    s = law(state, xs[i], par)
+                    if s > high or s < low:
+                        found[j] = i
+                        break
+
+    return compiled(loop)
+
+
+@cache
+def _states_loop(step: Step) -> Callable[..., Any]:
+    law = compiled(step)
+
+    def loop(state: Floats, xs: Floats, par: Parameters, at: Integers, out: Floats) -> None:
+        i = 0
+        for j in range(len(at)):
+            while i < at[j]:
+                if xs[i] == xs[i]:
+                    law(state, xs[i], par)
+                i += 1
+            out[j] = state
+
+    return compiled(loop)
+
+
+@cache
+def _map_loop(law: Callable[..., float]) -> Callable[..., Any]:
+    body = compiled(law)
+
+    def loop(xs: Floats, par: Parameters, out: Floats) -> None:
+        for i in range(len(xs)):
+            out[i] = body(xs[i], par)
+
+    return compiled(loop)
+
+
+@cache
+def _map_pair_loop(law: Callable[..., float]) -> Callable[..., Any]:
+    body = compiled(law)
+
+    def loop(xs: Floats, ys: Floats, par: Parameters, out: Floats) -> None:
+        for i in range(len(xs)):
+            out[i] = body(xs[i], ys[i], par)
+
+    return compiled(loop)
+
+
+def scan(step: Step, state: Floats, xs: Floats, par: Parameters) -> Floats:
+    """Statistic after each value.
+
+    Parameters
+    ----------
+    step
+        The statistic.
+    state : (s,)
+        Changed in place: the state after the last value.
+    xs : (n,)
+        Values; not-a-number entries are dropped results.
+    par
+        Parameters of the step.
+
+    Returns
+    -------
+    (n,)
+        The statistic; not a number where dropped or not judged yet.
+    """
+    out = np.empty(len(xs))
+    _scan_loop(step)(state, xs, par, out)
+    return out
+
+
+def until(
+    step: Step, states: Floats, starts: Integers, ends: Integers, xs: Floats, par: Parameters, low: float, high: float
+) -> Integers:
+    """First index at which the statistic leaves [low, high], for many starts.
+
+    Parameters
+    ----------
+    step
+        The statistic.
+    states : (r, s)
+        State before the first value of each run; not changed.
+    starts, ends : (r,)
+        Each run reads xs[start:end].
+    xs : (n,)
+        Values; not-a-number entries are dropped results.
+    par
+        Parameters of the step.
+    low, high
+        Control limits; a value on a limit is inside.
+
+    Returns
+    -------
+    (r,)
+        Index into xs of the value that crossed, -1 where none did.
+    """
+    found = np.empty(len(starts), dtype=np.int64)
+    _until_loop(step)(states, starts, ends, xs, par, low, high, found)
+    return found
+
+
+def states_at(step: Step, state: Floats, xs: Floats, par: Parameters, at: Integers) -> Floats:
+    """State before each of the given indices (not decreasing).
+
+    Returns
+    -------
+    (r, s)
+        One state per index.
+    """
+    out = np.empty((len(at), len(state)))
+    _states_loop(step)(state.copy(), xs, par, at, out)
+    return out
+
+
+def mapped(law: Callable[..., float], xs: Floats, par: Parameters) -> Floats:
+    """A scalar law applied to each value in a compiled loop (so that it agrees with plain Python to the last bit).
+
+    Returns
+    -------
+    (n,)
+        law(x, par) for each x.
+    """
+    out = np.empty(len(xs))
+    _map_loop(law)(xs, par, out)
+    return out
+
+
+def mapped_pairs(law: Callable[..., float], xs: Floats, ys: Floats, par: Parameters) -> Floats:
+    """A scalar law of two arguments applied pair by pair in a compiled loop.
+
+    Returns
+    -------
+    (n,)
+        law(x, y, par) for each pair.
+    """
+    out = np.empty(len(xs))
+    _map_pair_loop(law)(xs, ys, par, out)
+    return out

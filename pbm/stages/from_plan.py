@@ -1,0 +1,67 @@
+"""How the words of lab.toml and plan.toml become the numbers that methods work with."""
+
+import math
+
+from pbm.methods.alarm import Limits
+from pbm.methods.chain import Preparation, Tracker
+from pbm.methods.faults import Fault, Reporting
+from pbm.methods.onset import InControl
+from pbm.methods.unreliable import ErrorModel
+from pbm.records.laboratory import Analyte, FaultList
+from pbm.records.plan import MonitorPlan
+
+
+def error_model(analyte: Analyte) -> ErrorModel:
+    """TEa and analytic SD of an analyte."""
+    tea, sd = analyte.allowable_error, analyte.analytic_sd
+    return ErrorModel(tea.absolute or 0.0, tea.percent or 0.0, sd.absolute, sd.cv_percent)
+
+
+def reporting(analyte: Analyte) -> Reporting:
+    """How the analyte's results are rounded and censored."""
+    low, high = analyte.reportable.low, analyte.reportable.high
+    return Reporting(analyte.step, -math.inf if low is None else low, math.inf if high is None else high)
+
+
+def faults_of(analyte: Analyte) -> list[Fault]:
+    """Every error condition that the laboratory wants to guard against: each size, each sign."""
+    return [fault for given in analyte.faults for fault in _each_size(given)]
+
+
+def _each_size(given: FaultList) -> list[Fault]:
+    signs = {"both": (-1, 1), "up": (1,), "down": (-1,)}[given.signs] if given.kind != "noise" else (1,)
+    unit = given.unit if given.kind != "noise" else ""
+    return [
+        Fault(given.kind, size, unit, sign, over=given.over or 1, share=given.share or 1.0)
+        for size in given.sizes
+        for sign in signs
+    ]
+
+
+def preparation(monitor: MonitorPlan) -> Preparation:
+    """Truncation and transform of a monitor."""
+    low, high = monitor.admit.low, monitor.admit.high
+    return Preparation(
+        -math.inf if low is None else low,
+        math.inf if high is None else high,
+        monitor.admit.mode == "winsorize",
+        monitor.transform,
+        1.0 if monitor.transform_lambda is None else monitor.transform_lambda,
+    )
+
+
+def tracker(monitor: MonitorPlan) -> Tracker:
+    """Statistic, parameter and centre of a monitor."""
+    parameter = monitor.weight if monitor.weight is not None else monitor.window
+    assert parameter is not None  # the plan's own check
+    return Tracker(monitor.statistic, float(parameter), monitor.centre)
+
+
+def limits(monitor: MonitorPlan) -> Limits:
+    """Control limits and re-arm share of a monitor."""
+    return Limits(monitor.limits.low, monitor.limits.high, monitor.centre, monitor.rearm)
+
+
+def in_control(monitor: MonitorPlan) -> InControl:
+    """In-control behaviour of a monitor's admitted values, for the estimate of an onset."""
+    return InControl(monitor.centre, monitor.spread, monitor.inflation, monitor.slope)
