@@ -10,6 +10,7 @@ history is already rounded, so its raw value is taken anywhere in its rounding c
 """
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Literal
 
@@ -17,6 +18,13 @@ import numpy as np
 
 from pbm.methods.jit import Floats
 from pbm.methods.unreliable import ErrorModel
+
+SCALES: dict[str, Callable[[Floats, ErrorModel], Floats]] = {
+    "TEa": lambda x, error: error.tea(x),
+    "SD": lambda x, error: error.sd(x),
+    "unit": lambda x, error: np.ones_like(x),
+    "percent": lambda x, error: x / 100,
+}
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,13 +68,7 @@ class Fault:
         """Shift d(x) at full size, in the analyte's unit; 0 for noise."""
         if self.kind == "noise":
             return np.zeros_like(x)
-        scale = {
-            "TEa": error.tea,
-            "SD": error.sd,
-            "unit": np.ones_like,
-            "percent": lambda v: v / 100,
-        }[self.unit]
-        return self.sign * self.size * scale(x)
+        return self.sign * self.size * SCALES[self.unit](x, error)
 
     def growth(self, age: Floats) -> Floats:
         """Share of the full size that each result meets, `age` = 1 for the first affected one."""

@@ -7,7 +7,7 @@ edit of a step in another file). A value that is not a number stands for a resul
 
 from collections.abc import Callable, MutableSequence, Sequence
 from functools import cache, wraps
-from typing import Any, Protocol, TypeVar
+from typing import Any, TypeVar
 
 import numpy as np
 import numpy.typing as npt
@@ -16,16 +16,9 @@ Floats = npt.NDArray[np.float64]
 Integers = npt.NDArray[np.int64]
 State = MutableSequence[float]
 Parameters = Sequence[float]
+# `step(state, x, par) -> value` changes the state in place; the value is not a number while it is not judged yet.
+Step = Callable[[State, float, Parameters], float]
 F = TypeVar("F", bound=Callable[..., Any])
-
-
-class Step(Protocol):
-    """`step(state, x, par) -> value`: changes the state in place and returns the statistic (not a number: not judged yet)."""
-
-    __name__: str
-
-    def __call__(self, state: State, x: float, par: Parameters, /) -> float:
-        """Take one admitted value."""
 
 
 @cache

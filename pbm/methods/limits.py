@@ -52,7 +52,7 @@ class Tail:
         """Predictive limit, as a distance from the centre, for an expected number of episodes in a history of this length."""
         if self.count <= expected:
             return self.threshold
-        growth = (self.count / expected) ** (1 / self.count) - 1
+        growth = math.pow(self.count / expected, 1 / self.count) - 1
         return self.threshold + self.count * self.excess * growth
 
     def rate(self, distance: float) -> float:
