@@ -1,5 +1,7 @@
 """The laboratory as its people describe it in `lab.toml`: extract columns, analytes, TEa, controls, alarm budget."""
 
+import codecs
+from collections.abc import Iterable, Iterator, Mapping
 from typing import Annotated, Literal
 from zoneinfo import ZoneInfo, available_timezones
 
@@ -25,6 +27,14 @@ from pbm.records.quantities import (
 def _known_zone(name: str) -> str:
     if name not in available_timezones():
         raise ValueError('expected a time zone of the IANA database such as "Atlantic/Azores"')
+    return name
+
+
+def _known_encoding(name: str) -> str:
+    try:
+        codecs.lookup(name)
+    except (LookupError, ValueError):
+        raise ValueError('expected an encoding such as "utf-8", "utf-16" or "latin-1"') from None
     return name
 
 
@@ -58,7 +68,7 @@ class Extract(Written):
     time_format: str | None = None
     decimal: Literal[".", ","] = "."
     delimiter: str | None = Field(default=None, min_length=1, max_length=1)
-    encoding: str | None = None
+    encoding: Annotated[str, AfterValidator(_known_encoding)] | None = None
     patient_kinds: tuple[str, ...] = ("P",)
 
 
@@ -124,6 +134,12 @@ class Range(Written):
     low: Finite | None = None
     high: Finite | None = None
 
+    @model_validator(mode="after")
+    def _in_order(self) -> "Range":
+        if self.low is not None and self.high is not None and self.low >= self.high:
+            raise ValueError("expected low below high")
+        return self
+
 
 class Analyte(Written):
     """One measurand: unit, resolution, TEa, analytic SD, spellings, controls and the errors to guard against."""
@@ -144,6 +160,17 @@ class Analyte(Written):
     faults: tuple[FaultList, ...] = Field(default=DEFAULT_FAULTS, min_length=1)
 
 
+def spelling_clashes(spellings: Mapping[str, Iterable[str]]) -> Iterator[str]:
+    """What makes an analyte's name or spelling ambiguous; `spellings` are the other spellings of each analyte."""
+    owner: dict[str, str] = {}
+    for key, names in spellings.items():
+        if "@" in key or "/" in key:
+            yield f'analytes."{key}": a name may not hold "@" or "/"'
+        for name in dict.fromkeys((key, *names)):
+            if (other := owner.setdefault(name, key)) != key:
+                yield f'analytes.{key}.names: the spelling "{name}" is given for both {other} and {key}'
+
+
 class Lab(Written):
     """All of `lab.toml`."""
 
@@ -155,13 +182,8 @@ class Lab(Written):
 
     @model_validator(mode="after")
     def _names_are_unambiguous(self) -> "Lab":
-        owner: dict[str, str] = {}
-        for key, analyte in self.analytes.items():
-            if "@" in key or "/" in key:
-                raise ValueError(f'analyte "{key}": a name may not hold "@" or "/"')
-            for name in {key, *analyte.names}:
-                if (other := owner.setdefault(name, key)) != key:
-                    raise ValueError(f'the spelling "{name}" is given for both {other} and {key}')
+        if clashes := list(spelling_clashes({key: analyte.names for key, analyte in self.analytes.items()})):
+            raise ValueError("\n".join(clashes))
         return self
 
     def spellings(self) -> dict[str, str]:

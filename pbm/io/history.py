@@ -1,0 +1,170 @@
+"""`history/`: one folder of Parquet per stream, and `left-out.parquet`. Where things lie, and how they are read.
+
+history/stream=sodium@line-2/results.parquet    results in order of time
+history/left-out.parquet                        every row that was not taken: file, line, reason, what was found, stream
+history/extracts.json                           which extracts were taken, by SHA-256
+"""
+
+import difflib
+import hashlib
+import re
+from pathlib import Path
+from typing import Any
+from urllib.parse import unquote
+
+import numpy as np
+import numpy.typing as npt
+import pyarrow as pa
+import pyarrow.compute as pc
+import pyarrow.parquet as pq
+
+from pbm.errors import InputError
+from pbm.records.plan import HistoryMark
+from pbm.records.stream import StreamHistory, StreamName
+
+RESULTS = "results.parquet"
+LEFT_OUT = "left-out.parquet"
+EXTRACTS = "extracts.json"
+_PREFIX = "stream="
+_UNSAFE = re.compile(r'[\x00-\x1f\x7f<>:"/\\|?*%]|^[ .]|[ .]$')
+
+TEXT_COLUMNS = ("specimen", "ward", "sex", "age", "priority", "patient")
+RESULT_SCHEMA = pa.schema(
+    [
+        ("time", pa.timestamp("us", tz="UTC")),
+        ("value", pa.float64()),
+        ("censor", pa.int8()),
+        *((name, pa.string()) for name in TEXT_COLUMNS),
+        ("file", pa.string()),
+        ("line", pa.int64()),
+    ]
+)
+# Where a row came from is not part of what was measured, so the mark of a history leaves it out.
+_MARKED = ("time", "value", "censor", *TEXT_COLUMNS)
+
+
+def stream_folder(name: StreamName) -> str:
+    """The name of a stream's folder: `stream=sodium@line-2`; characters that a file system may refuse are percent-encoded."""
+    return _PREFIX + _UNSAFE.sub(lambda found: "".join(f"%{byte:02X}" for byte in found[0].encode()), str(name))
+
+
+def read_streams(folder: Path) -> list[StreamName]:
+    """The streams of a history, in order of their names.
+
+    Raises
+    ------
+    InputError
+        If there is no history in the folder.
+    """
+    if not folder.is_dir():
+        raise InputError(f"There is no history in {folder}. Make one with `pbm intake FILE...`.")
+    found = [one.parent.name for one in folder.glob(f"{_PREFIX}*/{RESULTS}")]
+    if not found:
+        raise InputError(f"The history in {folder} holds no stream. Make a new one with `pbm intake FILE...`.")
+    return sorted(StreamName.parse(unquote(name.removeprefix(_PREFIX))) for name in found)
+
+
+def read_history(folder: Path, name: StreamName) -> StreamHistory:
+    """All results of one stream in order of time.
+
+    Raises
+    ------
+    InputError
+        If the history does not hold the stream, or its file cannot be read.
+    """
+    table = read_results(folder, name, ["time", "value", "censor", "specimen", "ward"])
+    return StreamHistory(
+        name=name,
+        time=table["time"].cast(pa.int64()).to_numpy(),
+        value=table["value"].to_numpy(),
+        censor=table["censor"].to_numpy(),
+        specimen=_objects(table["specimen"]),
+        ward=_objects(table["ward"]),
+    )
+
+
+def read_results(folder: Path, name: StreamName, columns: list[str] | None = None) -> pa.Table:
+    """The table of one stream: see `RESULT_SCHEMA`; all columns, or those named.
+
+    Raises
+    ------
+    InputError
+        If the history does not hold the stream, or its file cannot be read.
+    """
+    path = folder / stream_folder(name) / RESULTS
+    try:
+        # partitioning=None: else pyarrow reads a column "stream" out of the folder's name.
+        return pq.read_table(path, columns=columns, partitioning=None)
+    except FileNotFoundError:
+        raise InputError(_no_such_stream(folder, name)) from None
+    except (pa.ArrowInvalid, OSError) as error:
+        raise InputError(
+            f"{path} cannot be read ({error}). Delete {folder} and take the extracts again with `pbm intake`."
+        ) from None
+
+
+def stream_sizes(folder: Path) -> dict[StreamName, int]:
+    """The number of results of each stream, from the heads of the files alone.
+
+    Raises
+    ------
+    InputError
+        If there is no history in the folder.
+    """
+    return {name: pq.read_metadata(folder / stream_folder(name) / RESULTS).num_rows for name in read_streams(folder)}
+
+
+def history_mark(folder: Path) -> HistoryMark:
+    """What a history holds: first and last time, number of results, and a hash of the contents.
+
+    The hash covers, stream by stream in order of name and row by row in stored order, what was measured (time, value, censor, specimen and
+    covariates), not the bytes of the Parquet files: another version of the file format gives the same hash.
+
+    Raises
+    ------
+    InputError
+        If there is no history in the folder, or a file in it cannot be read.
+    """
+    total, rows = hashlib.sha256(), 0
+    first, last = [], []
+    for name in read_streams(folder):
+        table = read_results(folder, name, list(_MARKED))
+        total.update(f"{name}\n{len(table)}\n".encode())
+        for column in _MARKED:
+            _update(total, table[column])
+        rows += len(table)
+        first.append(table["time"][0].as_py())
+        last.append(table["time"][-1].as_py())
+    return HistoryMark(first=min(first), last=max(last), rows=rows, sha256=total.hexdigest())
+
+
+def _update(total: Any, column: pa.ChunkedArray) -> None:
+    """Add a column to a hash: numbers as little-endian bytes, text as its lengths and then its UTF-8."""
+    if not pa.types.is_string(column.type):
+        numbers = column.cast(pa.int64()) if pa.types.is_timestamp(column.type) else column
+        values = numbers.to_numpy()
+        total.update(np.ascontiguousarray(values, values.dtype.newbyteorder("<")))
+        return
+    for chunk in column.chunks:
+        total.update(np.ascontiguousarray(pc.binary_length(chunk).to_numpy(zero_copy_only=False), "<i4"))
+    for chunk in column.chunks:
+        offsets = np.frombuffer(chunk.buffers()[1], np.int32, len(chunk) + 1, chunk.offset * 4)
+        if offsets[-1] > offsets[0]:
+            total.update(memoryview(chunk.buffers()[2])[offsets[0] : offsets[-1]])
+
+
+def _objects(column: pa.ChunkedArray) -> npt.NDArray[np.object_]:
+    # One Python object per different text, not per row: a ward has a dozen names and a million results.
+    encoded = column.combine_chunks().dictionary_encode()
+    words: npt.NDArray[np.object_] = np.array(encoded.dictionary.to_pylist(), dtype=object)
+    codes: npt.NDArray[np.int32] = encoded.indices.to_numpy(zero_copy_only=False)
+    return words[codes]
+
+
+def _no_such_stream(folder: Path, name: StreamName) -> str:
+    held = [str(one) for one in read_streams(folder)]
+    near = difflib.get_close_matches(str(name), held, n=1)
+    hint = (
+        f'did you mean "{near[0]}"?' if near else f"it holds {', '.join(held[:10])}{' ...' if len(held) > 10 else ''}."
+    )
+    return f'The history in {folder} holds no stream "{name}": {hint}'
