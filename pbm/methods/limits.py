@@ -28,6 +28,7 @@ from pbm.methods.jit import Floats, Integers
 
 REARM = 0.5
 TAIL_EPISODES = 30
+TAIL_SEARCH = 12
 
 
 @dataclass(frozen=True, slots=True)
@@ -78,7 +79,7 @@ def tail_of(path: Floats, centre: float, side: int, expected: float) -> Tail | N
         return None
     wanted = max(TAIL_EPISODES, math.ceil(2 * expected))
     inner, outer = max(float(np.quantile(judged, 0.75)), 0.01 * top), top
-    for _ in range(25):
+    for _ in range(TAIL_SEARCH):
         middle = (inner + outer) / 2
         enough = len(episodes(upward, Limits(-math.inf, middle, 0.0, REARM))) >= wanted
         inner, outer = (middle, outer) if enough else (inner, middle)

@@ -1,0 +1,145 @@
+"""One fault tried on a stretch of history at many onsets: what the statistic meets, and what it costs until somebody knows.
+
+An onset is drawn among the results of a stretch, every result being equally likely to be the first affected one. From there the faulted
+results are read until the monitor's first alarm or the horizon. The same onsets serve every candidate and every fault, so that comparisons
+are not blurred by the draw.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from pbm.methods.alarm import Limits
+from pbm.methods.chain import Tracker
+from pbm.methods.expected import Exposure, Onsets, exposure
+from pbm.methods.faults import Chance, Fault, Reporting, inflict
+from pbm.methods.jit import Floats, Integers
+from pbm.methods.unreliable import ErrorModel, chance_unreliable
+
+
+@dataclass(frozen=True, slots=True)
+class Stretch:
+    """Results of one stream in order of time.
+
+    Attributes
+    ----------
+    time : (n,)
+        UTC microseconds.
+    value, censor : (n,)
+        As reported.
+    error, reporting
+        The analyte's error model and how it is reported.
+    chance
+        The random part of the faults, drawn once.
+    """
+
+    time: Integers
+    value: Floats
+    censor: Floats
+    error: ErrorModel
+    reporting: Reporting
+    chance: Chance
+
+    def __len__(self) -> int:
+        return len(self.time)
+
+
+def draw_onsets(first: int, last: int, count: int, random: np.random.Generator) -> Integers:
+    """Up to `count` onsets spread over the results first ... last - 1: one at random in each of as many equal parts, ascending."""
+    count = min(count, last - first)
+    part = (np.arange(count) + random.random(count)) / max(count, 1)
+    return first + (part * (last - first)).astype(np.int64)
+
+
+@dataclass(frozen=True, slots=True)
+class Trial:
+    """A fault at many onsets.
+
+    Attributes
+    ----------
+    fault, onsets
+        What was tried, and where.
+    values, censor : (m,)
+        Results as reported under the fault.
+    starts, ends : (r,)
+        Which of them each onset reads.
+    exposure
+        Expected unreliable results along each onset.
+    """
+
+    fault: Fault
+    onsets: Onsets
+    values: Floats
+    censor: Floats
+    starts: Integers
+    ends: Integers
+    exposure: Exposure
+
+    def results_to_alarm(self, z: Floats, tracker: Tracker, limits: Limits, states: Floats) -> Integers:
+        """Offered results from the onset to the alarm, both included; 0 where there is none within the horizon.
+
+        Parameters
+        ----------
+        z : (m,)
+            `values` as prepared for the statistic.
+        tracker, limits
+            The statistic and its control limits.
+        states : (r, s)
+            Its in-control state before each onset.
+        """
+        found = tracker.first_crossings(z, states, self.starts, self.ends, limits.low, limits.high)
+        return np.where(found >= 0, found - self.starts + 1, 0)
+
+
+def trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats) -> Trial:
+    """Try a fault at the given onsets; `passed` (k + 1,) is the schedule's chance of passing the first i events under it."""
+    if fault.kind == "drift":
+        return _drift_trial(stretch, fault, onsets, passed)
+    error = stretch.error
+    values, censor = inflict(stretch.value, fault, error, stretch.reporting, stretch.chance)
+    p = _chance_unreliable(stretch.value, fault, error, fault.bias(stretch.value, error))
+    return Trial(fault, onsets, values, censor, onsets.at, onsets.end, exposure(onsets, p, passed))
+
+
+def _chance_unreliable(x: Floats, fault: Fault, error: ErrorModel, bias: Floats) -> Floats:
+    p = chance_unreliable(error.tea(x), bias, error.sd(x), fault.multiple)
+    return fault.share * p if fault.kind == "sporadic" else p
+
+
+def _drift_trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats) -> Trial:
+    """A drift grows from each onset, so each onset has results of its own, laid one after the other."""
+    ends = np.cumsum(onsets.length)
+    starts = ends - onsets.length
+    rows = np.concatenate([np.arange(a, b) for a, b in zip(onsets.at, onsets.end, strict=True)])
+    ages = np.arange(len(rows)) - np.repeat(starts, onsets.length) + 1.0
+    growth, x = fault.growth(ages), stretch.value[rows]
+    chance = Chance(stretch.chance.cell[rows], stretch.chance.normal[rows], stretch.chance.uniform[rows])
+    values, censor = inflict(x, fault, stretch.error, stretch.reporting, chance, growth)
+    p = np.zeros((len(onsets.at), int(onsets.length.max())))
+    inside = np.arange(p.shape[1])[None, :] < onsets.length[:, None]
+    p[inside] = _chance_unreliable(x, fault, stretch.error, growth * fault.bias(x, stretch.error))
+    return Trial(fault, onsets, values, censor, starts, ends, exposure(onsets, p, passed))
+
+
+def alarm_and_stop(
+    to_alarm: Integers, onsets: Onsets, lag_results: int, lag_microseconds: int, time: Integers
+) -> tuple[Integers, Integers]:
+    """With which affected result the alarm comes, and how many are reported before the stop; the horizon where there is no alarm.
+
+    Parameters
+    ----------
+    to_alarm : (r,)
+        From `Trial.results_to_alarm`.
+    lag_results, lag_microseconds
+        What is still reported after the alarm: this many results, or for this long.
+    time : (n,)
+        Of the history's results.
+
+    Returns
+    -------
+    alarm, stop : (r,)
+    """
+    alarm = np.where(to_alarm > 0, to_alarm, onsets.length)
+    when = time[np.minimum(onsets.at + alarm, onsets.end) - 1] + lag_microseconds
+    stop = alarm + lag_results if lag_microseconds == 0 else np.searchsorted(time, when, side="right") - onsets.at
+    return alarm, np.where(to_alarm > 0, np.minimum(np.maximum(stop, alarm), onsets.length), onsets.length)
