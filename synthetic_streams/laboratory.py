@@ -1,0 +1,167 @@
+"""The Tern Bay District Laboratory at work: for each stream, who was measured, when, the true value, and what was reported."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass, fields
+from datetime import date
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from synthetic_streams.analysers import Levels, levels, measure
+from synthetic_streams.analytes import BY_KEY, Analyte, stream_name
+from synthetic_streams.clock import SECOND, Hours, hours
+from synthetic_streams.draws import Draws, collect
+from synthetic_streams.faults import Fault, error
+from synthetic_streams.reporting import report
+from synthetic_streams.seeds import child
+
+Ints = npt.NDArray[np.int64]
+Floats = npt.NDArray[np.float64]
+
+NAME = "Tern Bay District Laboratory"
+FIRST_DAY = date(2031, 1, 6)
+JITTER_SECONDS = 20
+
+
+@dataclass(frozen=True, slots=True)
+class StreamSample:
+    """The results of one stream in order of time; one array element a result.
+
+    Attributes
+    ----------
+    analyte, line
+        The stream.
+    time
+        int64, UTC microseconds since 1970 (whole seconds).
+    draw
+        Index of the specimen in the laboratory's `draws`.
+    true_value
+        The patient's own value.
+    raw
+        As measured, faults included, before rounding and the measuring range.
+    value, censor, text
+        As reported: number, -1 for "<", +1 for ">", 0, and the printed text.
+    error
+        What the faults added to the raw value; 0 where none acted.
+    value_without, text_without
+        What would have been reported without the faults.
+    """
+
+    analyte: Analyte
+    line: str
+    time: Ints
+    draw: Ints
+    true_value: Floats
+    raw: Floats
+    value: Floats
+    censor: npt.NDArray[np.int8]
+    text: npt.NDArray[np.object_]
+    error: Floats
+    value_without: Floats
+    text_without: npt.NDArray[np.object_]
+
+    def __len__(self) -> int:
+        return len(self.time)
+
+    def rows(self, chosen: Any) -> "StreamSample":
+        """The same stream with a subset of its rows (slice, mask or index)."""
+        named = {f.name: getattr(self, f.name) for f in fields(self)}
+        return StreamSample(**{k: v[chosen] if isinstance(v, np.ndarray) else v for k, v in named.items()})
+
+
+@dataclass(frozen=True)
+class Laboratory:
+    """The laboratory over a span of days.
+
+    Parameters
+    ----------
+    days
+        Local days, counted from `first_day`.
+    volume
+        Factor on the number of specimens; 1 is about 750 sodium results a day over two lines.
+    seed
+        Master seed.
+    first_day
+        First local day.
+    """
+
+    days: int
+    volume: float = 1.0
+    seed: int = 1
+    first_day: date = FIRST_DAY
+
+    def __post_init__(self) -> None:
+        if self.days < 1 or not self.volume > 0 or self.seed < 0:
+            raise ValueError("expected days >= 1, volume > 0 and seed >= 0")
+
+    @cached_property
+    def hours(self) -> Hours:
+        """The laboratory's hours."""
+        return hours(self.first_day, self.days)
+
+    @cached_property
+    def draws(self) -> Draws:
+        """Every specimen."""
+        return collect(self.hours, self.volume, self.seed)
+
+    def levels(self, analyte: Analyte, line: str) -> Levels:
+        """Calibrations and reagent lots of a stream."""
+        return levels(analyte, line, self.first_day, self.days, self.seed)
+
+    def sample(self, analyte: Analyte, line: str, faults: Sequence[Fault] = ()) -> StreamSample:
+        """All results of one stream, with the faults that concern it."""
+        name = stream_name(analyte, line)
+        rng = child(self.seed, "stream", name)
+        draw = self.draws.measured(analyte, line)
+        delay = analyte.delay + rng.integers(JITTER_SECONDS, size=len(draw))
+        time = self.draws.time[draw] + delay * SECOND
+        order = np.argsort(time, kind="stable")
+        draw, time = draw[order], time[order]
+        true_value = self.draws.true_values(analyte, draw)
+        without = measure(analyte, true_value, self.levels(analyte, line).at(time), rng)
+        added = self.fault_error(analyte, line, without, time, time, faults)
+        seen, unseen = report(analyte, without + added), report(analyte, without)
+        return StreamSample(
+            analyte, line, time, draw, true_value, without + added, seen.value, seen.censor, seen.text, added,
+            unseen.value, unseen.text,
+        )  # fmt: skip
+
+    def fault_error(
+        self, analyte: Analyte, line: str, raw: Floats, time: Ints, clock: Ints, faults: Sequence[Fault],
+        what: str = "patients",
+    ) -> Floats:  # fmt: skip
+        """Summed error of the faults that concern a stream; arguments as in `faults.error`."""
+        added = np.zeros(len(raw))
+        for number, fault in enumerate(faults):
+            if (fault.analyte, fault.line) == (analyte.key, line):
+                rng = child(self.seed, "fault", stream_name(analyte, line), str(number), what)
+                added += error(fault, analyte, raw, time, clock, rng)
+        return added
+
+
+def stream_sample(
+    analyte: str, line: str, *, days: int = 30, volume: float = 1.0, seed: int = 1, faults: Sequence[Fault] = ()
+) -> StreamSample:
+    """A fresh stream in memory, with injected faults.
+
+    Parameters
+    ----------
+    analyte, line
+        The stream, for example ``"sodium", "line-2"``.
+    days, volume, seed
+        Size and master seed. `write_laboratory` writes the same stream when its history and its two live days have as many
+        days together.
+    faults
+        Faults to apply; those of other streams are ignored.
+
+    Raises
+    ------
+    ValueError
+        If the laboratory does not measure this stream.
+    """
+    known = BY_KEY.get(analyte)
+    if known is None or line not in known.lines:
+        raise ValueError(f"{analyte}@{line} is not a stream of this laboratory")
+    return Laboratory(days, volume, seed).sample(known, line, faults)
