@@ -54,6 +54,10 @@ class Preparation:
             return admitted
         return mapped(TRANSFORMS[self.transform].forward, admitted, (float(self.transform_lambda),))
 
+    def scale(self, x: float) -> float:
+        """From the result's unit to the statistic's scale, without truncation."""
+        return TRANSFORMS[self.transform].forward(x, (self.transform_lambda,))
+
     def back(self, z: float) -> float:
         """From the statistic's scale to the result's unit."""
         return TRANSFORMS[self.transform].back(z, (self.transform_lambda,))

@@ -117,12 +117,12 @@ class Exposure:
     reported: Floats
     final: Floats
 
-    def unreliable(self, alarm: Integers, stop: Integers) -> Floats:
-        """N_u of each onset, shape (r,); `alarm` and `stop` as from `stops`."""
+    def unreliable(self, stop: Integers) -> Floats:
+        """N_u of each onset, shape (r,), if reporting stops after `stop` affected results."""
         return self.reported[np.arange(len(stop)), stop]
 
-    def unreliable_final(self, alarm: Integers, stop: Integers) -> Floats:
-        """N_uf of each onset, shape (r,)."""
+    def unreliable_final(self, alarm: Integers) -> Floats:
+        """N_uf of each onset, shape (r,), if the alarm comes with affected result `alarm`."""
         return self.final[np.arange(len(alarm)), alarm]
 
 
@@ -143,13 +143,3 @@ def exposure(onsets: Onsets, p: Floats, passed: Floats) -> Exposure:
     final = np.empty_like(reported)
     _accumulate(onsets.at, onsets.end, onsets.edges, np.atleast_2d(p), passed, reported, final)
     return Exposure(onsets, passed, reported, final)
-
-
-def results_until_events(onsets: Onsets, passed: Floats) -> tuple[Integers, Floats]:
-    """When the schedule finds a fault: affected results before each event, and the chance that it is found there, both (r, k).
-
-    The chance left over (never found within the horizon) is `1 - chance.sum(axis=1)`.
-    """
-    counts = onsets.edges - onsets.at[:, None]
-    inside = onsets.edges < onsets.end[:, None]
-    return counts, np.where(inside, -np.diff(passed)[None, :], 0.0)

@@ -111,7 +111,7 @@ def _drift_trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats)
     ends = np.cumsum(onsets.length)
     starts = ends - onsets.length
     rows = np.concatenate([np.arange(a, b) for a, b in zip(onsets.at, onsets.end, strict=True)])
-    ages = np.arange(len(rows)) - np.repeat(starts, onsets.length) + 1.0
+    ages = (np.arange(len(rows)) - np.repeat(starts, onsets.length) + 1).astype(np.float64)
     growth, x = fault.growth(ages), stretch.value[rows]
     chance = Chance(stretch.chance.cell[rows], stretch.chance.normal[rows], stretch.chance.uniform[rows])
     values, censor = inflict(x, fault, stretch.error, stretch.reporting, chance, growth)

@@ -103,10 +103,9 @@ class AllowableError(Written):
         return self
 
     def __str__(self) -> str:
-        parts = [f"{self.absolute:g}"] * (self.absolute is not None) + [f"{self.percent:g} %"] * (
-            self.percent is not None
-        )
-        return " or ".join(parts) + (", the greater" if len(parts) == 2 else "")
+        absolute = "" if self.absolute is None else f"{self.absolute:g}"
+        percent = "" if self.percent is None else f"{self.percent:g} %"
+        return f"{absolute} or {percent}, the greater" if absolute and percent else absolute or percent
 
 
 class AnalyticSd(Written):

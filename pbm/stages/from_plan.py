@@ -23,16 +23,17 @@ def reporting(analyte: Analyte) -> Reporting:
     return Reporting(analyte.step, -math.inf if low is None else low, math.inf if high is None else high)
 
 
-def faults_of(analyte: Analyte) -> list[Fault]:
-    """Every error condition that the laboratory wants to guard against: each size, each sign."""
-    return [fault for given in analyte.faults for fault in _each_size(given)]
+def faults_of(analyte: Analyte) -> list[tuple[Fault, float]]:
+    """Every error condition that the laboratory wants to guard against, each size and sign, with its weight."""
+    return [(fault, given.weight) for given in analyte.faults for fault in _each_size(given)]
 
 
 def _each_size(given: FaultList) -> list[Fault]:
-    signs = {"both": (-1, 1), "up": (1,), "down": (-1,)}[given.signs] if given.kind != "noise" else (1,)
-    unit = given.unit if given.kind != "noise" else ""
+    if given.kind == "noise":
+        return [Fault("noise", size, "") for size in given.sizes]
+    signs = {"both": (-1, 1), "up": (1,), "down": (-1,)}[given.signs]
     return [
-        Fault(given.kind, size, unit, sign, over=given.over or 1, share=given.share or 1.0)
+        Fault(given.kind, size, given.unit, sign, over=given.over or 1, share=given.share or 1.0)
         for size in given.sizes
         for sign in signs
     ]

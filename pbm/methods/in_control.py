@@ -1,0 +1,43 @@
+"""In-control behaviour of the values that a statistic takes: how far they move under a true shift, how much they hang together.
+
+    slope      d(mean of admitted values) / d(true shift), both on the statistic's scale
+    inflation  variance of a mean of successive values over what independence would give
+
+For fixed truncation limits on normal values the slope is Var(admitted) / Var(all); here it is measured on the results themselves, with
+rounding and censoring, at half a TEa to either side.
+"""
+
+import numpy as np
+
+from pbm.methods.chain import Preparation
+from pbm.methods.faults import Fault, inflict
+from pbm.methods.jit import Floats
+from pbm.methods.trials import Stretch
+
+BATCH = 50
+SMALLEST_SLOPE = 0.01
+
+
+def inflation(z: Floats, batch: int = BATCH) -> float:
+    """Variance inflation of the mean of `batch` successive admitted values, at least 1; z (n,) holds not a number where dropped."""
+    admitted = z[~np.isnan(z)]
+    whole = admitted[: len(admitted) // batch * batch].reshape(-1, batch)
+    if len(whole) < 2 or (variance := float(admitted.var())) == 0:
+        return 1.0
+    return max(1.0, batch * float(whole.mean(axis=1).var(ddof=1)) / variance)
+
+
+def slope(stretch: Stretch, preparation: Preparation) -> float:
+    """Movement of the admitted mean for a unit of true shift at the median result."""
+    return max(float(np.mean([_moved(stretch, preparation, sign) for sign in (-1, 1)])), SMALLEST_SLOPE)
+
+
+def _moved(stretch: Stretch, preparation: Preparation, sign: int) -> float:
+    fault = Fault("shift", 0.5, "TEa", sign)
+    typical = np.median(stretch.value, keepdims=True)
+    true = preparation.scale(float((typical + fault.bias(typical, stretch.error))[0])) - preparation.scale(
+        float(typical[0])
+    )
+    values, censor = inflict(stretch.value, fault, stretch.error, stretch.reporting, stretch.chance)
+    shifted, base = preparation.all(values, censor), preparation.all(stretch.value, stretch.censor)
+    return float(np.nanmean(shifted) - np.nanmean(base)) / true

@@ -1,0 +1,103 @@
+"""Choosing among candidates by successive halving: many candidates on few onsets, the best on many.
+
+The score of a candidate is the weighted mean over faults of the expected unreliable results with the control schedule present. All
+candidates meet the same faults at the same onsets. Among those within one standard error (of the paired difference) of the best, the
+simplest wins.
+"""
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from pbm.methods.alarm import Limits
+from pbm.methods.candidates import Candidate
+from pbm.methods.chain import Preparation, Tracker, tracker_for
+from pbm.methods.expected import Onsets
+from pbm.methods.jit import Floats, Integers
+from pbm.methods.limits import quick_limits
+from pbm.methods.trials import Stretch, Trial
+
+Stopper = Callable[[Integers, Onsets], tuple[Integers, Integers]]
+
+
+@dataclass(frozen=True, slots=True)
+class Runner:
+    """A candidate with its statistic centred and limited on the training results."""
+
+    candidate: Candidate
+    tracker: Tracker
+    limits: Limits
+
+
+def limited(stretch: Stretch, given: Sequence[Candidate], expected: float) -> list[Runner]:
+    """The candidates that can be limited for an expected number of episodes in the stretch."""
+    runners = []
+    for preparation, group in _by_preparation(given).items():
+        z = preparation.all(stretch.value, stretch.censor)
+        for candidate in group if np.isfinite(z).sum() > 1 else []:
+            tracker = tracker_for(z, candidate.statistic, candidate.parameter)
+            if (limits := quick_limits(tracker.path(z), tracker.centre, expected)) is not None:
+                runners.append(Runner(candidate, tracker, limits))
+    return runners
+
+
+def _by_preparation(given: Sequence[Candidate]) -> dict[Preparation, list[Candidate]]:
+    groups: dict[Preparation, list[Candidate]] = {}
+    for candidate in given:
+        groups.setdefault(candidate.preparation, []).append(candidate)
+    return groups
+
+
+def scores(stretch: Stretch, runners: Sequence[Runner], trials: Sequence[tuple[Trial, float]], stop: Stopper) -> Floats:
+    """Expected unreliable results of each candidate at each onset, averaged over faults.
+
+    Parameters
+    ----------
+    stretch
+        The training results.
+    runners
+        The candidates, c of them.
+    trials
+        Faults at the same r onsets, each with its weight.
+    stop
+        From results until the alarm to (alarm, stop), as `trials.alarm_and_stop` does.
+
+    Returns
+    -------
+    (c, r)
+    """
+    total = sum(weight for _, weight in trials)
+    out = np.zeros((len(runners), len(trials[0][0].onsets.at)))
+    for preparation, group in _grouped(runners).items():
+        z = preparation.all(stretch.value, stretch.censor)
+        states = {i: runners[i].tracker.states_at(z, trials[0][0].onsets.at) for i in group}
+        for trial, weight in trials:
+            faulted = preparation.all(trial.values, trial.censor)
+            for i in group:
+                runner = runners[i]
+                found = trial.results_to_alarm(faulted, runner.tracker, runner.limits, states[i])
+                out[i] += weight / total * trial.exposure.unreliable(stop(found, trial.onsets)[1])
+    return out
+
+
+def _grouped(runners: Sequence[Runner]) -> dict[Preparation, list[int]]:
+    groups: dict[Preparation, list[int]] = {}
+    for i, runner in enumerate(runners):
+        groups.setdefault(runner.candidate.preparation, []).append(i)
+    return groups
+
+
+def best_of(runners: Sequence[Runner], score: Floats, count: int) -> list[Runner]:
+    """The `count` candidates with the lowest mean score (c, r)."""
+    order = np.argsort(score.mean(axis=1), kind="stable").tolist()
+    return [runners[i] for i in order[:count]]
+
+
+def simplest_near_best(runners: Sequence[Runner], score: Floats) -> int:
+    """Place of the simplest candidate within one standard error of the best; score is (c, r)."""
+    best = int(np.argmin(score.mean(axis=1)))
+    difference = score - score[best]
+    error = difference.std(axis=1, ddof=1) / np.sqrt(score.shape[1]) if score.shape[1] > 1 else np.zeros(len(score))
+    near = np.flatnonzero(difference.mean(axis=1) <= error)
+    return int(min(near, key=lambda i: (runners[i].candidate.complexity, score[i].mean())))

@@ -1,0 +1,250 @@
+"""Tune: choose each stream's monitor on training days, confirm its limits on held-out days, and say where a monitor is not useful.
+
+The first two thirds of the days train, the last third is held out. Candidates are scored by expected unreliable results with the control
+schedule present (methods/search.py); the winner's limits come from the day-block bootstrap (methods/limits.py).
+"""
+
+from dataclasses import dataclass
+from functools import partial
+
+import numpy as np
+
+from pbm.methods.alarm import Limits, episodes
+from pbm.methods.candidates import Candidate, candidates, preparations
+from pbm.methods.chain import Preparation, Tracker
+from pbm.methods.clock_time import local_days
+from pbm.methods.expected import Onsets, follow
+from pbm.methods.faults import Fault
+from pbm.methods.in_control import inflation, slope
+from pbm.methods.intervals import poisson_interval
+from pbm.methods.jit import Integers
+from pbm.methods.limits import CalibratedLimits, calibrated_limits
+from pbm.methods.search import Runner, best_of, limited, scores, simplest_near_best
+from pbm.methods.split import Split, split_days
+from pbm.methods.trials import Stretch, Trial, alarm_and_stop, trial
+from pbm.records.laboratory import Lab
+from pbm.records.plan import (
+    Admit,
+    ControlLimits,
+    HeldOut,
+    LimitsInterval,
+    MonitorPlan,
+    StreamPlan,
+    Training,
+    Verdict,
+)
+from pbm.records.stream import StreamHistory
+from pbm.stages.from_plan import faults_of
+from pbm.stages.surroundings import HORIZON_DAYS, Surroundings
+
+FEWEST_DAYS = 20
+FEWEST_RESULTS = 1_000
+ROUNDS = ((40, 24), (250, 1))
+NEEDED_AT_MOST = 5_000
+WORTHWHILE = 0.1
+SOME_GAIN = 0.02
+
+
+def tune_stream(history: StreamHistory, lab: Lab, seed: int) -> StreamPlan:
+    """Choose the monitor of one stream, or say why it has none.
+
+    Parameters
+    ----------
+    history
+        All results of the stream.
+    lab
+        The laboratory: analyte, budget, schedule, faults.
+    seed
+        Master seed; the same seed gives the same plan.
+    """
+    around = Surroundings.of(history.name, lab, seed)
+    days = local_days(history.time, lab.laboratory.zone)
+    refusal = _too_little(days)
+    if refusal:
+        return _no_monitor(around, days, refusal)
+    return _Tuning(around, history, split_days(days)).plan()
+
+
+def _too_little(days: Integers) -> str | None:
+    have = len(np.unique(days))
+    if have < FEWEST_DAYS or len(days) < FEWEST_RESULTS:
+        return (
+            f"{len(days)} results on {have} days are too few to choose and confirm limits "
+            f"(at least {FEWEST_RESULTS} results on {FEWEST_DAYS} days)"
+        )
+    return None
+
+
+def _no_monitor(around: Surroundings, days: Integers, reason: str) -> StreamPlan:
+    per_day = len(days) / float(days[-1] - days[0] + 1) if len(days) else 0.0
+    return StreamPlan(
+        unit=around.analyte.unit, verdict="not useful here", reason=reason, results_per_day=round(per_day, 1)
+    )
+
+
+@dataclass(frozen=True, slots=True)
+class Judgement:
+    """The verdict on a stream and the reason in words."""
+
+    word: Verdict
+    reason: str
+
+
+def judge_usefulness(needed: float, per_day: float, gain: float) -> Judgement:
+    """Whether a monitor pays on a stream.
+
+    Parameters
+    ----------
+    needed
+        Median number of results until a shift of 1 TEa is found; infinite where more than half are not.
+    per_day
+        Results a day.
+    gain
+        Share by which the monitor lowers the expected unreliable results of the schedule alone, averaged over the faults.
+
+    Notes
+    -----
+    Useful: found within an average day's run (common practice) and a gain of at least a tenth. Not useful: not found
+    within the horizon of seven days, or hardly a gain.
+    """
+    sees = f"needs about {needed:.0f} results to see" if np.isfinite(needed) else "does not see"
+    gained = f"{max(gain, 0):.0%} fewer unreliable results expected than with the controls alone"
+    reason = f"{sees} a shift of 1 TEa; the line makes {per_day:.0f} a day; {gained}"
+    if needed > HORIZON_DAYS * per_day or gain < SOME_GAIN:
+        return Judgement("not useful here", reason)
+    return Judgement("useful" if needed <= per_day and gain >= WORTHWHILE else "marginal", reason)
+
+
+@dataclass(frozen=True)
+class _Tuning:
+    """The work on one stream."""
+
+    around: Surroundings
+    history: StreamHistory
+    split: Split
+
+    def plan(self) -> StreamPlan:
+        days = self.split.days
+        training = self.around.stretch(self.history.rows(slice(0, self.split.at)))
+        runner = self._search(training)
+        limits = self._limits(training, runner) if runner else None
+        if runner is None or limits is None:
+            return _no_monitor(
+                self.around, days, "no statistic of these results has a tail from which limits could be learned"
+            )
+        verdict = self._judge(training, Runner(runner.candidate, runner.tracker, limits.limits))
+        monitors = () if verdict.word == "not useful here" else (self._monitor(training, runner, limits),)
+        return StreamPlan(
+            unit=self.around.analyte.unit,
+            verdict=verdict.word,
+            reason=verdict.reason,
+            results_per_day=round(self.per_day, 1),
+            monitors=monitors,
+        )
+
+    @property
+    def per_day(self) -> float:
+        days = self.split.days
+        return len(days) / float(days[-1] - days[0] + 1)
+
+    @property
+    def expected(self) -> float:
+        """Episodes that the budget allows in the training days."""
+        return self.around.lab.budget_of(self.around.name.analyte).per_day * self.split.training_days
+
+    def trials(self, training: Stretch, count: int) -> list[tuple[Trial, float]]:
+        """Every fault at the same onsets among the training results after the first day."""
+        first = int(np.searchsorted(self.split.days[: self.split.at], self.split.days[0], side="right"))
+        onsets = self.around.onsets(training.time, first, len(training), count)
+        return [
+            (trial(training, fault, onsets, self.around.chance_of_passing(fault, onsets).passed), weight)
+            for fault, weight in faults_of(self.around.analyte)
+        ]
+
+    def stopper(self, training: Stretch) -> partial[tuple[Integers, Integers]]:
+        """From results until the alarm to (alarm, stop), with the laboratory's response lag."""
+        around = self.around
+        return partial(
+            alarm_and_stop, lag_results=around.lag_results, lag_microseconds=around.lag_microseconds, time=training.time
+        )
+
+    def _search(self, training: Stretch) -> Runner | None:
+        choices = preparations(training.value, self.around.analyte.step, self.around.random("transform"))
+        given: list[Candidate] = list(candidates(choices, longest=len(training) // 50))
+        runners = limited(training, given, self.expected)
+        for onsets, keep in ROUNDS:
+            if not runners:
+                return None
+            score = scores(training, runners, self.trials(training, onsets), self.stopper(training))
+            runners = best_of(runners, score, keep) if keep > 1 else [runners[simplest_near_best(runners, score)]]
+        return runners[0]
+
+    def _judge(self, training: Stretch, runner: Runner) -> Judgement:
+        trials = self.trials(training, ROUNDS[-1][0])
+        score = float(scores(training, [runner], trials, self.stopper(training)).mean())
+        total = sum(weight for _, weight in trials)
+        alone = sum(weight / total * float(t.exposure.unreliable(t.onsets.length).mean()) for t, weight in trials)
+        needed = self._results_needed(training, runner, trials[0][0].onsets)
+        return judge_usefulness(needed, self.per_day, 1 - score / alone if alone > 0 else 0.0)
+
+    def _results_needed(self, training: Stretch, runner: Runner, onsets: Onsets) -> float:
+        """Median of the results until a shift of 1 TEa is found, to either side, followed for up to `NEEDED_AT_MOST` results."""
+        at = onsets.at[onsets.at < max(len(training) - NEEDED_AT_MOST, len(training) // 2)]
+        far = follow(at, np.minimum(at + NEEDED_AT_MOST, len(training)), np.zeros(0, dtype=np.int64), 1)
+        z = runner.candidate.preparation.all(training.value, training.censor)
+        states = runner.tracker.states_at(z, at)
+        found = []
+        for sign in (-1, 1):
+            shifted = trial(training, Fault("shift", 1.0, "TEa", sign), far, np.ones(2))
+            faulted = runner.candidate.preparation.all(shifted.values, shifted.censor)
+            count = shifted.results_to_alarm(faulted, runner.tracker, runner.limits, states)
+            found.append(np.where(count > 0, count, np.inf))
+        return float(np.median(np.concatenate(found)))
+
+    def _limits(self, training: Stretch, runner: Runner) -> CalibratedLimits | None:
+        z = runner.candidate.preparation.all(training.value, training.censor)
+        starts = np.flatnonzero(np.diff(self.split.days[: self.split.at], prepend=-1))
+        return calibrated_limits(
+            runner.tracker,
+            z,
+            np.append(starts, len(z)),
+            self.expected,
+            self.around.random("limits", str(runner.candidate)),
+        )
+
+    def _monitor(self, training: Stretch, runner: Runner, limits: CalibratedLimits) -> MonitorPlan:
+        preparation, tracker = runner.candidate.preparation, runner.tracker
+        z = preparation.all(training.value, training.censor)
+        parameter = tracker.law.parameter
+        budget = self.around.lab.budget_of(self.around.name.analyte).per_day
+        low, high = limits.limits.low, limits.limits.high
+        return MonitorPlan(
+            admit=Admit(
+                low=preparation.low if np.isfinite(preparation.low) else None,
+                high=preparation.high if np.isfinite(preparation.high) else None,
+                mode="winsorize" if preparation.winsorize else "truncate",
+            ),
+            transform=preparation.transform,
+            transform_lambda=preparation.transform_lambda if preparation.transform == "boxcox" else None,
+            statistic=tracker.statistic,
+            window=int(tracker.parameter) if parameter == "window" else None,
+            weight=tracker.parameter if parameter == "weight" else None,
+            centre=tracker.centre,
+            limits=ControlLimits(low=low, high=high),
+            limits_interval=LimitsInterval(low=limits.low_interval, high=limits.high_interval),
+            budget_per_day=budget,
+            spread=float(np.nanstd(z)),
+            slope=slope(training, preparation),
+            inflation=inflation(z),
+            train=Training(days=self.split.training_days, episodes=len(episodes(tracker.path(z), limits.limits))),
+            held_out=self._held_out(preparation, tracker, limits.limits, budget),
+        )
+
+    def _held_out(self, preparation: Preparation, tracker: Tracker, limits: Limits, budget: float) -> HeldOut:
+        z = preparation.all(self.history.value, self.history.censor.astype(float))
+        count = int((episodes(tracker.path(z), limits).at >= self.split.at).sum())
+        interval = poisson_interval(count)
+        allowed = budget * self.split.held_out_days
+        return HeldOut(
+            days=self.split.held_out_days, episodes=count, interval=interval, kept=bool(interval[0] <= allowed)
+        )
