@@ -107,3 +107,17 @@ STREAMS = tuple((analyte, line) for analyte in ANALYTES for line in analyte.line
 def stream_name(analyte: Analyte, line: str) -> str:
     """The stream's name as written everywhere: ``sodium@line-2``."""
     return f"{analyte.key}@{line}"
+
+
+def known(key: str, line: str) -> Analyte:
+    """The analyte of a stream.
+
+    Raises
+    ------
+    ValueError
+        If the laboratory does not measure this stream.
+    """
+    analyte = BY_KEY.get(key)
+    if analyte is None or line not in analyte.lines:
+        raise ValueError(f"{key}@{line} is not a stream of this laboratory")
+    return analyte

@@ -9,7 +9,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from synthetic_streams.analytes import Analyte
+from synthetic_streams.analytes import Analyte, known
 
 Ints = npt.NDArray[np.int64]
 Floats = npt.NDArray[np.float64]
@@ -42,7 +42,7 @@ class Fault:
     Raises
     ------
     ValueError
-        If kind, unit, or a parameter that the kind needs is not usable.
+        If the laboratory has no such stream, or kind, unit, or a parameter that the kind needs is not usable.
     """
 
     analyte: str
@@ -55,6 +55,7 @@ class Fault:
     share: float = 0.1
 
     def __post_init__(self) -> None:
+        known(self.analyte, self.line)
         if self.kind not in KINDS or self.unit not in UNITS:
             raise ValueError(f"expected one of {KINDS} in one of {UNITS}, found {self.kind} in {self.unit}")
         if self.over < 1 or not 0 < self.share <= 1 or (self.kind == "noise" and self.size < 1):

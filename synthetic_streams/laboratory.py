@@ -10,19 +10,22 @@ import numpy as np
 import numpy.typing as npt
 
 from synthetic_streams.analysers import Levels, levels, measure
-from synthetic_streams.analytes import BY_KEY, Analyte, stream_name
+from synthetic_streams.analytes import Analyte, known, stream_name
 from synthetic_streams.clock import SECOND, Hours, hours
 from synthetic_streams.draws import Draws, collect
 from synthetic_streams.faults import Fault, error
 from synthetic_streams.reporting import report
 from synthetic_streams.seeds import child
+from synthetic_streams.wards import WARDS
 
 Ints = npt.NDArray[np.int64]
 Floats = npt.NDArray[np.float64]
+Texts = npt.NDArray[np.object_]
 
 NAME = "Tern Bay District Laboratory"
 FIRST_DAY = date(2031, 1, 6)
 JITTER_SECONDS = 20
+WARD_CODES = np.array([ward.code for ward in WARDS], dtype=object)
 
 
 @dataclass(frozen=True, slots=True)
@@ -37,6 +40,8 @@ class StreamSample:
         int64, UTC microseconds since 1970 (whole seconds).
     draw
         Index of the specimen in the laboratory's `draws`.
+    specimen, ward, patient
+        Text: specimen number, ward's code, patient's token.
     true_value
         The patient's own value.
     raw
@@ -53,14 +58,17 @@ class StreamSample:
     line: str
     time: Ints
     draw: Ints
+    specimen: Texts
+    ward: Texts
+    patient: Texts
     true_value: Floats
     raw: Floats
     value: Floats
     censor: npt.NDArray[np.int8]
-    text: npt.NDArray[np.object_]
+    text: Texts
     error: Floats
     value_without: Floats
-    text_without: npt.NDArray[np.object_]
+    text_without: Texts
 
     def __len__(self) -> int:
         return len(self.time)
@@ -124,9 +132,22 @@ class Laboratory:
         added = self.fault_error(analyte, line, without, time, time, faults)
         seen, unseen = report(analyte, without + added), report(analyte, without)
         return StreamSample(
-            analyte, line, time, draw, true_value, without + added, seen.value, seen.censor, seen.text, added,
-            unseen.value, unseen.text,
-        )  # fmt: skip
+            analyte=analyte,
+            line=line,
+            time=time,
+            draw=draw,
+            specimen=self.draws.specimen[draw],
+            ward=WARD_CODES[self.draws.ward[draw]],
+            patient=self.draws.patients.token[self.draws.patient[draw]],
+            true_value=true_value,
+            raw=without + added,
+            value=seen.value,
+            censor=seen.censor,
+            text=seen.text,
+            error=added,
+            value_without=unseen.value,
+            text_without=unseen.text,
+        )
 
     def fault_error(
         self, analyte: Analyte, line: str, raw: Floats, time: Ints, clock: Ints, faults: Sequence[Fault],
@@ -161,7 +182,4 @@ def stream_sample(
     ValueError
         If the laboratory does not measure this stream.
     """
-    known = BY_KEY.get(analyte)
-    if known is None or line not in known.lines:
-        raise ValueError(f"{analyte}@{line} is not a stream of this laboratory")
-    return Laboratory(days, volume, seed).sample(known, line, faults)
+    return Laboratory(days, volume, seed).sample(known(analyte, line), line, faults)

@@ -93,8 +93,11 @@ def pick(rows: Rows, count: int, rng: np.random.Generator, among: npt.NDArray[np
     ValueError
         If there are fewer than `count`.
     """
-    free = rows.category == Category.ORDINARY
-    return rng.choice(np.flatnonzero(free if among is None else free & among), count, replace=False)
+    ordinary = rows.category == Category.ORDINARY
+    free = np.flatnonzero(ordinary if among is None else ordinary & among)
+    if len(free) < count:
+        raise ValueError(f"{len(free)} results are too few to spoil {count} of them: give more days or a larger volume")
+    return rng.choice(free, count, replace=False)
 
 
 def slip_unit(laboratory: Laboratory, rows: Rows, days: int) -> None:

@@ -3,10 +3,10 @@
 OBX-18 names the analyser and OBX-19 the time of analysis; OBX-14 is the time of collection. '<5' is sent as SN `<^5`.
 """
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from datetime import datetime
 
-from synthetic_streams.analytes import HAEMATOLOGY, Analyte
+from synthetic_streams.analytes import CHEMISTRY, HAEMATOLOGY, IMMUNOASSAY, Analyte
 from synthetic_streams.clock import SECOND, ZONE
 from synthetic_streams.draws import Draws
 from synthetic_streams.laboratory import StreamSample
@@ -16,10 +16,17 @@ MOST_OBX = 10
 COLLECTED_BEFORE = 45 * 60 * SECOND
 SENT_AFTER = 2 * SECOND
 
+_SERUM, _BLOOD = "SER^Serum^HL70487", "BLD^Whole blood^HL70487"
+_ORDERS = {
+    **dict.fromkeys(CHEMISTRY, ("CHEM^Chemistry panel^L", _SERUM)),
+    **dict.fromkeys(HAEMATOLOGY, ("FBC^Full blood count^L", _BLOOD)),
+    **dict.fromkeys(IMMUNOASSAY, ("TFT^Thyroid function^L", _SERUM)),
+}
+
 _Found = tuple[int, Analyte, str, str]
 
 
-def messages(draws: Draws, samples: list[StreamSample]) -> list[bytes]:
+def messages(draws: Draws, samples: Sequence[StreamSample]) -> list[bytes]:
     """Messages in order of sending; at most ten OBX in each.
 
     Parameters
@@ -51,9 +58,7 @@ def _message(draws: Draws, draw: int, found: list[_Found], number: int) -> bytes
     who, ward = int(draws.patient[draw]), WARDS[int(draws.ward[draw])]
     people, specimen = draws.patients, draws.specimen[draw]
     sent = _stamp(found[-1][0] + SENT_AFTER)
-    blood = line in HAEMATOLOGY
-    material = "BLD^Whole blood^HL70487" if blood else "SER^Serum^HL70487"
-    battery = "FBC^Full blood count^L" if blood else f"PANEL^{line} panel^L"
+    battery, material = _ORDERS[line]
     segments = [
         f"MSH|^~\\&|TBDL-LIS|TBDL|PBM|TBDL|{sent}||ORU^R01^ORU_R01|{number:08d}|P|2.5.1||||||UNICODE UTF-8",
         f"PID|1||{people.token[who]}^^^TBDL^PI||^^^^^^S|||{'M' if people.male[who] else 'F'}",

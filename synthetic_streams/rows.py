@@ -12,7 +12,6 @@ from synthetic_streams.clock import Hours, local_text
 from synthetic_streams.controls import ControlResults
 from synthetic_streams.draws import Draws
 from synthetic_streams.laboratory import StreamSample
-from synthetic_streams.wards import WARDS
 
 Ints = npt.NDArray[np.int64]
 Floats = npt.NDArray[np.float64]
@@ -121,11 +120,11 @@ def patient_rows(draws: Draws, sample: StreamSample, stream: int) -> Rows:
         "line": same(sample.line, count),
         "result": sample.text.copy(),
         "unit": same(sample.analyte.unit, count),
-        "specimen": draws.specimen[sample.draw],
-        "location": np.array([ward.code for ward in WARDS], dtype=object)[draws.ward[sample.draw]],
+        "specimen": sample.specimen,
+        "location": sample.ward,
         "sex": np.array(["F", "M"], dtype=object)[draws.patients.male[who].astype(np.int64)],
         "age": ages[draws.patients.age[who]],
-        "patient": draws.patients.token[who],
+        "patient": sample.patient,
         "kind": same("P", count),
     }
     ordinary = np.full(count, Category.ORDINARY, dtype=np.int64)

@@ -87,6 +87,8 @@ def write_laboratory(
     ValueError
         If a size is impossible, or a fault begins within the history.
     """
+    if days < 1:
+        raise ValueError(f"expected at least one day of history, found {days}")
     chosen = tuple(default_faults(days) if faults is None else faults)
     start = live_start(days)
     if any(fault.onset < start for fault in chosen):
@@ -112,7 +114,7 @@ def write_json(path: Path, content: dict[str, Any]) -> None:
 
 
 def fault_truth(fault: Fault, samples: Sequence[StreamSample]) -> dict[str, Any]:
-    """A fault and the true error of every result that it concerns.
+    """A fault and the true error of every result that it concerns: what the faults added to the raw value.
 
     Parameters
     ----------
@@ -123,12 +125,9 @@ def fault_truth(fault: Fault, samples: Sequence[StreamSample]) -> dict[str, Any]
     """
     sample = next(s for s in samples if (s.analyte.key, s.line) == (fault.analyte, fault.line))
     after = sample.rows(sample.time >= fault.onset)
-    columns = zip(
-        utc_text(after.time), after.text.tolist(), after.text_without.tolist(), after.error.tolist(), strict=True
-    )
-    results = [
-        {"time": time, "reported": text, "without": without, "error": error} for time, text, without, error in columns
-    ]
+    columns = (utc_text(after.time), after.specimen, after.text, after.text_without, after.error.tolist())
+    names = ("time", "specimen", "reported", "without", "error")
+    results = [dict(zip(names, row, strict=True)) for row in zip(*columns, strict=True)]
     described = asdict(fault) | {"stream": stream_name(sample.analyte, sample.line), "onset": _iso(fault.onset)}
     return described | {"onset_us": fault.onset, "results": results}
 
