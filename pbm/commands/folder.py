@@ -9,9 +9,14 @@ import typer
 from pbm.errors import InputError
 
 LabOption = Annotated[
-    Path | None, typer.Option("--lab", metavar="FOLDER", help="Folder that holds lab.toml.", show_default="the current folder")
+    Path | None,
+    typer.Option("--lab", metavar="FOLDER", help="Folder that holds lab.toml.", show_default="the current folder"),
 ]
 JsonOption = Annotated[bool, typer.Option("--json", help="Print JSON for a program instead of text for a person.")]
+WorkersOption = Annotated[
+    int | None, typer.Option("--workers", min=1, help="Processes to use.", show_default="one per processor")
+]
+SeedOption = Annotated[int, typer.Option("--seed", min=0, help="Master seed; the same seed gives the same figures.")]
 
 
 @dataclass(frozen=True)

@@ -6,7 +6,7 @@ import sys
 import typer
 
 from pbm import __version__
-from pbm.commands import intake
+from pbm.commands import appraise, intake, tune
 from pbm.errors import PbmError
 
 app = typer.Typer(
@@ -20,6 +20,8 @@ app = typer.Typer(
     add_completion=False,
 )
 app.command("intake")(intake.intake)
+app.command("tune")(tune.tune)
+app.command("appraise")(appraise.appraise)
 
 
 def _version(wanted: bool) -> None:
@@ -29,7 +31,9 @@ def _version(wanted: bool) -> None:
 
 
 @app.callback()
-def _options(version: bool = typer.Option(False, "--version", callback=_version, is_eager=True, help="Show the version.")) -> None:
+def _options(
+    version: bool = typer.Option(False, "--version", callback=_version, is_eager=True, help="Show the version."),
+) -> None:
     pass
 
 

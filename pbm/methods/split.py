@@ -35,8 +35,12 @@ class Split:
         return int(self.days[-1] - self.days[self.at] + 1)
 
 
-def split_days(days: Integers) -> Split:
-    """Split at two thirds of the days that have results; `days` (n,) is the local day of each result, at least two distinct."""
+def first_held_out_day(days: Integers) -> int:
+    """The day after two thirds of the days that have results; `days` (n,) is the local day of each result, at least two distinct."""
     distinct = np.unique(days)
-    first_held_out = distinct[int(len(distinct) * TRAINING_SHARE)]
+    return int(distinct[int(len(distinct) * TRAINING_SHARE)])
+
+
+def split_at(days: Integers, first_held_out: int) -> Split:
+    """Split at a day, which begins the held-out part."""
     return Split(days, int(np.searchsorted(days, first_held_out)))

@@ -1,6 +1,6 @@
 """`plan.toml`: what each stream's monitor is, its limits, and where they came from."""
 
-from datetime import datetime
+from datetime import date, datetime
 from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
@@ -112,12 +112,13 @@ class MonitorPlan(Written):
 
 
 class StreamPlan(Written):
-    """What was decided for one stream: its monitors, or the reason why it has none."""
+    """What was decided for one stream: its monitors, or the reason why it has none; the days from `held_out_from` on did not train it."""
 
     unit: str
     verdict: Verdict
     reason: str
     results_per_day: NotNegative
+    held_out_from: date | None = None
     monitors: tuple[MonitorPlan, ...] = ()
 
 

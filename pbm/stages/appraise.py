@@ -6,6 +6,7 @@ interval of a bootstrap over the days of the onsets, except the exact Poisson in
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from datetime import date, timedelta
 
 import numpy as np
 
@@ -18,7 +19,7 @@ from pbm.methods.expected import Onsets
 from pbm.methods.faults import Fault
 from pbm.methods.intervals import day_weights, poisson_interval
 from pbm.methods.jit import Floats, Integers
-from pbm.methods.split import Split, split_days
+from pbm.methods.split import Split, first_held_out_day, split_at
 from pbm.methods.trials import Stretch, Trial, alarm_and_stop, trial
 from pbm.records.appraisal import (
     AloneAndWith,
@@ -41,6 +42,7 @@ from pbm.stages.surroundings import Surroundings
 from pbm.stages.words import controls_in_words, monitor_in_words
 
 ONSETS = 400
+EPOCH = date(1970, 1, 1)
 DRAWS = 400
 TRACE_POINTS = 400
 
@@ -51,7 +53,7 @@ def appraise_stream(history: StreamHistory, plan: StreamPlan, lab: Lab, seed: in
     Parameters
     ----------
     history
-        All results of the stream; the last third of its days is held out.
+        All results of the stream; the days from the plan's `held_out_from` on are held out.
     plan
         What was decided for the stream, possibly edited by a person.
     lab
@@ -62,14 +64,21 @@ def appraise_stream(history: StreamHistory, plan: StreamPlan, lab: Lab, seed: in
     Raises
     ------
     PlanError
-        If the plan's unit is not that of `lab.toml`.
+        If the plan's unit is not that of `lab.toml`, or no day is held out.
     """
     around = Surroundings.of(history.name, lab, seed)
     if plan.unit != around.analyte.unit:
         raise PlanError(
             f"plan.toml gives {history.name} in {plan.unit}, lab.toml in {around.analyte.unit}. Correct one of them, or tune again."
         )
-    return _Appraising(around, history, split_days(local_days(history.time, lab.laboratory.zone))).judged(plan)
+    days = local_days(history.time, lab.laboratory.zone)
+    split = split_at(days, (plan.held_out_from - EPOCH).days if plan.held_out_from else first_held_out_day(days))
+    if split.at in (0, len(history)):
+        raise PlanError(
+            f"plan.toml holds out the days from {plan.held_out_from} of {history.name}, and the history runs from "
+            f"{EPOCH + timedelta(int(days[0]))} to {EPOCH + timedelta(int(days[-1]))}. Take in later results, or tune again."
+        )
+    return _Appraising(around, history, split).judged(plan)
 
 
 @dataclass(frozen=True)

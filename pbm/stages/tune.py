@@ -5,6 +5,7 @@ schedule present (methods/search.py); the winner's limits come from the day-bloc
 """
 
 from dataclasses import dataclass
+from datetime import date, timedelta
 from functools import partial
 
 import numpy as np
@@ -20,7 +21,7 @@ from pbm.methods.intervals import poisson_interval
 from pbm.methods.jit import Integers
 from pbm.methods.limits import CalibratedLimits, calibrated_limits
 from pbm.methods.search import Runner, best_of, limited, scores, simplest_near_best
-from pbm.methods.split import Split, split_days
+from pbm.methods.split import Split, first_held_out_day, split_at
 from pbm.methods.trials import Stretch, Trial, alarm_and_stop, trial
 from pbm.records.laboratory import Lab
 from pbm.records.plan import (
@@ -62,7 +63,7 @@ def tune_stream(history: StreamHistory, lab: Lab, seed: int) -> StreamPlan:
     refusal = _too_little(days)
     if refusal:
         return _no_monitor(around, days, refusal)
-    return _Tuning(around, history, split_days(days)).plan()
+    return _Tuning(around, history, split_at(days, first_held_out_day(days))).plan()
 
 
 def _too_little(days: Integers) -> str | None:
@@ -139,6 +140,7 @@ class _Tuning:
             verdict=verdict.word,
             reason=verdict.reason,
             results_per_day=round(self.per_day, 1),
+            held_out_from=date(1970, 1, 1) + timedelta(int(days[self.split.at])),
             monitors=monitors,
         )
 
