@@ -1,4 +1,4 @@
-"""Command line: `python -m synthetic_streams FOLDER --days 120 --volume 1 --seed 1 --fault sodium@line-2 shift 0.75TEa 34`."""
+"""Command line: `python -m synthetic_streams FOLDER --days 120 --volume 1 --seed 1 --fault sodium@line-2,shift,-1TEa,34`."""
 
 import argparse
 import re
@@ -12,12 +12,12 @@ from synthetic_streams.write import live_start, write_laboratory
 _SIZE = re.compile(r"^([+-]?\d+(?:\.\d+)?)(TEa|SD|unit|percent)$")
 
 
-def fault_of(words: list[str], days: int) -> Fault:
-    """Read a fault: STREAM KIND SIZE HOURS, for example ``sodium@line-2 shift -1TEa 34``.
+def fault_of(text: str, days: int) -> Fault:
+    """Read a fault: STREAM,KIND,SIZE,HOURS, for example ``sodium@line-2,shift,-1TEa,34``.
 
     Parameters
     ----------
-    words
+    text
         Stream, kind, size with its unit (for noise the factor on the analytic SD), hours after the live days began;
         for drift and sporadic one word more: results until the full size, or share of results.
     days
@@ -28,15 +28,14 @@ def fault_of(words: list[str], days: int) -> Fault:
     ValueError
         If a word cannot be read.
     """
-    stream, kind, size, hours, *more = words
-    analyte, _, line = stream.partition("@")
-    found = _SIZE.match(size)
-    if found is None or not line or len(more) > 1:
-        raise ValueError(
-            f"expected STREAM KIND SIZE HOURS such as sodium@line-2 shift -1TEa 34, found {' '.join(words)}"
-        )
+    words = text.split(",")
+    size = _SIZE.match(words[2]) if 4 <= len(words) <= 5 else None
+    if size is None:
+        raise ValueError(f"expected STREAM,KIND,SIZE,HOURS such as sodium@line-2,shift,-1TEa,34, found {text}")
+    analyte, _, line = words[0].partition("@")
+    kind, hours, more = words[1], words[3], words[4:]
     onset = live_start(days) + round(float(hours) * HOUR)
-    fault = Fault(analyte, line, onset, kind, float(found[1]), found[2])
+    fault = Fault(analyte, line, onset, kind, float(size[1]), size[2])
     if more and kind == "drift":
         return replace(fault, over=int(more[0]))
     return replace(fault, share=float(more[0])) if more else fault
@@ -49,12 +48,10 @@ def main(arguments: list[str] | None = None) -> int:
     parser.add_argument("--days", type=int, default=120, help="days of history; two live days follow")
     parser.add_argument("--volume", type=float, default=1.0, help="factor on the number of specimens")
     parser.add_argument("--seed", type=int, default=1)
-    parser.add_argument(
-        "--fault", nargs="+", action="append", metavar="WORD", help="STREAM KIND SIZE HOURS [RESULTS|SHARE]"
-    )
+    parser.add_argument("--fault", action="append", default=[], help="STREAM,KIND,SIZE,HOURS[,RESULTS or SHARE]")
     given = parser.parse_args(arguments)
     try:
-        faults = [fault_of(words, given.days) for words in given.fault] if given.fault else None
+        faults = [fault_of(text, given.days) for text in given.fault] or None
         told = write_laboratory(given.folder, given.days, given.volume, given.seed, faults)
     except ValueError as problem:
         parser.error(str(problem))
