@@ -1,9 +1,11 @@
 """Judging control measurements one event at a time: the law that both the exact chain and the simulation run.
 
-Each count rule keeps, for the sequence of all measurements and for each level's own sequence, two windows of bits: which of the last m
-measurements were beyond +L, and which beyond -L, the newest in the lowest bit. A rule is met when a window holds k bits.
+Each count rule remembers, for the sequence of all measurements and for each level's own sequence, what it needs of the past:
 
-State: [up, down of (rule 1, all), (rule 1, level 1), ... (rule 2, all), ...].
+    k in a row     the length of the present run beyond the limit, positive above and negative below; met at k
+    k of m         two windows of bits, the newest lowest: which of the last m were beyond +L, which beyond -L; met at k bits in one
+
+State: two integers for each of (rule 1, all), (rule 1, level 1), ... (rule 2, all), ...; the second is not used by k in a row.
 """
 
 from dataclasses import dataclass
@@ -52,22 +54,46 @@ def accepts(
         high = max(high, x)
         low = min(low, x)
         for r in range(len(limit)):
-            up = 1 if x > limit[r] else 0
-            down = 1 if x < -limit[r] else 0
-            keep = (1 << window[r]) - 1
-            place = 2 * r * sequences
+            side = 1 if x > limit[r] else (-1 if x < -limit[r] else 0)
             for which in range(2 if sequences > 1 else 1):
-                at = place + 2 * which * (1 + level[i])
-                state[at] = ((state[at] << 1) | up) & keep
-                state[at + 1] = ((state[at + 1] << 1) | down) & keep
-                bits = state[at] * up + state[at + 1] * down
-                found = 0
-                while bits:
-                    bits &= bits - 1
-                    found += 1
-                if found >= needed[r]:
-                    return False
+                at = 2 * (r * sequences + which * (1 + level[i]))
+                if needed[r] == window[r]:
+                    run = state[at] + side if state[at] * side > 0 else side
+                    state[at] = run
+                    if run * side >= needed[r]:
+                        return False
+                else:
+                    keep = (1 << window[r]) - 1
+                    state[at] = (state[at] << 1) & keep | (side > 0)
+                    state[at + 1] = (state[at + 1] << 1) & keep | (side < 0)
+                    bits = state[at] if side > 0 else state[at + 1]
+                    found = 0
+                    while side != 0 and bits:
+                        bits &= bits - 1
+                        found += 1
+                    if found >= needed[r]:
+                        return False
     return not (high - low > spread or (high > opposite and low < -opposite))
+
+
+def still_needed(bits: int, needed: int, window: int) -> int:
+    """The bits of a window that can still help to meet its rule when further measurements come.
+
+    A bit of age a (0 the newest) leaves the window after m - 1 - a further measurements; if even those all beyond the limit could not make
+    k with it and the newer bits, it is forgotten. So states that share every future are one state.
+
+    Examples
+    --------
+    >>> [bin(still_needed(bits, 2, 3)) for bits in (0b001, 0b010, 0b100)], bin(still_needed(0b1000, 4, 5))
+    (['0b1', '0b10', '0b0'], '0b0')
+    """
+    found = 0
+    kept = 0
+    for age in range(window - 1):
+        found += (bits >> age) & 1
+        if found + window - 1 - age >= needed:
+            kept |= bits & (1 << age)
+    return kept
 
 
 @dataclass(frozen=True, slots=True)
@@ -114,6 +140,12 @@ class Judge:
     def width(self) -> int:
         """Measurements in an event."""
         return len(self.level)
+
+    @property
+    def blind(self) -> bool:
+        """Whether no event can be rejected."""
+        within_event = min(self.spread, self.opposite) if self.width > 1 else np.inf
+        return len(self.limit) == 0 and bool(np.isinf(min(self.outer, within_event)))
 
     @property
     def state_size(self) -> int:
