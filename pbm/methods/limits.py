@@ -61,8 +61,8 @@ class Tail:
         return self.count * math.exp(-(distance - self.threshold) / self.excess)
 
     def face_value_limit(self, expected: float) -> float:
-        """The distance at which `rate` is the expected number."""
-        return self.threshold + self.excess * math.log(max(self.count, 0.5) / expected)
+        """The distance at which `rate` is the expected number, at least the threshold."""
+        return self.threshold + self.excess * math.log(max(self.count / expected, 1.0))
 
 
 def side_episodes(path: Floats, centre: float, side: int, distance: float) -> Episodes:
@@ -128,8 +128,8 @@ def _resampled_days(z: Floats, first: Integers, random: np.random.Generator) -> 
 
 def _predictive(tails: list[Tail], expected: float) -> float:
     """The distance whose rate, averaged over the tails, is the expected number."""
-    inner = 0.0
-    outer = max(t.face_value_limit(expected) for t in tails) + max(t.excess for t in tails)
+    inner = tails[0].threshold  # the same for all; the tail says nothing of distances inside it
+    outer = inner + max(t.face_value_limit(expected) - inner + t.excess for t in tails)
     for _ in range(60):
         middle = (inner + outer) / 2
         too_many = sum(t.rate(middle) for t in tails) / len(tails) > expected
