@@ -21,7 +21,7 @@ Ints = npt.NDArray[np.int64]
 
 COMMENTS = ("HEM", "QNS", "see note")
 GLUCOSE_MG_PER_DL = 18.016
-SLIP_FROM, SLIP_HOURS = time(10), 4
+SLIP_FROM, SLIP_HOURS = time(14), 4
 
 
 @dataclass(frozen=True, slots=True)
@@ -101,8 +101,10 @@ def pick(rows: Rows, count: int, rng: np.random.Generator, among: npt.NDArray[np
 
 
 def slip_unit(laboratory: Laboratory, rows: Rows, days: int) -> None:
-    """For four hours of one day glucose leaves in mg/dL."""
-    day = laboratory.first_day + timedelta(int(0.4 * days))
+    """For four hours of a working day (the Wednesday next to two fifths of the history) glucose leaves in mg/dL."""
+    near = laboratory.first_day + timedelta(int(0.4 * days))
+    wednesday = near + timedelta(2 - near.weekday())
+    day = wednesday if laboratory.first_day <= wednesday < laboratory.first_day + timedelta(days) else near
     start = utc(datetime.combine(day, SLIP_FROM))
     glucose = np.array([analyte.key == "glucose" for analyte, _ in STREAMS])[rows.stream]
     hit = (rows.category == Category.ORDINARY) & glucose
