@@ -4,12 +4,12 @@ x --admit--> x' --transform--> z = T(x') --statistic--> s
 """
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from pbm.methods.admit import admit
-from pbm.methods.jit import Floats, Integers, mapped, mapped_pairs, scan, states_at, until
+from pbm.methods.jit import Floats, Integers, mapped, mapped_pairs, run_ends, scan, states_at, until
 from pbm.methods.statistics import STATISTICS, Statistic
 from pbm.methods.transform import TRANSFORMS
 
@@ -65,21 +65,37 @@ class Preparation:
 
 @dataclass(frozen=True, slots=True)
 class Tracker:
-    """A statistic with its parameter and centre.
+    """A statistic with its parameters and centre.
 
     Attributes
     ----------
     statistic
         A name in the table of statistics.
     parameter
-        Window or weight.
+        The chosen one: window, weight or reference.
     centre
         In-control level of the statistic, on its own scale.
+    more
+        The statistic's other parameters, in the order of the table.
+
+    Raises
+    ------
+    ValueError
+        If the parameters are not as many as the table names.
     """
 
     statistic: str
     parameter: float
     centre: float
+    more: tuple[float, ...] = ()
+
+    def __post_init__(self) -> None:
+        """Every parameter that the law reads is there."""
+        wanted = self.law.parameters[1:]
+        if len(self.more) != len(wanted):
+            raise ValueError(
+                f"statistic {self.statistic} needs {len(wanted)} more parameters {wanted}, got {self.more}"
+            )
 
     @property
     def law(self) -> Statistic:
@@ -89,7 +105,12 @@ class Tracker:
     @property
     def par(self) -> tuple[float, ...]:
         """Parameters of the step."""
-        return (float(self.parameter),)
+        return (float(self.parameter), *self.more)
+
+    @property
+    def named(self) -> dict[str, float]:
+        """Every parameter by its name in the table."""
+        return dict(zip(self.law.parameters, self.par, strict=True))
 
     def start(self) -> list[float]:
         """The state before the first value, for the live monitor."""
@@ -109,12 +130,47 @@ class Tracker:
         """Index into z of the first value at which the statistic leaves [low, high], -1 where it does not, shape (r,)."""
         return until(self.law.step, states, starts, ends, z, self.par, low, high)
 
+    def run_ends(self, z: Floats, low: float, high: float, begin: Floats | None = None) -> Integers:
+        """Runs one after the other, each begun afresh: index into z of the value with which each leaves [low, high], shape (r,).
 
-def tracker_for(z: Floats, statistic: str, parameter: float) -> Tracker:
-    """The statistic centred on its in-control level over prepared values z, shape (n,)."""
-    mean = float(np.nanmean(z))
-    if STATISTICS[statistic].starts_at_centre:
-        return Tracker(statistic, parameter, mean)
-    path = Tracker(statistic, parameter, mean).path(z)
+        Parameters
+        ----------
+        z : (n,)
+            Prepared values.
+        low, high
+            Control limits.
+        begin : (s,), optional
+            State at the begin of each run; a fresh start if left out.
+        """
+        return run_ends(self.law.step, np.array(self.start()) if begin is None else begin, z, self.par, low, high)
+
+
+def tracker_for(z: Floats, statistic: str, parameter: float, **more: float) -> Tracker:
+    """The statistic centred on its in-control level over prepared values.
+
+    Parameters
+    ----------
+    z : (n,)
+        In-control values; not a number where dropped.
+    statistic, parameter
+        A name in the table of statistics, and its window, weight or reference.
+    **more
+        Its other parameters by name; the level and spread of the values are taken from z where not given.
+
+    Raises
+    ------
+    ValueError
+        If z holds no value, or a parameter is missing or is none of the statistic's.
+    """
+    law = STATISTICS[statistic]
+    if np.isnan(z).all():
+        raise ValueError("a statistic cannot be centred on no values")
+    learned = {"level": float(np.nanmean(z)), "spread": float(np.nanstd(z)), "zero": 0.0}
+    known = {**learned, **more}
+    wanted = law.parameters[1:]
+    if not set(more) <= set(wanted) <= set(known):
+        raise ValueError(f"statistic {statistic} takes {wanted} beside its {law.parameter}, got {tuple(more)}")
+    begun = Tracker(statistic, parameter, learned[law.begins], tuple(float(known[name]) for name in wanted))
+    path = begun.path(z) if law.settles else np.zeros(0)
     judged = path[~np.isnan(path)]
-    return Tracker(statistic, parameter, float(judged.mean()) if len(judged) else mean)
+    return replace(begun, centre=float(judged.mean())) if len(judged) else begun

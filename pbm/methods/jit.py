@@ -96,6 +96,25 @@ def _states_loop(step: Step) -> Callable[..., Any]:
 
 
 @cache
+def _run_ends_loop(step: Step) -> Callable[..., Any]:
+    law = compiled(step)
+
+    def loop(begin: Floats, xs: Floats, par: Parameters, low: float, high: float, ends: Integers) -> int:
+        state = begin.copy()
+        found = 0
+        for i in range(len(xs)):
+            if xs[i] == xs[i]:
+                s = law(state, xs[i], par)
+                if s > high or s < low:
+                    ends[found] = i
+                    found += 1
+                    state[:] = begin
+        return found
+
+    return compiled(loop)
+
+
+@cache
 def _map_loop(law: Callable[..., float]) -> Callable[..., Any]:
     body = compiled(law)
 
@@ -182,6 +201,31 @@ def states_at(step: Step, state: Floats, xs: Floats, par: Parameters, at: Intege
     out = np.empty((len(at), len(state)))
     _states_loop(step)(state.copy(), xs, par, at, out)
     return out
+
+
+def run_ends(step: Step, begin: Floats, xs: Floats, par: Parameters, low: float, high: float) -> Integers:
+    """Runs one after the other, each from the same state: where each ends.
+
+    Parameters
+    ----------
+    step
+        The statistic.
+    begin : (s,)
+        State at the begin of each run; not changed.
+    xs : (n,)
+        Values; not-a-number entries are dropped results.
+    par
+        Parameters of the step.
+    low, high
+        Control limits; a value on a limit is inside.
+
+    Returns
+    -------
+    (r,)
+        Index into xs of the value that crossed, run by run; what follows the last crossing is a run not ended.
+    """
+    ends = np.empty(len(xs), dtype=np.int64)
+    return ends[: _run_ends_loop(step)(begin, xs, par, low, high, ends)].copy()
 
 
 def mapped(law: Callable[..., float], xs: Floats, par: Parameters) -> Floats:

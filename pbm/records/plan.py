@@ -76,8 +76,41 @@ class HeldOut(Written):
     kept: bool
 
 
+class Outside(Written):
+    """A value below `low` or above `high` is counted by a moving share; on the statistic's (transformed) scale, one side may be open."""
+
+    low: Finite | None = None
+    high: Finite | None = None
+
+    @model_validator(mode="after")
+    def _some_is_given(self) -> "Outside":
+        if self.low is None and self.high is None:
+            raise ValueError("expected { low = ... }, { high = ... } or both")
+        if self.low is not None and self.high is not None and self.low > self.high:
+            raise ValueError("expected low not above high")
+        return self
+
+
+# Which keys beside the centre describe each statistic. All need the ones named; the level may be given with any.
+PARAMETER_KEYS: dict[StatisticName, tuple[str, ...]] = {
+    "mean": ("window",),
+    "median": ("window",),
+    "ewma": ("weight",),
+    "sd": ("window", "level"),
+    "ewsd": ("weight", "level"),
+    "share": ("window", "outside", "level"),
+    "cusum": ("reference", "level"),
+    "batch": ("window", "exponent"),
+}
+_OPTIONAL_KEYS = ("window", "weight", "reference", "outside", "exponent", "level")
+
+
 class MonitorPlan(Written):
-    """One monitor of a stream: from raw result to alarm."""
+    """One monitor of a stream: from raw result to alarm.
+
+    `centre` is the in-control level of the statistic, `level` that of the values it takes (the centre, if left out); `spread` is the
+    in-control SD of the values.
+    """
 
     watches: Literal["shift", "imprecision"] = "shift"
     admit: Admit = Admit()
@@ -86,6 +119,10 @@ class MonitorPlan(Written):
     statistic: StatisticName
     window: Annotated[int, Field(ge=2, le=5000)] | None = None
     weight: Annotated[float, Field(gt=0, le=1)] | None = None
+    reference: NotNegative | None = None
+    outside: Outside | None = None
+    exponent: Annotated[float, Field(gt=0, le=2)] | None = None
+    level: Finite | None = None
     centre: Finite
     limits: ControlLimits
     limits_interval: LimitsInterval | None = None
@@ -103,11 +140,11 @@ class MonitorPlan(Written):
             raise ValueError("expected limits.low < centre < limits.high")
         if (self.transform == "boxcox") != (self.transform_lambda is not None):
             raise ValueError('transform_lambda goes with transform = "boxcox" and only with it')
-        needs_weight = self.statistic in ("ewma", "ewsd")
-        if needs_weight != (self.weight is not None) or needs_weight == (self.window is not None):
-            raise ValueError(
-                f"statistic {self.statistic} takes {'weight' if needs_weight else 'window'} and not the other"
-            )
+        needed = PARAMETER_KEYS[self.statistic]
+        given = [key for key in _OPTIONAL_KEYS if getattr(self, key) is not None]
+        if not set(needed) <= set(given) <= {*needed, "level"}:
+            found = " and ".join(given) or "neither"
+            raise ValueError(f"statistic {self.statistic} takes {' and '.join(needed)}, found {found}")
         return self
 
 

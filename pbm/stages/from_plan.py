@@ -6,6 +6,7 @@ from pbm.methods.alarm import Limits
 from pbm.methods.chain import Preparation, Tracker
 from pbm.methods.faults import Fault, Reporting
 from pbm.methods.onset import InControl
+from pbm.methods.statistics import STATISTICS
 from pbm.methods.unreliable import ErrorModel
 from pbm.records.laboratory import Analyte, FaultList
 from pbm.records.plan import MonitorPlan
@@ -52,10 +53,16 @@ def preparation(monitor: MonitorPlan) -> Preparation:
 
 
 def tracker(monitor: MonitorPlan) -> Tracker:
-    """Statistic, parameter and centre of a monitor."""
-    parameter = monitor.weight if monitor.weight is not None else monitor.window
-    assert parameter is not None  # the plan's own check
-    return Tracker(monitor.statistic, float(parameter), monitor.centre)
+    """Statistic, parameters and centre of a monitor."""
+    chosen, *more = (_parameter(monitor, name) for name in STATISTICS[monitor.statistic].parameters)
+    return Tracker(monitor.statistic, chosen, monitor.centre, tuple(more))
+
+
+def _parameter(monitor: MonitorPlan, name: str) -> float:
+    if name in ("low", "high"):
+        side = getattr(monitor.outside, name)
+        return float({"low": -math.inf, "high": math.inf}[name] if side is None else side)
+    return float(getattr(monitor, name))  # the plan's own check has it there
 
 
 def limits(monitor: MonitorPlan) -> Limits:
@@ -65,4 +72,5 @@ def limits(monitor: MonitorPlan) -> Limits:
 
 def in_control(monitor: MonitorPlan) -> InControl:
     """In-control behaviour of a monitor's admitted values, for the estimate of an onset."""
-    return InControl(monitor.centre, monitor.spread, monitor.inflation, monitor.slope)
+    level = monitor.centre if monitor.level is None else monitor.level
+    return InControl(level, monitor.spread, monitor.inflation, monitor.slope)
