@@ -118,7 +118,7 @@ class Chain:
         low = max(float(self.edges[0]), mean - TAIL * multiple)
         high = min(float(self.edges[-1]), mean + TAIL * multiple)
         if low >= high:
-            return np.empty(0), np.empty(0)
+            return np.array([mean]), np.zeros(1)
         kinks = np.concatenate([self.edges, self.edges - self.spread, np.arange(low, high, multiple)])
         cuts = np.unique(np.append(kinks[(kinks > low) & (kinks < high)], [low, high]))
         middle, half = (cuts[1:] + cuts[:-1]) / 2, np.diff(cuts) / 2
@@ -161,6 +161,8 @@ class Chain:
     def events_to_rejection(self, start: Floats, chances: Floats) -> float:
         """Mean number of events until one is rejected, that one included: sum of S_k, geometric once the state has settled.
 
+        Infinite where rejection is too rare to be told from never (less than 1e-13 an event).
+
         Parameters
         ----------
         start : (states,)
@@ -179,7 +181,7 @@ class Chain:
                 change = float(np.abs(following - state).sum())
                 state = following
             if change < SETTLED:
-                return total + running / (1 - kept)
+                return total + running / (1 - kept) if 1 - kept > SETTLED else np.inf
         return total
 
 

@@ -58,7 +58,7 @@ class Rule:
     def title(self) -> str:
         """As people read it."""
         if self.kind == "range":
-            return f"{self.notation}: range of one event more than {self.limit:g} SD"
+            return f"{self.notation}: range of one event more than {self.limit:g} SD (the default reading)"
         if self.kind == "opposite":
             return f"{self.notation}: one beyond +{self.limit:g} SD and another beyond -{self.limit:g} SD in one event"
         beyond = f"beyond {self.limit:g} SD, on the same side" if self.limit else "on the same side of the mean"
@@ -82,7 +82,7 @@ def parse_rule(text: str) -> Rule:
     >>> parse_rule("2of3-2s").title
     '2of3-2s: 2 of 3 in a row beyond 2 SD, on the same side'
     >>> parse_rule("R-4s").title
-    'R-4s: range of one event more than 4 SD'
+    'R-4s: range of one event more than 4 SD (the default reading)'
     """
     notation = text.strip()
     if found := _RANGE.fullmatch(notation):
@@ -98,11 +98,14 @@ def parse_rule(text: str) -> Rule:
 
 
 def _checked(rule: Rule) -> Rule:
-    if rule.kind == "count" and not 1 <= rule.needed <= rule.window <= LONGEST:
-        wanted = f"counts from 1 to {LONGEST}, and not more measurements beyond than looked at"
-        raise ValueError(f"control rule {rule.notation!r} cannot be met: expected {wanted}")
-    if rule.limit == 0 and (rule.kind != "count" or rule.needed == 1 or not rule.notation.endswith("x")):
-        raise ValueError(f"control rule {rule.notation!r} would reject nearly every event; understood are {UNDERSTOOD}")
+    fewest = 2 if rule.notation.endswith("x") else 1
+    if rule.kind == "count" and not fewest <= rule.needed <= rule.window <= LONGEST:
+        wanted = f"a count from {fewest} to {LONGEST}, and not more measurements beyond the limit than are looked at"
+        raise ValueError(f"control rule {rule.notation!r} makes no sense: expected {wanted}")
+    if rule.limit == 0 and not rule.notation.endswith("x"):
+        raise ValueError(
+            f"control rule {rule.notation!r} has a limit of 0 SD: expected one above 0 (the same side of the mean is written kx, as in 10x)"
+        )
     return rule
 
 

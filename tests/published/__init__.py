@@ -1,0 +1,1 @@
+"""Values from outside, each with its source: what the tool computes is compared with what others printed."""

@@ -1,0 +1,1 @@
+"""The published figures as they were printed, one module a method."""
