@@ -7,6 +7,7 @@ history/extracts.json                           which extracts were taken, by SH
 
 import difflib
 import hashlib
+import json
 import re
 from pathlib import Path
 from typing import Any
@@ -19,33 +20,48 @@ import pyarrow.compute as pc
 import pyarrow.parquet as pq
 
 from pbm.errors import InputError
+from pbm.records.intake import COVARIATES, TakenExtract
 from pbm.records.plan import HistoryMark
 from pbm.records.stream import StreamHistory, StreamName
 
 RESULTS = "results.parquet"
 LEFT_OUT = "left-out.parquet"
 EXTRACTS = "extracts.json"
+PATIENT_KEY = "patient.key"
 _PREFIX = "stream="
 _UNSAFE = re.compile(r'[\x00-\x1f\x7f<>:"/\\|?*%]|^[ .]|[ .]$')
 
-TEXT_COLUMNS = ("specimen", "ward", "sex", "age", "priority", "patient")
-RESULT_SCHEMA = pa.schema(
-    [
-        ("time", pa.timestamp("us", tz="UTC")),
-        ("value", pa.float64()),
-        ("censor", pa.int8()),
-        *((name, pa.string()) for name in TEXT_COLUMNS),
-        ("file", pa.string()),
-        ("line", pa.int64()),
-    ]
-)
-# Where a row came from is not part of what was measured, so the mark of a history leaves it out.
-_MARKED = ("time", "value", "censor", *TEXT_COLUMNS)
+# The mark of a history leaves out where a row came from, and the tokens for patients, whose key differs from history to history.
+_MARKED = ("time", "value", "censor", *(name for name in COVARIATES if name != "patient"))
 
 
 def stream_folder(name: StreamName) -> str:
     """The name of a stream's folder: `stream=sodium@line-2`; characters that a file system may refuse are percent-encoded."""
     return _PREFIX + _UNSAFE.sub(lambda found: "".join(f"%{byte:02X}" for byte in found[0].encode()), str(name))
+
+
+def set_aside(folder: Path) -> Path:
+    """Where the old history stands for the instant in which a new one takes its place."""
+    return folder.with_name(f"{folder.name}.before")
+
+
+def read_extracts(folder: Path) -> list[TakenExtract]:
+    """The extracts that a history was made from, in the order in which they were taken; none where there is no history.
+
+    Raises
+    ------
+    InputError
+        If the list cannot be read.
+    """
+    path = folder / EXTRACTS
+    try:
+        return [TakenExtract(**one) for one in json.loads(path.read_text("utf-8"))]
+    except FileNotFoundError:
+        return []
+    except (ValueError, TypeError, OSError) as error:
+        raise InputError(
+            f"{path} cannot be read ({error}). Delete {folder} and take all extracts again with `pbm intake`."
+        ) from None
 
 
 def read_streams(folder: Path) -> list[StreamName]:
@@ -56,6 +72,10 @@ def read_streams(folder: Path) -> list[StreamName]:
     InputError
         If there is no history in the folder.
     """
+    if not folder.is_dir() and (kept := set_aside(folder)).is_dir():
+        raise InputError(
+            f"An intake was cut off while it changed {folder}. Rename {kept} to {folder}, or run `pbm intake` again."
+        )
     if not folder.is_dir():
         raise InputError(f"There is no history in {folder}. Make one with `pbm intake FILE...`.")
     found = [one.parent.name for one in folder.glob(f"{_PREFIX}*/{RESULTS}")]
@@ -84,7 +104,7 @@ def read_history(folder: Path, name: StreamName) -> StreamHistory:
 
 
 def read_results(folder: Path, name: StreamName, columns: list[str] | None = None) -> pa.Table:
-    """The table of one stream: see `RESULT_SCHEMA`; all columns, or those named.
+    """The table of one stream: see `records.intake.RESULT_SCHEMA`; all columns, or those named.
 
     Raises
     ------
@@ -117,8 +137,8 @@ def stream_sizes(folder: Path) -> dict[StreamName, int]:
 def history_mark(folder: Path) -> HistoryMark:
     """What a history holds: first and last time, number of results, and a hash of the contents.
 
-    The hash covers, stream by stream in order of name and row by row in stored order, what was measured (time, value, censor, specimen and
-    covariates), not the bytes of the Parquet files: another version of the file format gives the same hash.
+    The hash covers, stream by stream in order of name and row by row in stored order, what was measured (time, value, censor, specimen,
+    ward, sex, age, priority), not the bytes of the Parquet files: another version of the file format gives the same hash.
 
     Raises
     ------

@@ -32,9 +32,11 @@ def _known_zone(name: str) -> str:
 
 def _known_encoding(name: str) -> str:
     try:
-        codecs.lookup(name)
-    except (LookupError, ValueError):
-        raise ValueError('expected an encoding such as "utf-8", "utf-16" or "latin-1"') from None
+        known = isinstance(codecs.getincrementaldecoder(name)().decode(b""), str)
+    except (LookupError, TypeError, ValueError):
+        known = False
+    if not known:
+        raise ValueError('expected an encoding of text such as "utf-8", "utf-16" or "latin-1"')
     return name
 
 
