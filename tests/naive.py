@@ -1,0 +1,116 @@
+"""Slow, obvious twins of what pbm computes, written from the definitions and sharing no code with it."""
+
+import math
+import statistics
+from collections.abc import Callable, Sequence
+from fractions import Fraction
+
+Event = Sequence[tuple[int, float]]  # measurements of one control event in order: level, and SD from that level's mean
+
+
+def first_rejected(notations: Sequence[str], events: Sequence[Event], within_event: bool = False) -> int | None:
+    """The first event that any of the control rules rejects, or None.
+
+    After each event the whole past is laid out anew, and every window that ends within the newest event is counted.
+    """
+    for newest in range(len(events)):
+        seen = [events[newest]] if within_event else list(events[: newest + 1])
+        if any(_rejects(notation, seen) for notation in notations):
+            return newest
+    return None
+
+
+def _rejects(notation: str, events: Sequence[Event]) -> bool:
+    values = [z for _, z in events[-1]]
+    if notation.startswith("R-"):
+        if notation.endswith("-opposite"):
+            half = float(notation[2:].removesuffix("s-opposite")) / 2
+            return any(z > half for z in values) and any(z < -half for z in values)
+        return max(values) - min(values) > float(notation[2:].removesuffix("s"))
+    needed, window, limit = _count(notation)
+    levels = {level for level, _ in events[-1]}
+    sequences = [([z for event in events for _, z in event], len(events[-1]))]
+    for chosen in levels:
+        own = [z for event in events for level, z in event if level == chosen]
+        sequences.append((own, sum(level == chosen for level, _ in events[-1])))
+    return any(_found(sequence, new, needed, window, limit) for sequence, new in sequences)
+
+
+def _count(notation: str) -> tuple[int, int, float]:
+    if notation.endswith("x"):
+        return int(notation[:-1]), int(notation[:-1]), 0.0
+    share, limit = notation.removesuffix("s").split("-")
+    needed, _, window = share.partition("of")
+    return int(needed), int(window or needed), float(limit)
+
+
+def _found(sequence: list[float], new: int, needed: int, window: int, limit: float) -> bool:
+    for end in range(len(sequence) - new + 1, len(sequence) + 1):
+        looked_at = sequence[max(0, end - window) : end]
+        if sum(z > limit for z in looked_at) >= needed or sum(z < -limit for z in looked_at) >= needed:
+            return True
+    return False
+
+
+def moving_mean(z: Sequence[float], window: int) -> list[float]:
+    """Mean of the last `window` values."""
+    return _of_window(z, window, statistics.fmean)
+
+
+def moving_median(z: Sequence[float], window: int) -> list[float]:
+    """Median of the last `window` values."""
+    return _of_window(z, window, statistics.median)
+
+
+def moving_sd(z: Sequence[float], window: int) -> list[float]:
+    """Sample SD of the last `window` values, in exact arithmetic until the root."""
+    return _of_window(z, window, lambda values: float(statistics.stdev(map(Fraction, values))))
+
+
+def moving_share(z: Sequence[float], window: int, low: float, high: float) -> list[float]:
+    """Part of the last `window` values outside [low, high]."""
+    return _of_window(z, window, lambda values: sum(not low <= x <= high for x in values) / window)
+
+
+def _of_window(z: Sequence[float], window: int, of: Callable[[Sequence[float]], float]) -> list[float]:
+    return [float(of(z[i + 1 - window : i + 1])) if i + 1 >= window else math.nan for i in range(len(z))]
+
+
+def ewma(z: Sequence[float], weight: float, centre: float) -> list[float]:
+    """Weighted mean of the centre and all values, the weights written out."""
+    return [_weighted([centre, *z[: i + 1]], weight) for i in range(len(z))]
+
+
+def ewsd(z: Sequence[float], weight: float, level: float, centre: float) -> list[float]:
+    """Root of the weighted mean of squared deviations, the weights written out."""
+    squares = [(x - level) ** 2 for x in z]
+    return [math.sqrt(_weighted([centre**2, *squares[: i + 1]], weight)) for i in range(len(z))]
+
+
+def _weighted(values: Sequence[float], weight: float) -> float:
+    newest = len(values) - 1
+    weights = [(weight if i else 1.0) * (1 - weight) ** (newest - i) for i in range(len(values))]
+    return math.fsum(w * x for w, x in zip(weights, values, strict=True))
+
+
+def cusum(z: Sequence[float], reference: float, level: float, spread: float) -> list[float]:
+    """The largest drift of any tail of the values beyond the reference, upwards or downwards, with its sign."""
+    u = [(x - level) / spread for x in z]
+
+    def largest(side: int, newest: int) -> float:
+        tails = (math.fsum(side * x - reference for x in u[first : newest + 1]) for first in range(newest + 2))
+        return max(0.0, *tails)
+
+    sums = [(largest(1, i), largest(-1, i)) for i in range(len(u))]
+    return [up if up >= down else -down for up, down in sums]
+
+
+def batch_mean(z: Sequence[float], size: int, exponent: float, centre: float) -> list[float]:
+    """The estimate after each whole batch, batch by batch."""
+    out = [math.nan] * len(z)
+    for first in range(0, len(z) - size + 1, size):
+        powers = [math.copysign(abs(x - centre) ** exponent, x - centre) for x in z[first : first + size]]
+        mean = math.fsum(powers) / size
+        centre += math.copysign(abs(mean) ** (1 / exponent), mean)
+        out[first + size - 1] = centre
+    return out
