@@ -59,11 +59,20 @@ def section(name: str, rows: list[Row]) -> Iterator[str]:
     yield from ("", f"### {function.removeprefix('test_').replace('_', ' ').capitalize()}", "")
     if text := getdoc(getattr(module, function)):
         yield from (*cleandoc(text).splitlines(), "")
-    yield "| quantity | source | published | ours | tolerance |"
-    yield "|---|---|---|---|---|"
+    if len({row["source"] for row in rows}) == 1:
+        yield from (f"Source: {rows[0]['source']}", "")
+        yield from table(rows, ("quantity", "published", "ours", "tolerance"))
+    else:
+        yield from table(rows, ("quantity", "source", "published", "ours", "tolerance"))
+
+
+def table(rows: list[Row], columns: tuple[str, ...]) -> Iterator[str]:
+    """Rows as a Markdown table."""
+    yield f"| {' | '.join(columns)} |"
+    yield "|---" * len(columns) + "|"
     for row in rows:
-        cells = row["quantity"], row["source"], row["published"], f"{row['ours']:.7g}", f"{row['tolerance']:.2g}"
-        yield f"| {' | '.join(str(cell).replace('|', chr(92) + '|') for cell in cells)} |"
+        shown = {**row, "ours": f"{row['ours']:.7g}", "tolerance": f"{row['tolerance']:.2g}"}
+        yield f"| {' | '.join(str(shown[column]).replace('|', '/') for column in columns)} |"
 
 
 def title(module: object) -> str:
