@@ -34,9 +34,10 @@ class Candidate:
     parameter: float
 
     @property
-    def complexity(self) -> tuple[int, int, int]:
-        """Order of simplicity: statistic, transform, truncation."""
+    def complexity(self) -> tuple[int, int, int, int]:
+        """Order of simplicity: baseline, statistic, transform, truncation."""
         return (
+            self.preparation.baseline is not None,
             list(PARAMETERS).index(self.statistic),
             ("none", "log", "boxcox").index(self.preparation.transform),
             math.isfinite(self.preparation.low) + self.preparation.winsorize,

@@ -9,6 +9,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from pbm.methods.admit import admit
+from pbm.methods.baseline import Baseline, Mix
 from pbm.methods.jit import Floats, Integers, mapped, mapped_pairs, run_ends, scan, states_at, until
 from pbm.methods.statistics import STATISTICS, Statistic
 from pbm.methods.transform import TRANSFORMS
@@ -28,6 +29,8 @@ class Preparation:
         "none", "log" or "boxcox".
     transform_lambda
         Of Box-Cox; ignored by the others.
+    baseline
+        Expected value by patient mix, taken away after the transform; None for none.
     """
 
     low: float = -math.inf
@@ -35,24 +38,41 @@ class Preparation:
     winsorize: bool = False
     transform: str = "none"
     transform_lambda: float = 1.0
+    baseline: Baseline | None = None
 
     @property
     def _admit_par(self) -> tuple[float, float, float]:
         return (float(self.low), float(self.high), float(self.winsorize))
 
-    def one(self, x: float, censor: int) -> float:
-        """The value for one result; not a number if it is dropped."""
+    def one(self, x: float, censor: int, ward: str = "", hour: int = 0) -> float:
+        """The value for one result; not a number if it is dropped. Ward and hour of the week matter with a baseline only."""
         admitted = admit(x, float(censor), self._admit_par)
         if math.isnan(admitted):
             return math.nan
-        return TRANSFORMS[self.transform].forward(admitted, (self.transform_lambda,))
+        y = TRANSFORMS[self.transform].forward(admitted, (self.transform_lambda,))
+        return y if self.baseline is None else y - self.baseline.one(ward, hour)
 
-    def all(self, xs: Floats, censor: Floats) -> Floats:
-        """The value for each result, shape (n,); not a number where it is dropped."""
+    def transformed(self, xs: Floats, censor: Floats) -> Floats:
+        """Admitted and transformed results before the baseline, shape (n,); not a number where dropped."""
         admitted = mapped_pairs(admit, xs, censor, self._admit_par)
         if self.transform == "none":
             return admitted
         return mapped(TRANSFORMS[self.transform].forward, admitted, (float(self.transform_lambda),))
+
+    def all(self, xs: Floats, censor: Floats, mix: Mix | None = None) -> Floats:
+        """The value for each result, shape (n,); not a number where it is dropped.
+
+        Raises
+        ------
+        ValueError
+            If there is a baseline and no mix to apply it to.
+        """
+        y = self.transformed(xs, censor)
+        if self.baseline is None:
+            return y
+        if mix is None:
+            raise ValueError("a baseline needs the patient mix of the results")
+        return y - self.baseline.all(mix)
 
     def scale(self, x: float) -> float:
         """From the result's unit to the statistic's scale, without truncation."""

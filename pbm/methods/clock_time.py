@@ -12,15 +12,34 @@ import numpy as np
 from pbm.methods.jit import Integers
 
 MICROSECONDS_PER_DAY = 86_400_000_000
+MICROSECONDS_PER_HOUR = 3_600_000_000
 MICROSECONDS_PER_MINUTE = 60_000_000
+HOURS_A_WEEK = 168
+HOURS_FROM_MONDAY = 72  # 1970-01-01 was a Thursday
+
+
+def local_microseconds(time: Integers, zone: ZoneInfo) -> Integers:
+    """What the wall clock showed at each instant, as microseconds since 1970-01-01 00:00 of the same clock, shape (n,)."""
+    import pandas as pd  # 0.4 s, and the live watch never asks for a whole history's clock
+
+    local = pd.to_datetime(time, unit="us", utc=True).tz_convert(zone).tz_localize(None)
+    return np.asarray(local.as_unit("us").asi8)
 
 
 def local_days(time: Integers, zone: ZoneInfo) -> Integers:
     """Local calendar day of each instant as days since 1970-01-01, shape (n,)."""
-    import pandas as pd  # 0.4 s, and the live watch never asks for days
+    return local_microseconds(time, zone) // MICROSECONDS_PER_DAY
 
-    local = pd.to_datetime(time, unit="us", utc=True).tz_convert(zone).tz_localize(None)
-    return np.asarray(local.as_unit("us").asi8) // MICROSECONDS_PER_DAY
+
+def hours_of_week(time: Integers, zone: ZoneInfo) -> Integers:
+    """Local hour of the week of each instant, 0 = Monday 00:00 to 01:00, shape (n,)."""
+    return (local_microseconds(time, zone) // MICROSECONDS_PER_HOUR + HOURS_FROM_MONDAY) % HOURS_A_WEEK
+
+
+def hour_of_week(time: int, zone: ZoneInfo) -> int:
+    """The same for one instant, with the standard library alone."""
+    local = datetime.fromtimestamp(time / 1e6, zone)
+    return local.weekday() * 24 + local.hour
 
 
 def control_events(first: int, last: int, times: tuple[str, ...], zone: ZoneInfo) -> Integers:

@@ -39,5 +39,5 @@ def _moved(stretch: Stretch, preparation: Preparation, sign: int) -> float:
         float(typical[0])
     )
     values, censor = inflict(stretch.value, fault, stretch.error, stretch.reporting, stretch.chance)
-    shifted, base = preparation.all(values, censor), preparation.all(stretch.value, stretch.censor)
+    shifted, base = preparation.all(values, censor, stretch.mix), stretch.prepared(preparation)
     return float(np.nanmean(shifted) - np.nanmean(base)) / true

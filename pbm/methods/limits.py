@@ -65,27 +65,47 @@ class Tail:
         return self.threshold + self.excess * math.log(max(self.count / expected, 1.0))
 
 
-def side_episodes(path: Floats, centre: float, side: int, distance: float) -> Episodes:
-    """Episodes on one side (+1, -1) beyond a distance from the centre; furthest values are given as distances."""
-    upward = side * (path - centre)
-    return episodes(upward, Limits(-math.inf, distance, 0.0, REARM))
-
-
 def tail_of(path: Floats, centre: float, side: int, expected: float) -> Tail | None:
     """The tail of a path (n,) on one side, or None if the path never leaves the centre often enough to tell."""
-    upward = side * (path - centre)
-    judged = upward[~np.isnan(upward)]
+    outward = side * (path - centre)
+    judged = outward[~np.isnan(outward)]
     if len(judged) < TAIL_EPISODES or (top := float(judged.max())) <= 0:
         return None
     wanted = max(TAIL_EPISODES, math.ceil(2 * expected))
     inner, outer = max(float(np.quantile(judged, 0.75)), 0.01 * top), top
     for _ in range(TAIL_SEARCH):
         middle = (inner + outer) / 2
-        enough = len(episodes(upward, Limits(-math.inf, middle, 0.0, REARM))) >= wanted
+        enough = len(_beyond(outward, middle)) >= wanted
         inner, outer = (middle, outer) if enough else (inner, middle)
-    found = episodes(upward, Limits(-math.inf, inner, 0.0, REARM))
-    excess = float((found.peak - inner).mean()) if len(found) else 0.0
-    return Tail(inner, len(found), excess) if excess > 0 else None
+    return _tail_beyond(outward, _between_values(judged, inner))
+
+
+def _beyond(outward: Floats, distance: float) -> Episodes:
+    """Episodes beyond a distance of a path given as distances from the centre."""
+    return episodes(outward, Limits(-math.inf, distance, 0.0, REARM))
+
+
+def _tail_beyond(outward: Floats, threshold: float) -> Tail | None:
+    found = _beyond(outward, threshold)
+    excess = float((found.peak - threshold).mean()) if len(found) else 0.0
+    return Tail(threshold, len(found), excess) if excess > 0 else None
+
+
+def _between_values(judged: Floats, distance: float) -> float:
+    """The nearest distance not inside the given one that lies half-way between two neighbouring values of the path.
+
+    Results in whole steps put the statistic on a lattice; a limit on a lattice point would be decided by rounding, and a tail
+    threshold just below one would hide the step.
+    """
+    inside, outside = judged[judged <= distance], judged[judged > distance]
+    if not len(inside) or not len(outside):
+        return distance
+    first = float(outside.min())
+    middle = (float(inside.max()) + first) / 2
+    if middle >= distance:
+        return middle
+    further = outside[outside > first]
+    return (first + float(further.min())) / 2 if len(further) else first + (first - middle)
 
 
 def quick_limits(path: Floats, centre: float, expected: float) -> Limits | None:
@@ -105,10 +125,13 @@ def quick_limits(path: Floats, centre: float, expected: float) -> Limits | None:
     Limits or None
         None if a side has no tail to learn from.
     """
-    below, above = (tail_of(path, centre, side, expected / 2) for side in (-1, 1))
-    if below is None or above is None:
-        return None
-    return Limits(centre - below.limit(expected / 2), centre + above.limit(expected / 2), centre, REARM)
+    ends = []
+    for side in (-1, 1):
+        if (tail := tail_of(path, centre, side, expected / 2)) is None:
+            return None
+        outward = side * (path - centre)
+        ends.append(centre + side * _between_values(outward[~np.isnan(outward)], tail.limit(expected / 2)))
+    return Limits(ends[0], ends[1], centre, REARM)
 
 
 @dataclass(frozen=True, slots=True)
@@ -137,19 +160,6 @@ def _predictive(tails: list[Tail], expected: float) -> float:
     return outer
 
 
-def _tail_beyond(path: Floats, centre: float, side: int, threshold: float) -> Tail | None:
-    found = side_episodes(path, centre, side, threshold)
-    excess = float((found.peak - threshold).mean()) if len(found) else 0.0
-    return Tail(threshold, len(found), excess) if excess > 0 else None
-
-
-def _between_values(path: Floats, limit: float) -> float:
-    """The limit moved half-way between the two neighbouring values of the path, so that rounding of results decides nothing."""
-    below = path[path <= limit]
-    above = path[path > limit]
-    return (float(below.max()) + float(above.min())) / 2 if len(below) and len(above) else limit
-
-
 def calibrated_limits(
     tracker: Tracker, z: Floats, day_starts: Integers, expected: float, random: np.random.Generator, draws: int = 200
 ) -> CalibratedLimits | None:
@@ -175,22 +185,26 @@ def calibrated_limits(
     CalibratedLimits or None
         None if a side has no tail to learn from.
     """
-    path = tracker.path(z)
-    centre = tracker.centre
-    fitted = {side: tail_of(path, centre, side, expected / 2) for side in (-1, 1)}
-    if None in fitted.values():
+    path, centre = tracker.path(z), tracker.centre
+    tails = {side: tail for side in (-1, 1) if (tail := tail_of(path, centre, side, expected / 2)) is not None}
+    if len(tails) < 2:
         return None
     drawn: dict[int, list[Tail]] = {-1: [], 1: []}
     for _ in range(draws):
         pseudo = tracker.path(_resampled_days(z, day_starts, random))
-        for side, tail in fitted.items():
-            assert tail is not None
-            if (again := _tail_beyond(pseudo, centre, side, tail.threshold)) is not None:
+        for side, tail in tails.items():
+            if (again := _tail_beyond(side * (pseudo - centre), tail.threshold)) is not None:
                 drawn[side].append(again)
-    ends: dict[int, float] = {}
-    intervals: dict[int, tuple[float, float]] = {}
-    for side, tails in drawn.items():
-        ends[side] = _between_values(path, centre + side * _predictive(tails, expected / 2))
-        quantiles = np.quantile([centre + side * t.face_value_limit(expected / 2) for t in tails], [0.05, 0.95])
-        intervals[side] = (float(quantiles[0]), float(quantiles[1]))
+    ends = {side: _side_limit(path, centre, side, drawn[side], expected / 2) for side in (-1, 1)}
+    intervals = {side: _side_interval(centre, side, drawn[side], expected / 2) for side in (-1, 1)}
     return CalibratedLimits(Limits(ends[-1], ends[1], centre, REARM), intervals[-1], intervals[1])
+
+
+def _side_limit(path: Floats, centre: float, side: int, tails: list[Tail], expected: float) -> float:
+    outward = side * (path - centre)
+    return centre + side * _between_values(outward[~np.isnan(outward)], _predictive(tails, expected))
+
+
+def _side_interval(centre: float, side: int, tails: list[Tail], expected: float) -> tuple[float, float]:
+    low, high = np.quantile([centre + side * tail.face_value_limit(expected) for tail in tails], [0.05, 0.95])
+    return float(low), float(high)

@@ -34,7 +34,7 @@ def limited(stretch: Stretch, given: Sequence[Candidate], expected: float) -> li
     """The candidates that can be limited for an expected number of episodes in the stretch."""
     runners = []
     for preparation, group in _by_preparation(given).items():
-        z = preparation.all(stretch.value, stretch.censor)
+        z = stretch.prepared(preparation)
         for candidate in group if np.isfinite(z).sum() > 1 else []:
             tracker = tracker_for(z, candidate.statistic, candidate.parameter)
             if (limits := quick_limits(tracker.path(z), tracker.centre, expected)) is not None:
@@ -70,10 +70,10 @@ def scores(stretch: Stretch, runners: Sequence[Runner], trials: Sequence[tuple[T
     total = sum(weight for _, weight in trials)
     out = np.zeros((len(runners), len(trials[0][0].onsets.at)))
     for preparation, group in _grouped(runners).items():
-        z = preparation.all(stretch.value, stretch.censor)
+        z = stretch.prepared(preparation)
         states = {i: runners[i].tracker.states_at(z, trials[0][0].onsets.at) for i in group}
         for trial, weight in trials:
-            faulted = preparation.all(trial.values, trial.censor)
+            faulted = trial.prepared(preparation)
             for i in group:
                 runner = runners[i]
                 found = trial.results_to_alarm(faulted, runner.tracker, runner.limits, states[i])
@@ -99,5 +99,5 @@ def simplest_near_best(runners: Sequence[Runner], score: Floats) -> int:
     best = int(np.argmin(score.mean(axis=1)))
     difference = score - score[best]
     error = difference.std(axis=1, ddof=1) / np.sqrt(score.shape[1]) if score.shape[1] > 1 else np.zeros(len(score))
-    near = np.flatnonzero(difference.mean(axis=1) <= error)
+    near: list[int] = np.flatnonzero(difference.mean(axis=1) <= error).tolist()
     return int(min(near, key=lambda i: (runners[i].candidate.complexity, score[i].mean())))

@@ -10,7 +10,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from pbm.methods.alarm import Limits
-from pbm.methods.chain import Tracker
+from pbm.methods.baseline import Mix
+from pbm.methods.chain import Preparation, Tracker
 from pbm.methods.expected import Exposure, Onsets, exposure
 from pbm.methods.faults import Chance, Fault, Reporting, inflict
 from pbm.methods.jit import Floats, Integers
@@ -27,6 +28,8 @@ class Stretch:
         UTC microseconds.
     value, censor : (n,)
         As reported.
+    mix
+        Wards and hours of the week.
     error, reporting
         The analyte's error model and how it is reported.
     chance
@@ -36,12 +39,17 @@ class Stretch:
     time: Integers
     value: Floats
     censor: Floats
+    mix: Mix
     error: ErrorModel
     reporting: Reporting
     chance: Chance
 
     def __len__(self) -> int:
         return len(self.time)
+
+    def prepared(self, preparation: Preparation) -> Floats:
+        """The results as prepared for a statistic, shape (n,)."""
+        return preparation.all(self.value, self.censor, self.mix)
 
 
 def draw_onsets(first: int, last: int, count: int, random: np.random.Generator) -> Integers:
@@ -59,8 +67,8 @@ class Trial:
     ----------
     fault, onsets
         What was tried, and where.
-    values, censor : (m,)
-        Results as reported under the fault.
+    values, censor, mix : (m,)
+        Results as reported under the fault, and who they came from.
     starts, ends : (r,)
         Which of them each onset reads.
     exposure
@@ -71,9 +79,14 @@ class Trial:
     onsets: Onsets
     values: Floats
     censor: Floats
+    mix: Mix
     starts: Integers
     ends: Integers
     exposure: Exposure
+
+    def prepared(self, preparation: Preparation) -> Floats:
+        """The faulted results as prepared for a statistic, shape (m,)."""
+        return preparation.all(self.values, self.censor, self.mix)
 
     def results_to_alarm(self, z: Floats, tracker: Tracker, limits: Limits, states: Floats) -> Integers:
         """Offered results from the onset to the alarm, both included; 0 where there is none within the horizon.
@@ -98,7 +111,7 @@ def trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats) -> Tri
     error = stretch.error
     values, censor = inflict(stretch.value, fault, error, stretch.reporting, stretch.chance)
     p = _chance_unreliable(stretch.value, fault, error, fault.bias(stretch.value, error))
-    return Trial(fault, onsets, values, censor, onsets.at, onsets.end, exposure(onsets, p, passed))
+    return Trial(fault, onsets, values, censor, stretch.mix, onsets.at, onsets.end, exposure(onsets, p, passed))
 
 
 def _chance_unreliable(x: Floats, fault: Fault, error: ErrorModel, bias: Floats) -> Floats:
@@ -118,7 +131,7 @@ def _drift_trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats)
     p = np.zeros((len(onsets.at), int(onsets.length.max())))
     inside = np.arange(p.shape[1])[None, :] < onsets.length[:, None]
     p[inside] = _chance_unreliable(x, fault, stretch.error, growth * fault.bias(x, stretch.error))
-    return Trial(fault, onsets, values, censor, starts, ends, exposure(onsets, p, passed))
+    return Trial(fault, onsets, values, censor, stretch.mix.rows(rows), starts, ends, exposure(onsets, p, passed))
 
 
 def alarm_and_stop(

@@ -76,6 +76,13 @@ class HeldOut(Written):
     kept: bool
 
 
+class BaselinePlan(Written):
+    """Patient mix: effect of each ward, and of each of the 168 hours of the week from Monday 00:00, on the transformed scale."""
+
+    wards: dict[str, Finite]
+    hours: Annotated[tuple[Finite, ...], Field(min_length=168, max_length=168)]
+
+
 class Outside(Written):
     """A value below `low` or above `high` is counted by a moving share; on the statistic's (transformed) scale, one side may be open."""
 
@@ -116,6 +123,7 @@ class MonitorPlan(Written):
     admit: Admit = Admit()
     transform: Literal["none", "log", "boxcox"] = "none"
     transform_lambda: Finite | None = None
+    baseline: BaselinePlan | None = None
     statistic: StatisticName
     window: Annotated[int, Field(ge=2, le=5000)] | None = None
     weight: Annotated[float, Field(gt=0, le=1)] | None = None

@@ -181,13 +181,11 @@ class _Running:
     @classmethod
     def of(cls, monitor: MonitorPlan, stretch: Stretch, onsets: Onsets) -> "_Running":
         prepared, tracked = preparation(monitor), tracker(monitor)
-        z = prepared.all(stretch.value, stretch.censor)
+        z = stretch.prepared(prepared)
         return cls(prepared, tracked, limits(monitor), z, tracked.path(z), tracked.states_at(z, onsets.at))
 
     def results_to_alarm(self, tried: Trial) -> Integers:
-        return tried.results_to_alarm(
-            self.preparation.all(tried.values, tried.censor), self.tracker, self.limits, self.states
-        )
+        return tried.results_to_alarm(tried.prepared(self.preparation), self.tracker, self.limits, self.states)
 
 
 @dataclass(frozen=True, slots=True)

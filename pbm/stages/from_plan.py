@@ -3,6 +3,7 @@
 import math
 
 from pbm.methods.alarm import Limits
+from pbm.methods.baseline import Baseline
 from pbm.methods.chain import Preparation, Tracker
 from pbm.methods.faults import Fault, Reporting
 from pbm.methods.onset import InControl
@@ -41,7 +42,7 @@ def _each_size(given: FaultList) -> list[Fault]:
 
 
 def preparation(monitor: MonitorPlan) -> Preparation:
-    """Truncation and transform of a monitor."""
+    """Truncation, transform and patient-mix baseline of a monitor."""
     low, high = monitor.admit.low, monitor.admit.high
     return Preparation(
         -math.inf if low is None else low,
@@ -49,6 +50,7 @@ def preparation(monitor: MonitorPlan) -> Preparation:
         monitor.admit.mode == "winsorize",
         monitor.transform,
         1.0 if monitor.transform_lambda is None else monitor.transform_lambda,
+        None if monitor.baseline is None else Baseline(tuple(monitor.baseline.wards.items()), monitor.baseline.hours),
     )
 
 

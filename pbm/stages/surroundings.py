@@ -7,7 +7,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from pbm.methods.clock_time import MICROSECONDS_PER_DAY, MICROSECONDS_PER_MINUTE, control_events
+from pbm.methods.baseline import Mix
+from pbm.methods.clock_time import MICROSECONDS_PER_DAY, MICROSECONDS_PER_MINUTE, control_events, hours_of_week
 from pbm.methods.controls import Rules, Survival, survival
 from pbm.methods.expected import Onsets, follow
 from pbm.methods.faults import Chance, Fault
@@ -57,6 +58,7 @@ class Surroundings:
             history.time,
             history.value,
             history.censor.astype(float),
+            Mix.of(history.ward, hours_of_week(history.time, self.lab.laboratory.zone)),
             error_model(self.analyte),
             reporting(self.analyte),
             Chance.draw(len(history), self.random("chance")),

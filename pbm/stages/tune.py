@@ -4,13 +4,14 @@ The first two thirds of the days train, the last third is held out. Candidates a
 schedule present (methods/search.py); the winner's limits come from the day-block bootstrap (methods/limits.py).
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import date, timedelta
 from functools import partial
 
 import numpy as np
 
 from pbm.methods.alarm import Limits, episodes
+from pbm.methods.baseline import Baseline, fit_baseline
 from pbm.methods.candidates import Candidate, candidates, preparations
 from pbm.methods.chain import Preparation, Tracker
 from pbm.methods.clock_time import local_days
@@ -26,6 +27,7 @@ from pbm.methods.trials import Stretch, Trial, alarm_and_stop, trial
 from pbm.records.laboratory import Lab
 from pbm.records.plan import (
     Admit,
+    BaselinePlan,
     ControlLimits,
     HeldOut,
     LimitsInterval,
@@ -36,14 +38,14 @@ from pbm.records.plan import (
 )
 from pbm.records.stream import StreamHistory
 from pbm.stages.from_plan import faults_of
-from pbm.stages.surroundings import HORIZON_DAYS, Surroundings
+from pbm.stages.surroundings import Surroundings
 
 FEWEST_DAYS = 20
 FEWEST_RESULTS = 1_000
-ROUNDS = ((40, 24), (250, 1))
+FIRST_ONSETS, ONSETS, FINALISTS = 40, 250, 12
+WINDOWS = 50  # a window is no longer than this part of the training results
 NEEDED_AT_MOST = 5_000
 WORTHWHILE = 0.1
-SOME_GAIN = 0.02
 
 
 def tune_stream(history: StreamHistory, lab: Lab, seed: int) -> StreamPlan:
@@ -105,15 +107,14 @@ def judge_usefulness(needed: float, per_day: float, gain: float) -> Judgement:
 
     Notes
     -----
-    Useful: found within an average day's run (common practice) and a gain of at least a tenth. Not useful: not found
-    within the horizon of seven days, or hardly a gain.
+    Useful: found within an average day's run (common practice) and a gain of at least a tenth. Marginal: one of the two.
     """
     sees = f"needs about {needed:.0f} results to see" if np.isfinite(needed) else "does not see"
     gained = f"{max(gain, 0):.0%} fewer unreliable results expected than with the controls alone"
     reason = f"{sees} a shift of 1 TEa; the line makes {per_day:.0f} a day; {gained}"
-    if needed > HORIZON_DAYS * per_day or gain < SOME_GAIN:
-        return Judgement("not useful here", reason)
-    return Judgement("useful" if needed <= per_day and gain >= WORTHWHILE else "marginal", reason)
+    same_day, gains = needed <= per_day, gain >= WORTHWHILE
+    word: Verdict = "useful" if same_day and gains else "marginal" if same_day or gains else "not useful here"
+    return Judgement(word, reason)
 
 
 @dataclass(frozen=True)
@@ -171,18 +172,20 @@ class _Tuning:
         )
 
     def _search(self, training: Stretch) -> Runner | None:
+        """Successive halving; the finalists are tried with and without a patient-mix baseline."""
         choices = preparations(training.value, self.around.analyte.step, self.around.random("transform"))
-        given: list[Candidate] = list(candidates(choices, longest=len(training) // 50))
+        given = list(candidates(choices, longest=len(training) // WINDOWS))
         runners = limited(training, given, self.expected)
-        for onsets, keep in ROUNDS:
-            if not runners:
-                return None
-            score = scores(training, runners, self.trials(training, onsets), self.stopper(training))
-            runners = best_of(runners, score, keep) if keep > 1 else [runners[simplest_near_best(runners, score)]]
-        return runners[0]
+        if not runners:
+            return None
+        score = scores(training, runners, self.trials(training, FIRST_ONSETS), self.stopper(training))
+        finalists = best_of(runners, score, FINALISTS)
+        finalists += limited(training, [_with_baseline(r.candidate, training) for r in finalists], self.expected)
+        score = scores(training, finalists, self.trials(training, ONSETS), self.stopper(training))
+        return finalists[simplest_near_best(finalists, score)]
 
     def _judge(self, training: Stretch, runner: Runner) -> Judgement:
-        trials = self.trials(training, ROUNDS[-1][0])
+        trials = self.trials(training, ONSETS)
         score = float(scores(training, [runner], trials, self.stopper(training)).mean())
         total = sum(weight for _, weight in trials)
         alone = sum(weight / total * float(t.exposure.unreliable(t.onsets.length).mean()) for t, weight in trials)
@@ -193,18 +196,18 @@ class _Tuning:
         """Median of the results until a shift of 1 TEa is found, to either side, followed for up to `NEEDED_AT_MOST` results."""
         at = onsets.at[onsets.at < max(len(training) - NEEDED_AT_MOST, len(training) // 2)]
         far = follow(at, np.minimum(at + NEEDED_AT_MOST, len(training)), np.zeros(0, dtype=np.int64), 1)
-        z = runner.candidate.preparation.all(training.value, training.censor)
+        z = training.prepared(runner.candidate.preparation)
         states = runner.tracker.states_at(z, at)
         found = []
         for sign in (-1, 1):
             shifted = trial(training, Fault("shift", 1.0, "TEa", sign), far, np.ones(2))
-            faulted = runner.candidate.preparation.all(shifted.values, shifted.censor)
+            faulted = shifted.prepared(runner.candidate.preparation)
             count = shifted.results_to_alarm(faulted, runner.tracker, runner.limits, states)
             found.append(np.where(count > 0, count, np.inf))
         return float(np.median(np.concatenate(found)))
 
     def _limits(self, training: Stretch, runner: Runner) -> CalibratedLimits | None:
-        z = runner.candidate.preparation.all(training.value, training.censor)
+        z = training.prepared(runner.candidate.preparation)
         starts = np.flatnonzero(np.diff(self.split.days[: self.split.at], prepend=-1))
         return calibrated_limits(
             runner.tracker,
@@ -216,7 +219,7 @@ class _Tuning:
 
     def _monitor(self, training: Stretch, runner: Runner, limits: CalibratedLimits) -> MonitorPlan:
         preparation, tracker = runner.candidate.preparation, runner.tracker
-        z = preparation.all(training.value, training.censor)
+        z = training.prepared(preparation)
         parameter = tracker.law.parameter
         budget = self.around.lab.budget_of(self.around.name.analyte).per_day
         low, high = limits.limits.low, limits.limits.high
@@ -228,6 +231,7 @@ class _Tuning:
             ),
             transform=preparation.transform,
             transform_lambda=preparation.transform_lambda if preparation.transform == "boxcox" else None,
+            baseline=_in_plan(preparation.baseline),
             statistic=tracker.statistic,
             window=int(tracker.parameter) if parameter == "window" else None,
             weight=tracker.parameter if parameter == "weight" else None,
@@ -243,10 +247,19 @@ class _Tuning:
         )
 
     def _held_out(self, preparation: Preparation, tracker: Tracker, limits: Limits, budget: float) -> HeldOut:
-        z = preparation.all(self.history.value, self.history.censor.astype(float))
+        z = self.around.stretch(self.history).prepared(preparation)
         count = int((episodes(tracker.path(z), limits).at >= self.split.at).sum())
         interval = poisson_interval(count)
         allowed = budget * self.split.held_out_days
         return HeldOut(
             days=self.split.held_out_days, episodes=count, interval=interval, kept=bool(interval[0] <= allowed)
         )
+
+
+def _with_baseline(candidate: Candidate, training: Stretch) -> Candidate:
+    y = candidate.preparation.transformed(training.value, training.censor)
+    return replace(candidate, preparation=replace(candidate.preparation, baseline=fit_baseline(y, training.mix)))
+
+
+def _in_plan(baseline: Baseline | None) -> BaselinePlan | None:
+    return None if baseline is None else BaselinePlan(wards=dict(baseline.wards), hours=baseline.hours)

@@ -11,7 +11,8 @@ def monitor_in_words(monitor: MonitorPlan, unit: str) -> str:
     """A monitor in one sentence part, such as "EWMA, weight 0.05, of results from 125 to 155 mmol/L"."""
     title = TITLES.get(monitor.statistic, monitor.statistic)
     parameter = f"weight {monitor.weight:g}" if monitor.weight is not None else f"of {monitor.window} results"
-    return f"{title}, {parameter}, {admitted_in_words(monitor.admit, unit)}{SCALES[monitor.transform]}"
+    mix = ", adjusted for patient mix" if monitor.baseline is not None else ""
+    return f"{title}, {parameter}, {admitted_in_words(monitor.admit, unit)}{SCALES[monitor.transform]}{mix}"
 
 
 def admitted_in_words(admit: Admit, unit: str) -> str:
