@@ -1,5 +1,6 @@
 """Slow, obvious twins of what pbm computes, written from the definitions and sharing no code with it."""
 
+import itertools
 import math
 import statistics
 from collections.abc import Callable, Sequence
@@ -98,7 +99,7 @@ def cusum(z: Sequence[float], reference: float, level: float, spread: float) -> 
     u = [(x - level) / spread for x in z]
 
     def largest(side: int, newest: int) -> float:
-        tails = (math.fsum(side * x - reference for x in u[first : newest + 1]) for first in range(newest + 2))
+        tails = itertools.accumulate(side * x - reference for x in reversed(u[: newest + 1]))
         return max(0.0, *tails)
 
     sums = [(largest(1, i), largest(-1, i)) for i in range(len(u))]
