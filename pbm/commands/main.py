@@ -6,7 +6,7 @@ import sys
 import typer
 
 from pbm import __version__
-from pbm.commands import appraise, intake, tune
+from pbm.commands import appraise, intake, tune, watch
 from pbm.errors import PbmError
 
 app = typer.Typer(
@@ -22,6 +22,7 @@ app = typer.Typer(
 app.command("intake")(intake.intake)
 app.command("tune")(tune.tune)
 app.command("appraise")(appraise.appraise)
+app.command("watch")(watch.watch)
 
 
 def _version(wanted: bool) -> None:

@@ -47,6 +47,12 @@ class Alarm:
         "HIGH" or "LOW".
     statistic, value, limit
         Name of the statistic, its value and the limit it crossed (on its own scale).
+    shown, shown_limit
+        The same for people: in the result's unit where the statistic is a level of results.
+    estimate
+        Onset and size; None where the statistic does not tell to which side results have moved.
+    last_control
+        UTC microseconds of the last control event scheduled before the alarm; None where the schedule goes by counts or is not given.
     plan_sha256
         Which plan was in force.
     """
@@ -59,5 +65,8 @@ class Alarm:
     statistic: str
     value: float
     limit: float
-    estimate: OnsetEstimate
+    shown: float
+    shown_limit: float
+    estimate: OnsetEstimate | None
+    last_control: int | None = None
     plan_sha256: str = ""

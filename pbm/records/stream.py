@@ -8,6 +8,10 @@ import numpy.typing as npt
 
 from pbm.errors import InputError
 
+POOLED = "pooled"  # the analyser of a laboratory whose extract does not tell analysers apart
+LONGEST_ANALYSER = 60
+RERUN_HOURS = 24  # a further result of a specimen within so many hours of one that counts is a rerun
+
 
 @dataclass(frozen=True, slots=True, order=True)
 class StreamName:

@@ -1,0 +1,45 @@
+"""`pbm watch --from SOURCE`: the live feed through the monitors into the store, and alarm lines as they come."""
+
+from typing import Annotated
+
+import typer
+
+from pbm.commands.folder import JsonOption, LabFolder, LabOption
+
+FromOption = Annotated[
+    str,
+    typer.Option(
+        "--from",
+        metavar="SOURCE",
+        help="A CSV file that grows, - for NDJSON on standard input, or history to replay history/.",
+        show_default=False,
+    ),
+]
+OnceOption = Annotated[
+    bool, typer.Option("--once", help="Read the file to its end and stop, instead of following it as it grows.")
+]
+SpeedOption = Annotated[
+    float | None,
+    typer.Option(
+        "--speed", min=0.001, help="Replay so many times faster than it happened.", show_default="as fast as it goes"
+    ),
+]
+
+
+def watch(
+    from_: FromOption,
+    lab: LabOption = None,
+    json: JsonOption = False,
+    once: OnceOption = False,
+    speed: SpeedOption = None,
+) -> None:
+    """Watch the live feed with the monitors of plan.toml, and print a line for each alarm.
+
+    Results, states and alarms are kept in watch.sqlite. Stopped anywhere (Ctrl-C, a power cut) and started again, it goes on as if it had
+    never stopped. Alarms go to standard output, everything else to standard error.
+
+    Example:  pbm watch --from live.csv
+    """
+    from pbm.commands.watch_work import watch_feed
+
+    watch_feed(LabFolder.find(lab), from_, json=json, once=once, speed=speed)

@@ -1,0 +1,64 @@
+"""NDJSON: one result a line in, one alarm a line out.
+
+{"time":"2031-03-02T07:14:05Z","analyte":"sodium","analyser":"line-2","value":"138","unit":"mmol/L","specimen":"24-118233","ward":"ED"}
+"""
+
+import json
+import math
+from dataclasses import asdict
+from datetime import UTC, datetime
+from typing import Any
+
+from pbm.records.alarm import Alarm
+from pbm.records.reading import Reading, SetAside
+
+LONGEST_LINE = 2**16
+_FIELDS = ("time", "analyte", "analyser", "value", "unit", "specimen", "ward", "kind")
+_TIMES = ("time", "onset", "onset_low", "onset_high", "last_control")
+_WITHOUT_BOUND = (math.inf, -math.inf)
+
+
+def read_line(place: int, line: bytes) -> Reading | SetAside:
+    """A line of a feed.
+
+    Parameters
+    ----------
+    place
+        Its number.
+    line
+        Its bytes, with or without the line end.
+
+    Returns
+    -------
+    Reading or SetAside
+        Other keys than those of a result are ignored; `value` may be a number.
+    """
+    if not line.strip():
+        return SetAside(place, "blank line")
+    if len(line) > LONGEST_LINE:
+        return SetAside(place, "line too long")
+    try:
+        # Numbers stay as they are written: 138.0 is not 138, and what is too long for a number is told as such later on.
+        given = json.loads(line.decode("utf-8-sig"), parse_float=str, parse_int=str, parse_constant=str)
+    except UnicodeDecodeError:
+        return SetAside(place, "not UTF-8")
+    except (ValueError, RecursionError):
+        return SetAside(place, "not JSON")
+    if not isinstance(given, dict):
+        return SetAside(place, "not a JSON object")
+    texts = ["" if (text := given.get(name)) is None else text for name in _FIELDS]
+    wrong = next((name for name, text in zip(_FIELDS, texts, strict=True) if not isinstance(text, str)), None)
+    return SetAside(place, "neither text nor a number", wrong) if wrong else Reading(place, *texts)
+
+
+def alarm_text(alarm: Alarm) -> str:
+    """An alarm as one JSON object without line end: times in UTC, a number without bound as null."""
+    given: dict[str, Any] = asdict(alarm)
+    given |= {"analyte": alarm.stream.analyte, "analyser": alarm.stream.analyser, "stream": str(alarm.stream)}
+    given |= given.pop("estimate") or {}
+    for name in _TIMES:
+        if given.get(name) is not None:
+            given[name] = datetime.fromtimestamp(given[name] / 1e6, UTC).isoformat().replace("+00:00", "Z")
+    return json.dumps(
+        {name: None if value in _WITHOUT_BOUND else value for name, value in given.items()}, ensure_ascii=False
+    )

@@ -1,0 +1,57 @@
+"""The store as its readers see it: opened read-only, no transaction held between two questions (a held one makes the log grow)."""
+
+from pathlib import Path
+from urllib.parse import quote
+
+from sqlalchemy import create_engine
+from sqlalchemy.pool import NullPool
+
+from pbm.errors import InputError
+from pbm.io import store_rows
+from pbm.io.store_errors import told
+from pbm.records.alarm import Alarm
+from pbm.records.result import Result
+from pbm.records.snapshot import Snapshot
+from pbm.records.stream import StreamName
+
+
+class StoreReader:
+    """Reads a store while `pbm watch` writes it, or after.
+
+    Raises
+    ------
+    InputError
+        If there is no store.
+    FeedError
+        From here and every method: the database cannot be read.
+    """
+
+    def __init__(self, path: Path) -> None:
+        if not path.is_file():
+            raise InputError(f"There is no store {path}. `pbm watch` makes it.")
+        self.path = path
+        self._engine = create_engine(
+            f"sqlite:///file:{quote(str(path.absolute()))}?mode=ro&uri=true", poolclass=NullPool
+        )
+        with told(path), self._engine.connect() as connection:
+            store_rows.check_version(connection, path)
+
+    def alarms(self, count: int = 100) -> list[Alarm]:
+        """The last alarms, the newest last."""
+        with told(self.path), self._engine.connect() as connection:
+            return store_rows.last_alarms(connection, count)
+
+    def open_alarms(self) -> list[Alarm]:
+        """The alarm of every monitor whose episode is still open, the newest last."""
+        with told(self.path), self._engine.connect() as connection:
+            return store_rows.open_alarms(connection)
+
+    def snapshots(self) -> list[Snapshot]:
+        """Every monitor as it was last kept."""
+        with told(self.path), self._engine.connect() as connection:
+            return store_rows.snapshots(connection)
+
+    def recent_results(self, name: StreamName, count: int) -> list[Result]:
+        """The last results of a stream that counted, in order of arrival."""
+        with told(self.path), self._engine.connect() as connection:
+            return store_rows.recent_results(connection, name, count)

@@ -1,0 +1,168 @@
+"""Tables of the store that `pbm watch` writes. Times are UTC microseconds since 1970; the reference page is made from these comments."""
+
+from sqlalchemy import (
+    BigInteger,
+    Column,
+    Float,
+    ForeignKey,
+    Index,
+    Integer,
+    LargeBinary,
+    MetaData,
+    SmallInteger,
+    String,
+    Table,
+    UniqueConstraint,
+)
+
+SCHEMA_VERSION = 1
+# SQLite makes a row number of INTEGER only; elsewhere 32 bits would not last.
+_Number = BigInteger().with_variant(Integer, "sqlite")
+
+metadata = MetaData()
+
+schema = Table(
+    "schema",
+    metadata,
+    Column(
+        "version", Integer, primary_key=True, comment="layout of these tables; another version of pbm may need another"
+    ),
+    comment="One row.",
+)
+
+streams = Table(
+    "streams",
+    metadata,
+    Column("id", _Number, primary_key=True, autoincrement=False),
+    Column("analyte", String, nullable=False),
+    Column("analyser", String, nullable=False),
+    UniqueConstraint("analyte", "analyser"),
+    comment="Every stream met, watched or not.",
+)
+
+results = Table(
+    "results",
+    metadata,
+    Column("seq", _Number, primary_key=True, autoincrement=False, comment="order of arrival, from 1"),
+    Column("stream", ForeignKey("streams.id"), nullable=False),
+    Column("specimen", String, nullable=False, comment='"" where not given'),
+    Column("time", BigInteger, nullable=False),
+    Column("value", Float, nullable=False, comment="in the unit of the stream; of a censored result the limit printed"),
+    Column("censor", SmallInteger, nullable=False, comment='-1 for "<", +1 for ">", else 0'),
+    Column("ward", String, nullable=False, comment='"" where not given'),
+    Column("left_out", String, nullable=False, comment='why no monitor may take it (a rerun, too late), else ""'),
+    Column("feed", ForeignKey("feeds.id"), nullable=False),
+    Column("edition", Integer, nullable=False, comment="of the feed: a feed begun anew has the next number"),
+    Index("results_of_a_stream", "stream", "seq"),
+    Index("results_in_time", "stream", "left_out", "time"),
+    comment="Every patient result, once.",
+)
+
+# Results without a specimen may be alike and yet two patients'.
+_named = results.c.specimen != ""
+Index(
+    "one_result_once",
+    *(results.c[name] for name in ("stream", "specimen", "time", "value", "censor")),
+    unique=True,
+    sqlite_where=_named,
+    postgresql_where=_named,
+)
+
+monitors = Table(
+    "monitors",
+    metadata,
+    Column("stream", ForeignKey("streams.id"), primary_key=True),
+    Column(
+        "monitor",
+        Integer,
+        primary_key=True,
+        autoincrement=False,
+        comment="place of the monitor in the stream's plan, from 0",
+    ),
+    Column("settings", String, nullable=False, comment="SHA-256 of the settings under which the state goes on"),
+    Column("state", LargeBinary, nullable=False),
+    Column("taken", BigInteger, nullable=False, comment="results offered"),
+    Column("admitted", BigInteger, nullable=False, comment="results inside the truncation limits"),
+    Column("needed", Integer, nullable=False, comment="admitted results before the statistic is judged"),
+    Column("value", Float, comment="the statistic, on its own scale; empty while not judged"),
+    Column("episode", SmallInteger, nullable=False, comment="+1 open alarm above, -1 below, 0 armed"),
+    comment="The state of every monitor after the last result.",
+)
+
+alarms = Table(
+    "alarms",
+    metadata,
+    Column("id", _Number, primary_key=True, autoincrement=False, comment="order of opening, from 1"),
+    Column("stream", ForeignKey("streams.id"), nullable=False),
+    Column("monitor", Integer, nullable=False),
+    Column("seq", ForeignKey("results.seq"), nullable=False, comment="the result that opened the episode"),
+    Column("time", BigInteger, nullable=False),
+    Column("specimen", String, nullable=False),
+    Column("side", String, nullable=False, comment="HIGH or LOW"),
+    Column("statistic", String, nullable=False),
+    Column("value", Float, nullable=False, comment="the statistic, on its own scale"),
+    Column("control_limit", Float, nullable=False, comment="the limit it crossed, on its own scale"),
+    Column(
+        "shown",
+        Float,
+        nullable=False,
+        comment="the same in the unit of the stream, where the statistic is a level of results",
+    ),
+    Column("shown_limit", Float, nullable=False),
+    Column(
+        "onset",
+        BigInteger,
+        comment="most likely first affected result; empty where the statistic does not tell the side",
+    ),
+    Column("onset_low", BigInteger, comment="90 % set of the onset"),
+    Column("onset_high", BigInteger),
+    Column("results", Integer, comment="results offered from the onset to the alarm"),
+    Column("size", Float, comment="estimated error in the unit of the stream"),
+    Column("size_in_tea", Float),
+    Column("expected_unreliable", Float),
+    Column("last_control", BigInteger, comment="last control event scheduled before the alarm"),
+    Column("plan_sha256", String, nullable=False, comment="the plan in force"),
+    UniqueConstraint("stream", "monitor", "seq"),
+    comment="One row for each episode, when it opens.",
+)
+
+feeds = Table(
+    "feeds",
+    metadata,
+    Column("id", _Number, primary_key=True, autoincrement=False),
+    Column("source", String, nullable=False, unique=True),
+    Column("position", String, nullable=False, comment="where to go on; kept in the same transaction as the results"),
+    comment="Every feed, and how far it was read.",
+)
+
+set_aside = Table(
+    "set_aside",
+    metadata,
+    Column("id", _Number, primary_key=True, autoincrement=False),
+    Column("feed", ForeignKey("feeds.id"), nullable=False),
+    Column("place", BigInteger, nullable=False, comment="line of the feed"),
+    Column("reason", String, nullable=False),
+    Column("found", String, nullable=False, comment="the field at fault, never the whole line"),
+    Column("stream", String, nullable=False, comment="as far as known"),
+    comment="What a feed held that was not taken as a result.",
+)
+
+tallies = Table(
+    "tallies",
+    metadata,
+    Column("reason", String, primary_key=True),
+    Column("count", BigInteger, nullable=False),
+    comment="How much was set aside for each reason since the store began, duplicates among them.",
+)
+
+audit = Table(
+    "audit",
+    metadata,
+    Column("id", _Number, primary_key=True, autoincrement=False),
+    Column("at", BigInteger, nullable=False, comment="clock of the computer"),
+    Column("what", String, nullable=False),
+    Column("plan_before", String, nullable=False, comment='SHA-256 of the plan until then, "" if none'),
+    Column("plan_after", String, nullable=False),
+    Column("detail", String, nullable=False),
+    comment="What was done to the watch, never changed afterwards.",
+)

@@ -1,0 +1,70 @@
+"""What a live feed hands in: one result as it was written, still text, or a piece of the feed that could not be read as one."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import NamedTuple
+
+from pbm.records.result import Result
+
+
+class Reading(NamedTuple):
+    """One result as a feed wrote it.
+
+    Attributes
+    ----------
+    place
+        Where it stands in the feed: the line.
+    time, analyte, analyser, value, unit, specimen, ward, kind
+        As written; "" where not given.
+    """
+
+    place: int
+    time: str
+    analyte: str
+    analyser: str
+    value: str
+    unit: str
+    specimen: str
+    ward: str
+    kind: str
+
+
+class SetAside(NamedTuple):
+    """A piece of a feed that was not taken as a result, and why.
+
+    Attributes
+    ----------
+    place
+        Where it stands in the feed: the line.
+    reason
+        One of a few words that can be counted, such as "not a number".
+    found
+        What was found there, short; never a whole line, which could hold a patient's name.
+    stream
+        The stream it was meant for, as far as it is known.
+    """
+
+    place: int
+    reason: str
+    found: str = ""
+    stream: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Chunk:
+    """Some consecutive pieces of one feed.
+
+    Attributes
+    ----------
+    source, edition
+        Name of the feed, and which edition of it: a feed begun anew (another file under the same name) has the next number.
+    items
+        What was read, in the order of the feed.
+    position
+        Where to go on after these items, as the feed understands it.
+    """
+
+    source: str
+    edition: int
+    items: Sequence[Reading | Result | SetAside]
+    position: str

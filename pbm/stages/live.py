@@ -1,0 +1,201 @@
+"""All monitors of a laboratory on the live feed: which results count, in which order, and what they move.
+
+- A result counts once. A further one of the same specimen in the stream within 24 hours is a rerun; with the same time and value it is a
+  duplicate. A result without a specimen is a duplicate only of one in another edition of a feed.
+- Results are taken in order of arrival and never held back: an alarm must not wait for a later result, and neighbours may swap without
+  harm to a statistic. One that is older than the stream's newest results by more than `SLACK` is late: it is kept, and no monitor takes it.
+  The bar is the fifth newest time, so that a few times that lie in the future do not shut out what follows.
+"""
+
+from bisect import insort
+from collections import Counter
+from collections.abc import Callable, Iterable, Mapping, Sequence
+
+from pbm.errors import PlanError
+from pbm.records.alarm import Alarm
+from pbm.records.laboratory import Lab
+from pbm.records.plan import Plan
+from pbm.records.reading import Chunk, Reading, SetAside
+from pbm.records.result import Result
+from pbm.records.snapshot import DUPLICATE, LATE, RERUN, Batch, Earlier, Edition, KeptResult, Snapshot
+from pbm.records.stream import RERUN_HOURS, StreamName
+from pbm.stages.monitor import WINDOW, StreamMonitor
+from pbm.stages.reading import Reader
+
+SLACK = 90 * 60_000_000  # microseconds; more than the hour that clocks are put back
+NEWEST = 5
+_RERUN = RERUN_HOURS * 3_600_000_000
+
+
+class LiveStream:
+    """A watched stream: its monitors, and the newest times that they have taken (ascending)."""
+
+    def __init__(self, monitors: Sequence[StreamMonitor]) -> None:
+        self.monitors = tuple(monitors)
+        self.newest: list[int] = []
+
+    def is_late(self, time: int) -> bool:
+        """Whether a result comes too late for the monitors."""
+        return len(self.newest) == NEWEST and time < self.newest[0] - SLACK
+
+    def take(self, result: Result) -> list[Alarm]:
+        """Take the next result; the alarms that it opens."""
+        insort(self.newest, result.time)
+        del self.newest[:-NEWEST]
+        return [alarm for monitor in self.monitors if (alarm := monitor.take(result))]
+
+
+class Live:
+    """The streams of a plan on the live feed.
+
+    Attributes
+    ----------
+    streams
+        Those with a monitor.
+
+    Raises
+    ------
+    PlanError
+        If the plan watches what the laboratory does not describe, or describes in another unit.
+    """
+
+    def __init__(self, lab: Lab, plan: Plan, plan_sha256: str) -> None:
+        self.streams: dict[StreamName, LiveStream] = {}
+        for text, stream in plan.streams.items():
+            if stream.monitors:
+                name = StreamName.parse(text)
+                _check_it_fits(lab, name, stream.unit)
+                self.streams[name] = LiveStream(
+                    [StreamMonitor(name, i, one, lab, plan_sha256) for i, one in enumerate(stream.monitors)]
+                )
+
+    @property
+    def monitors(self) -> list[StreamMonitor]:
+        """Every monitor of every stream."""
+        return [monitor for stream in self.streams.values() for monitor in stream.monitors]
+
+    def go_on(
+        self,
+        kept: Iterable[Snapshot],
+        recent: Callable[[StreamName, int], list[Result]],
+        newest: Callable[[StreamName, int], list[int]],
+    ) -> list[StreamMonitor]:
+        """Go on from the states that were kept; a monitor whose settings have changed begins afresh.
+
+        Parameters
+        ----------
+        kept
+            The states.
+        recent, newest
+            The last results of a stream that counted, and its highest times (ascending); at most so many.
+
+        Returns
+        -------
+        list
+            The monitors that go on.
+        """
+        states = {(one.stream, one.settings): one.state for one in kept}
+        going_on = []
+        for name, stream in self.streams.items():
+            stream.newest = newest(name, NEWEST)
+            for monitor in stream.monitors:
+                if state := states.get((name, monitor.settings)):
+                    monitor.go_on(state, recent(name, WINDOW))
+                    going_on.append(monitor)
+        return going_on
+
+    def take(self, chunks: Iterable[Chunk], earlier: Earlier) -> Batch:
+        """Take what the feeds brought.
+
+        Parameters
+        ----------
+        chunks
+            Pieces of the feeds, in order of arrival; readings already made into results.
+        earlier
+            What is kept of the same specimens; results taken here are added to it.
+        """
+        work = _Work(self.streams, earlier)
+        for chunk in chunks:
+            work.take(chunk)
+        return work.batch()
+
+
+def _check_it_fits(lab: Lab, name: StreamName, unit: str) -> None:
+    if name.analyte not in lab.analytes:
+        raise PlanError(
+            f'plan.toml watches {name}, and lab.toml has no analyte "{name.analyte}". Describe it, or run `pbm tune` again.'
+        )
+    if unit != (described := lab.analytes[name.analyte].unit):
+        raise PlanError(
+            f"plan.toml watches {name} in {unit}, and lab.toml says that its unit is {described}. Correct lab.toml, or take the history "
+            "again and run `pbm tune`."
+        )
+
+
+class _Work:
+    """One batch in the making."""
+
+    def __init__(self, streams: Mapping[StreamName, LiveStream], earlier: Earlier) -> None:
+        self._streams, self._earlier = streams, earlier
+        self._results: list[KeptResult] = []
+        self._alarms: list[tuple[int, Alarm]] = []
+        self._set_aside: list[tuple[str, SetAside]] = []
+        self._tallies: Counter[str] = Counter()
+        self._positions: dict[str, str] = {}
+        self._moved: dict[StreamName, LiveStream] = {}
+
+    def take(self, chunk: Chunk) -> None:
+        edition = Edition(chunk.source, chunk.edition)
+        for item in chunk.items:
+            if isinstance(item, Result):
+                self._take_result(item, edition)
+            elif isinstance(item, SetAside):
+                self._tallies[item.reason] += 1
+                self._set_aside.append((chunk.source, item))
+        self._positions[chunk.source] = chunk.position
+
+    def _take_result(self, result: Result, edition: Edition) -> None:
+        reason = self._copy_of_another(result, edition)
+        if reason == DUPLICATE:
+            self._tallies[DUPLICATE] += 1
+            return
+        stream = self._streams.get(result.stream)
+        if stream is not None and not reason and stream.is_late(result.time):
+            reason = LATE
+        self._results.append(KeptResult(result, reason, edition))
+        if reason:
+            self._tallies[reason] += 1
+        elif stream is not None:
+            self._moved[result.stream] = stream
+            self._alarms += [(len(self._results) - 1, alarm) for alarm in stream.take(result)]
+
+    def _copy_of_another(self, result: Result, edition: Edition) -> str:
+        """Why a result does not count; "" if it does. It is remembered for those that follow."""
+        measured = (result.time, result.value, result.censor)
+        if not result.specimen:
+            held = self._earlier.unnamed.setdefault((result.stream, *measured), set())
+            copy = bool(held - {edition})
+            held.add(edition)
+            return DUPLICATE if copy else ""
+        runs = self._earlier.runs.setdefault((result.stream, result.specimen), {})
+        if measured in runs:
+            return DUPLICATE
+        rerun = any(first and abs(result.time - time) <= _RERUN for (time, _, _), first in runs.items())
+        runs[measured] = not rerun
+        return RERUN if rerun else ""
+
+    def batch(self) -> Batch:
+        return Batch(
+            results=self._results,
+            alarms=self._alarms,
+            snapshots=[monitor.snapshot() for stream in self._moved.values() for monitor in stream.monitors],
+            set_aside=self._set_aside,
+            tallies=dict(self._tallies),
+            positions=self._positions,
+        )
+
+
+def read_chunk(chunk: Chunk, reader: Reader) -> Chunk:
+    """The chunk with its readings made into results, or set aside."""
+    items = [reader.read(item) if isinstance(item, Reading) else item for item in chunk.items]
+    return Chunk(chunk.source, chunk.edition, items, chunk.position)

@@ -1,0 +1,141 @@
+"""One reading of a live feed -> a result, or the one reason why it is not: the rules of intake, applied one by one as results arrive.
+
+The first reason that applies is given, in the order of intake: no line of data, no patient's result, unknown test, ward left out, no
+analyser, no number, another unit, no time, implausible value. A unit is never converted. A local time that the clocks show twice is read
+as its first passage: only the order of arrival counts, and either reading is the same on the wall.
+"""
+
+import math
+from datetime import datetime, timedelta
+from functools import lru_cache
+from typing import Literal
+
+from pbm.records.as_written import read_time, read_value
+from pbm.records.laboratory import Analyte, Lab
+from pbm.records.reading import Reading, SetAside
+from pbm.records.result import Result
+from pbm.records.stream import LONGEST_ANALYSER, POOLED, StreamName
+
+_EPOCH = datetime(1970, 1, 1)
+_MICROSECOND = timedelta(microseconds=1)
+_KNOWN_TEXTS = 65_536  # different values kept read: results repeat, digits are few
+
+
+class ReadingError(Exception):
+    """Why a reading is no result: reason and what was found."""
+
+    def __init__(self, reason: str, found: str = "") -> None:
+        super().__init__(reason)
+        self.reason, self.found = reason, found
+
+
+class Reader:
+    """Reads one kind of feed as `lab.toml` says.
+
+    Parameters
+    ----------
+    lab
+        The laboratory.
+    decimal, time_format
+        How the feed writes numbers and times; without a format, times are in ISO 8601.
+    units_given, kinds_given
+        Whether every reading of the feed says its unit, and its kind.
+    """
+
+    def __init__(
+        self,
+        lab: Lab,
+        decimal: Literal[".", ","] = ".",
+        time_format: str | None = None,
+        *,
+        units_given: bool = True,
+        kinds_given: bool = False,
+    ) -> None:
+        self._zone = lab.laboratory.zone
+        self._extract = lab.extract
+        self._analytes = {name: (key, lab.analytes[key]) for name, key in lab.spellings().items()}
+        self._units = {key: {one.unit, *one.unit_names} for key, one in lab.analytes.items()}
+        self._time_format = time_format
+        self._units_given, self._kinds_given = units_given, kinds_given
+        self._streams: dict[tuple[str, str], StreamName] = {}
+        self._value = lru_cache(_KNOWN_TEXTS)(lambda text: read_value(text, decimal))
+
+    def read(self, reading: Reading) -> Result | SetAside:
+        """The result, or why it is none."""
+        try:
+            return self._result(Reading(reading.place, *(text.strip() for text in reading[1:])))
+        except ReadingError as error:
+            key, _ = self._analytes.get(reading.analyte.strip(), ("", None))
+            stream = f"{key}@{reading.analyser.strip() or POOLED}" if key else ""
+            return SetAside(reading.place, error.reason, error.found, stream)
+
+    def _result(self, reading: Reading) -> Result:
+        self._check_it_is_data(reading)
+        known = self._analytes.get(reading.analyte)
+        if known is None:
+            raise ReadingError("unknown test", reading.analyte)
+        key, analyte = known
+        if reading.ward in analyte.leave_out_wards:
+            raise ReadingError("ward is left out", reading.ward)
+        stream = self._streams.get((key, reading.analyser)) or self._stream(key, reading.analyser)
+        value, censor = self._number(reading.value)
+        self._check_unit(reading.unit, key, analyte)
+        time = self._time(reading.time)
+        self._check_plausible(value, analyte)
+        return Result(time, stream, value, censor, reading.specimen, reading.ward)
+
+    def _check_it_is_data(self, reading: Reading) -> None:
+        if not (reading.time or reading.analyte or reading.value):
+            raise ReadingError("blank line")
+        if reading.analyte == self._extract.analyte and reading.value == self._extract.value:
+            raise ReadingError("repeated header line")
+        if (reading.kind or self._kinds_given) and reading.kind not in self._extract.patient_kinds:
+            raise ReadingError("not a patient result", reading.kind)
+
+    def _stream(self, key: str, analyser: str) -> StreamName:
+        if not analyser and self._extract.analyser is not None:
+            raise ReadingError("no analyser given")
+        if len(analyser) > LONGEST_ANALYSER:
+            raise ReadingError("not the name of an analyser")
+        return self._streams.setdefault((key, analyser), StreamName(key, analyser or POOLED))
+
+    def _number(self, text: str) -> tuple[float, int]:
+        if not text:
+            raise ReadingError("no value")
+        number = self._value(text)
+        if number is None:
+            raise ReadingError("not a number", text)
+        return number
+
+    def _check_unit(self, unit: str, key: str, analyte: Analyte) -> None:
+        if unit in self._units[key] or (not unit and not self._units_given):
+            return
+        if not unit:
+            raise ReadingError("no unit given")
+        raise ReadingError(f"unit is not {analyte.unit}", unit)
+
+    def _time(self, text: str) -> int:
+        found = self._as_written(text)
+        if found is None:
+            raise ReadingError("not a time", text)
+        offset = found.utcoffset()
+        if offset is None:
+            local = found.replace(tzinfo=self._zone)
+            offset = local.utcoffset() or timedelta()
+            if offset < (local.replace(fold=1).utcoffset() or timedelta()):
+                raise ReadingError("time skipped by the clocks", text)
+        return (found.replace(tzinfo=None) - _EPOCH - offset) // _MICROSECOND
+
+    def _as_written(self, text: str) -> datetime | None:
+        if self._time_format is None:
+            return read_time(text)
+        try:
+            return datetime.strptime(text, self._time_format)
+        except ValueError:
+            return None
+
+    @staticmethod
+    def _check_plausible(value: float, analyte: Analyte) -> None:
+        low, high = analyte.plausible.low, analyte.plausible.high
+        if not (-math.inf if low is None else low) <= value <= (math.inf if high is None else high):
+            raise ReadingError("outside the plausible range", f"{value:g}")
