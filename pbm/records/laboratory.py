@@ -41,7 +41,15 @@ def _known_encoding(name: str) -> str:
 
 
 class Identity(Written):
-    """Who the laboratory is and in which time zone its clocks stand."""
+    """Who the laboratory is and in which time zone its clocks stand.
+
+    Attributes
+    ----------
+    name
+        As it stands on reports.
+    timezone
+        Of the laboratory's clocks: times without an offset, control times and days are read in it.
+    """
 
     name: str = Field(min_length=1)
     timezone: Annotated[str, AfterValidator(_known_zone)]
@@ -53,7 +61,41 @@ class Identity(Written):
 
 
 class Extract(Written):
-    """Which column of the extract holds what; columns not named here are ignored."""
+    """Which column of the extract holds what; columns not named here are ignored.
+
+    Attributes
+    ----------
+    time
+        When the result was measured; failing that, reported.
+    analyte
+        The test, in any spelling that `analytes.NAME.names` lists.
+    value
+        The result as it is written, with "<" and ">" where it has them.
+    analyser
+        The line or instrument. Without it all analysers of an analyte are one stream, called "pooled".
+    unit
+        The unit; rows in another one are left out, never converted.
+    specimen
+        Tells reruns and duplicates of a specimen from results of different specimens.
+    ward
+        Where the patient is; for patient mix and for `leave_out_wards`.
+    sex, age, priority
+        Kept beside the result.
+    patient
+        Kept as a keyed one-way token only; for `repeat_hours`.
+    kind
+        Tells patients' results from controls and proficiency; see `patient_kinds`.
+    time_format
+        How times are written, as a strptime pattern; ISO 8601 without it.
+    decimal
+        The decimal sign of numbers.
+    delimiter
+        What parts the columns; found out and told without it.
+    encoding
+        Of the text; found out and told without it.
+    patient_kinds
+        What `kind` holds for a patient's result; every other row is left out.
+    """
 
     time: str
     analyte: str
@@ -75,7 +117,17 @@ class Extract(Written):
 
 
 class Alarms(Written):
-    """How many false alarms the bench can bear, and how long it takes to stop reporting after one."""
+    """How many false alarms the bench can bear, and how long it takes to stop reporting after one.
+
+    Attributes
+    ----------
+    budget
+        False alarms of one stream.
+    fleet_budget
+        False alarms of the whole laboratory together.
+    response_lag
+        What is still reported between an alarm and the stop.
+    """
 
     budget: AlarmRate = Rate(1, 30)
     fleet_budget: AlarmRate | None = None
@@ -83,7 +135,15 @@ class Alarms(Written):
 
 
 class ControlLevel(Written):
-    """A control material: its mean and SD on the analyser, and how often it is measured at an event."""
+    """A control material: its mean and SD on the analyser, and how often it is measured at an event.
+
+    Attributes
+    ----------
+    mean, sd
+        In control, in the unit of the analyte.
+    repeats
+        Measurements at each event.
+    """
 
     mean: Finite
     sd: Positive
@@ -91,7 +151,19 @@ class ControlLevel(Written):
 
 
 class Controls(Written):
-    """A control schedule: clock times or a count of results, the rules, and the levels measured."""
+    """A control schedule: clock times or a count of results, the rules, and the levels measured.
+
+    Attributes
+    ----------
+    times
+        Control events at these local clock times, every day.
+    every
+        Instead of times: a control event after so many results of the stream.
+    rules
+        Control rules by their trade notation: k-Ls, kofm-Ls, kx, R-4s, R-4s-opposite.
+    levels
+        Control materials measured at each event.
+    """
 
     times: tuple[ClockTime, ...] | None = None
     every: EveryResults | None = None
@@ -116,7 +188,25 @@ class Controls(Written):
 
 
 class FaultList(Written):
-    """Errors to simulate: one kind in several sizes. Sizes in TEa, in analytic SD ("SD"), or in the analyte's unit ("unit")."""
+    """Errors to simulate: one kind in several sizes.
+
+    Attributes
+    ----------
+    kind
+        A shift, a drift that grows to its size, noise that multiplies the analytic SD, or a sporadic shift.
+    sizes
+        In `unit`; for noise the factor on the analytic SD.
+    unit
+        TEa or analytic SD of each result, the unit of the analyte, or percent of the result.
+    signs
+        To which side.
+    over
+        Of a drift: results until it has grown to its size.
+    share
+        Of a sporadic shift: the share of results that it hits.
+    weight
+        Of these faults in the score by which monitors are chosen.
+    """
 
     kind: Literal["shift", "drift", "noise", "sporadic"] = "shift"
     sizes: tuple[Positive, ...] = Field(min_length=1)
@@ -131,7 +221,13 @@ DEFAULT_FAULTS = (FaultList(sizes=(0.25, 0.5, 0.75, 1.0, 1.5, 2.0)),)
 
 
 class Range(Written):
-    """A closed range of results; an open side is left out."""
+    """A closed range of results; an open side is left out.
+
+    Attributes
+    ----------
+    low, high
+        Both inside.
+    """
 
     low: Finite | None = None
     high: Finite | None = None
@@ -144,7 +240,39 @@ class Range(Written):
 
 
 class Analyte(Written):
-    """One measurand: unit, resolution, TEa, analytic SD, spellings, controls and the errors to guard against."""
+    """One measurand: unit, resolution, TEa, analytic SD, spellings, controls and the errors to guard against.
+
+    Attributes
+    ----------
+    unit
+        In which everything about the analyte is given.
+    step
+        In which results are reported.
+    allowable_error
+        TEa: a result is unreliable if its error exceeds it.
+    analytic_sd
+        SD of the method on one specimen.
+    loinc
+        LOINC code.
+    names
+        Other spellings in extract and feed; the name of the table itself always counts.
+    unit_names
+        Other spellings of the same unit.
+    reportable
+        The method's limits: below and above them it prints "<" and ">".
+    plausible
+        A result outside is left out as impossible.
+    leave_out_wards
+        Wards whose results are left out.
+    repeat_hours
+        A patient's results count at most once in so many hours; 0: all of them.
+    budget
+        False alarms of one stream of this analyte, instead of `alarms.budget`.
+    controls
+        What differs from the laboratory's `[controls]`.
+    faults
+        Errors to guard against.
+    """
 
     unit: str = Field(min_length=1)
     step: Positive
@@ -174,7 +302,21 @@ def spelling_clashes(spellings: Mapping[str, Iterable[str]]) -> Iterator[str]:
 
 
 class Lab(Written):
-    """All of `lab.toml`."""
+    """All of `lab.toml`.
+
+    Attributes
+    ----------
+    laboratory
+        The laboratory.
+    extract
+        The columns of its extracts.
+    alarms
+        The alarm budget.
+    controls
+        The control schedule of every analyte that does not say otherwise.
+    analytes
+        The analytes, by a short name of the laboratory's choice.
+    """
 
     laboratory: Identity
     extract: Extract

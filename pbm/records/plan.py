@@ -13,7 +13,17 @@ Interval = tuple[Finite, Finite]
 
 
 class HistoryMark(Written):
-    """Which history a plan was made from."""
+    """Which history a plan was made from.
+
+    Attributes
+    ----------
+    first, last
+        First and last result.
+    rows
+        Results.
+    sha256
+        Of the results themselves, whichever files they came in.
+    """
 
     first: datetime
     last: datetime
@@ -22,7 +32,21 @@ class HistoryMark(Written):
 
 
 class Made(Written):
-    """By what, when, from what, and with which seed a plan was made."""
+    """By what, when, from what, and with which seed a plan was made.
+
+    Attributes
+    ----------
+    by, at
+        Version of the tool, and when.
+    history
+        The history.
+    seed
+        Master seed.
+    lab_sha256
+        SHA-256 of `lab.toml`.
+    versions
+        Of Python and of the libraries that decide figures.
+    """
 
     by: str
     at: datetime
@@ -33,7 +57,15 @@ class Made(Written):
 
 
 class Admit(Written):
-    """Truncation limits in the result's own unit (an open side is left out) and what happens beyond them."""
+    """Truncation limits and what happens beyond them.
+
+    Attributes
+    ----------
+    low, high
+        In the result's own unit; an open side is left out.
+    mode
+        "truncate" drops a result outside, "winsorize" sets it to the nearer limit.
+    """
 
     low: Finite | None = None
     high: Finite | None = None
@@ -47,28 +79,56 @@ class Admit(Written):
 
 
 class ControlLimits(Written):
-    """Control limits on the statistic, on its own (transformed) scale."""
+    """Control limits of the statistic.
+
+    Attributes
+    ----------
+    low, high
+        On the statistic's own (transformed) scale.
+    """
 
     low: Finite
     high: Finite
 
 
 class LimitsInterval(Written):
-    """90 % intervals of the limits from the day-block bootstrap."""
+    """Uncertainty of the limits.
+
+    Attributes
+    ----------
+    low, high
+        90 % interval of each limit from the day-block bootstrap.
+    """
 
     low: Interval
     high: Interval
 
 
 class Training(Written):
-    """Days and alarms of the training history at the chosen limits."""
+    """Alarms of the training days at the chosen limits.
+
+    Attributes
+    ----------
+    days, episodes
+        Calendar days, and alarms in them.
+    """
 
     days: int
     episodes: int
 
 
 class HeldOut(Written):
-    """Days and alarms of the held-out history, the 90 % interval of the expected count, and whether the budget was kept."""
+    """Alarms of the held-out days, which no choice has seen.
+
+    Attributes
+    ----------
+    days, episodes
+        Calendar days, and alarms in them.
+    interval
+        Exact 90 % Poisson interval of the expected count.
+    kept
+        The budget lies inside the interval or the count is below it.
+    """
 
     days: int
     episodes: int
@@ -77,14 +137,28 @@ class HeldOut(Written):
 
 
 class BaselinePlan(Written):
-    """Patient mix: effect of each ward, and of each of the 168 hours of the week from Monday 00:00, on the transformed scale."""
+    """Patient mix: what is taken from each result before the statistic, on the transformed scale.
+
+    Attributes
+    ----------
+    wards
+        Effect of each ward; a ward that is not listed has effect 0.
+    hours
+        Effect of each of the 168 hours of the week, from Monday 00:00.
+    """
 
     wards: dict[str, Finite]
     hours: Annotated[tuple[Finite, ...], Field(min_length=168, max_length=168)]
 
 
 class Outside(Written):
-    """A value below `low` or above `high` is counted by a moving share; on the statistic's (transformed) scale, one side may be open."""
+    """Which values a moving share counts.
+
+    Attributes
+    ----------
+    low, high
+        A value below low or above high is counted; on the transformed scale, one side may be open.
+    """
 
     low: Finite | None = None
     high: Finite | None = None
@@ -115,8 +189,48 @@ _OPTIONAL_KEYS = ("window", "weight", "reference", "outside", "exponent", "level
 class MonitorPlan(Written):
     """One monitor of a stream: from raw result to alarm.
 
-    `centre` is the in-control level of the statistic, `level` that of the values it takes (the centre, if left out); `spread` is the
-    in-control SD of the values.
+    Attributes
+    ----------
+    watches
+        What it is meant to find.
+    admit
+        Which results it takes.
+    transform, transform_lambda
+        What is done to an admitted result; lambda goes with Box-Cox only.
+    baseline
+        Patient mix, if the monitor is adjusted for it.
+    statistic
+        Which statistic runs on the prepared values.
+    window
+        Number N of values of a moving mean, median, SD or share; of a batch its size.
+    weight
+        Weight w of the newest value, of an exponentially weighted statistic.
+    reference
+        Reference k of a CUSUM, in SD of one value.
+    outside
+        What a moving share counts.
+    exponent
+        Exponent P of a batch-weighted mean.
+    level
+        In-control mean of the values that the statistic takes; the centre, if left out.
+    centre
+        In-control level of the statistic.
+    limits
+        Control limits.
+    limits_interval
+        Uncertainty of the limits.
+    rearm
+        An alarm closes when the statistic comes back within this share of the way from the centre to the limit.
+    budget_per_day
+        False alarms a day for which the limits were chosen.
+    spread
+        In-control SD of the values.
+    slope
+        Movement of the mean of admitted values for a unit of true shift.
+    inflation
+        Variance of a mean of successive values over what independence would give.
+    train, held_out
+        Alarms on the training days and on the held-out days.
     """
 
     watches: Literal["shift", "imprecision"] = "shift"
@@ -157,7 +271,21 @@ class MonitorPlan(Written):
 
 
 class StreamPlan(Written):
-    """What was decided for one stream: its monitors, or the reason why it has none; the days from `held_out_from` on did not train it."""
+    """What was decided for one stream: its monitors, or the reason why it has none.
+
+    Attributes
+    ----------
+    unit
+        Of the stream.
+    verdict, reason
+        Whether a monitor pays here, and why.
+    results_per_day
+        Results a day in the history.
+    held_out_from
+        The days from here on did not train the monitor.
+    monitors
+        The monitors.
+    """
 
     unit: str
     verdict: Verdict
@@ -168,7 +296,15 @@ class StreamPlan(Written):
 
 
 class Plan(Written):
-    """All of `plan.toml`."""
+    """All of `plan.toml`.
+
+    Attributes
+    ----------
+    made
+        Where the plan came from.
+    streams
+        The streams, by name such as sodium@line-2.
+    """
 
     made: Made
     streams: dict[str, StreamPlan]

@@ -91,7 +91,15 @@ Signs = Literal["both", "up", "down"]
 
 
 class AllowableError(Written):
-    """TEa: absolute (in the unit of the analyte), a percentage of the result, or both, when the greater counts."""
+    """TEa: absolute, a percentage of the result, or both, when the greater counts.
+
+    Attributes
+    ----------
+    absolute
+        In the unit of the analyte.
+    percent
+        Of the result.
+    """
 
     absolute: Positive | None = None
     percent: Positive | None = None
@@ -109,7 +117,15 @@ class AllowableError(Written):
 
 
 class AnalyticSd(Written):
-    """Analytic SD: sqrt(absolute^2 + (cv x)^2), in the unit of the analyte."""
+    """Analytic SD at a result x: sqrt(absolute^2 + (cv x)^2).
+
+    Attributes
+    ----------
+    absolute
+        Part that does not depend on the result, in the unit of the analyte.
+    cv_percent
+        Part proportional to the result, in percent of it.
+    """
 
     absolute: NotNegative = 0.0
     cv_percent: NotNegative = 0.0
