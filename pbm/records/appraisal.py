@@ -11,13 +11,21 @@ from pbm.records.plan import Verdict
 
 
 class Found(BaseModel):
-    """Base of everything an appraisal writes."""
+    """Base of everything an appraisal writes: frozen, and every number finite, since JSON has no other."""
 
-    model_config = ConfigDict(frozen=True, extra="forbid")
+    model_config = ConfigDict(frozen=True, extra="forbid", allow_inf_nan=False)
 
 
 class Figure(Found):
-    """A figure with its 90 % interval from the bootstrap over days."""
+    """A figure with its interval.
+
+    Attributes
+    ----------
+    value
+        The figure.
+    low, high
+        Its 90 % interval from the bootstrap over days.
+    """
 
     value: float
     low: float
@@ -25,9 +33,16 @@ class Figure(Found):
 
 
 class ResultsUntil(Found):
-    """Affected results until detection: mean, median and 95th percentile (None where more are never found), and the share never found.
+    """Affected results until detection.
 
-    The mean counts what was not found as found at the horizon, and is therefore a lower bound where `never` is not 0.
+    Attributes
+    ----------
+    mean
+        What was not found counts as found at the horizon; a lower bound where `never` is not 0.
+    median, p95
+        Median and 95th percentile; none where more than the rest are never found.
+    never
+        Share not found within the horizon.
     """
 
     mean: float
@@ -37,7 +52,13 @@ class ResultsUntil(Found):
 
 
 class Ways(Found):
-    """A figure for the control schedule alone, the monitor alone, and both together."""
+    """A figure in three ways.
+
+    Attributes
+    ----------
+    schedule, monitor, both
+        The control schedule alone, the monitor alone, both together.
+    """
 
     schedule: Figure
     monitor: Figure
@@ -45,7 +66,13 @@ class Ways(Found):
 
 
 class UntilWays(Found):
-    """Results until detection by the control schedule alone, the monitor alone, and both together."""
+    """Results until detection in three ways.
+
+    Attributes
+    ----------
+    schedule, monitor, both
+        The control schedule alone, the monitor alone, both together.
+    """
 
     schedule: ResultsUntil
     monitor: ResultsUntil
@@ -53,7 +80,13 @@ class UntilWays(Found):
 
 
 class AloneAndWith(Found):
-    """A figure for the control schedule alone and with the monitor beside it."""
+    """A figure without and with the monitor.
+
+    Attributes
+    ----------
+    alone, with_monitor
+        The control schedule alone, and with the monitor beside it.
+    """
 
     alone: Figure
     with_monitor: Figure
@@ -64,7 +97,9 @@ class FaultAppraisal(Found):
 
     Attributes
     ----------
-    label, kind, size, unit, sign
+    label
+        The fault in words.
+    kind, size, unit, sign
         The fault; `size` in `unit`.
     shift
         Its size in the analyte's unit at the median result (None for noise).
@@ -76,6 +111,8 @@ class FaultAppraisal(Found):
         Affected results until detection.
     unreliable, unreliable_final
         Expected unreliable results reported, and those of them released before the last accepted control event.
+    schedule_error
+        Largest standard error of a chance of passing; 0 where those are exact.
     """
 
     label: str
@@ -93,7 +130,15 @@ class FaultAppraisal(Found):
 
 
 class WorstCase(Found):
-    """The largest expected number of unreliable results over all faults, alone and with the monitor, and at which fault."""
+    """The largest expected number of unreliable results over all faults.
+
+    Attributes
+    ----------
+    alone, with_monitor
+        The control schedule alone, and with the monitor beside it.
+    alone_at, with_monitor_at
+        At which fault.
+    """
 
     alone: Figure
     alone_at: str
@@ -124,7 +169,15 @@ class FalseAlarms(Found):
 
 
 class Trace(Found):
-    """The statistic on held-out days, thinned to its lowest and highest value in each of many equal parts, for a plot."""
+    """The statistic on held-out days, thinned for a plot.
+
+    Attributes
+    ----------
+    day
+        Where each of many equal parts begins, in days.
+    lowest, highest
+        Of the statistic in each part, on its own scale.
+    """
 
     day: tuple[float, ...]
     lowest: tuple[float, ...]
@@ -142,8 +195,16 @@ class MonitorAppraisal(Found):
         Share of held-out results that the statistic takes.
     centre, low, high
         Of the statistic, in the result's unit (transformed back).
+    limits, scale_centre
+        The same on the statistic's own scale.
     trace
-        The statistic on its own scale, with `limits` and `scale_centre` on the same scale.
+        The statistic.
+    false_alarms
+        Alarms on held-out days.
+    faults
+        Every fault.
+    worst_unreliable, worst_final
+        The worst case of `unreliable` and of `unreliable_final` over the faults.
     """
 
     words: str
@@ -161,7 +222,27 @@ class MonitorAppraisal(Found):
 
 
 class StreamAppraisal(Found):
-    """One stream: its monitors judged, or the reason why it has none."""
+    """One stream: its monitors judged, or the reason why it has none.
+
+    Attributes
+    ----------
+    stream, unit
+        Name and unit.
+    verdict, reason
+        Of the plan.
+    results_per_day
+        Results a day in the history that made the plan.
+    first_day, last_day, held_out_results
+        The held-out days, and the results in them.
+    onsets
+        Onsets at which each fault was tried.
+    horizon_days
+        How long an undetected error was followed.
+    allowable_error, schedule, response_lag
+        TEa, control schedule and response lag in words.
+    monitors
+        The monitors.
+    """
 
     stream: str
     unit: str
@@ -180,7 +261,19 @@ class StreamAppraisal(Found):
 
 
 class Appraisal(Found):
-    """All of `appraisal.json`."""
+    """All of `appraisal.json`.
+
+    Attributes
+    ----------
+    version
+        Of this layout.
+    made_by, laboratory, seed
+        Version of the tool, name of the laboratory, master seed.
+    history_sha256, plan_sha256, lab_sha256
+        What was judged: the history, `plan.toml` and `lab.toml`.
+    streams
+        The streams.
+    """
 
     version: Annotated[int, Field(ge=1)] = 1
     made_by: str
