@@ -9,6 +9,7 @@ from scipy.special import ndtr
 from pbm.methods.controls import Rules, rejection_probability, run_length
 from tests.published.record import published
 from tests.published.values import control_rules as values
+from tests.published.values import lines
 
 DIGIT = 5e-6
 
@@ -32,7 +33,7 @@ def test_rejection_probability_of_one_event_at_each_shift() -> None:
 
     1-ks, 2-2s, 2of3-2s, R-4s in both readings, 4-1s, multi-rules. Rules READ; values REPRO (enumeration and 4e7 runs by unrelated code).
     """
-    for rules, controls, figures in values.lines(values.POWER):
+    for rules, controls, figures in lines(values.POWER):
         for shift, figure in zip(values.SHIFTS, figures.split(), strict=True):
             if figure != "-":
                 ours = _rejection(rules, int(controls), shift)
@@ -51,7 +52,7 @@ def test_rejection_by_the_multi_rule_with_the_range_reading_and_four_controls() 
 
 def test_rejection_probability_of_one_event_with_more_imprecision() -> None:
     """SD times 1.5, 2 and 3 without a shift. REPRO."""
-    for rules, controls, figures in values.lines(values.IMPRECISION):
+    for rules, controls, figures in lines(values.IMPRECISION):
         for multiple, figure in zip((1.5, 2.0, 3.0), figures.split(), strict=True):
             ours = _rejection(rules, int(controls), 0.0, multiple)
             published(f"P(reject): {rules}, N={controls}, SD x {multiple:g}", values.POWER_SOURCE, figure, ours, DIGIT)
@@ -63,7 +64,7 @@ def test_printed_false_rejection_of_multi_rules_is_that_of_the_range_reading() -
     MEM. The same memory holds .00 for 1-3s (two controls), .03 for 1-2.5s (two) and .18 for 1-2s (four), read off simulated curves; exact
     are .0054, .0247 and .1700 (table of one event), so these three are not figures to compare with.
     """
-    for rules, controls, figure in values.lines(values.TWO_DIGITS):
+    for rules, controls, figure in lines(values.TWO_DIGITS):
         ours = _rejection(rules, int(controls), 0.0)
         published(f"P(false rejection): {rules}, N={controls}", values.TWO_DIGITS_SOURCE, figure, ours, DIGIT)
     assert round(_rejection("1-3s 2-2s R-4s-opposite 4-1s", 4, 0.0), 2) != 0.03
@@ -97,7 +98,7 @@ def test_average_run_length_with_supplementary_runs_rules() -> None:
 
     MEM (table from memory), REPRO by an automatically built chain; every printed digit.
     """
-    for shift, figures in values.lines(values.RUN_LENGTHS):
+    for shift, figures in lines(values.RUN_LENGTHS):
         for column, figure in zip(values.RUN_COLUMNS, figures.split(), strict=True):
             rules = " ".join(values.RUN_RULES[number] for number in column.split("+"))
             ours = _run_length(rules, float(shift))
@@ -106,7 +107,7 @@ def test_average_run_length_with_supplementary_runs_rules() -> None:
 
 def test_average_run_length_of_clinical_rules_on_a_single_control() -> None:
     """Average run length of 1-2s, 2-2s, 10x and multi-rules on single measurements. REPRO; every printed digit."""
-    for rules, figures in values.lines(values.CLINICAL_RUN_LENGTHS):
+    for rules, figures in lines(values.CLINICAL_RUN_LENGTHS):
         for shift, figure in zip(values.CLINICAL_SHIFTS, figures.split(), strict=True):
             published(
                 f"ARL: {rules}, shift {shift:g} SD", values.CLINICAL_SOURCE, figure, _run_length(rules, shift), 1e-9
@@ -123,7 +124,7 @@ def test_average_run_length_has_its_closed_forms() -> None:
 
 def test_rejection_probability_at_the_critical_error() -> None:
     """Detection of a shift of sigma - 1.65 by 1-3s and multi-rules, sigma 3 to 6. REPRO."""
-    for rules, controls, figures in values.lines(values.CRITICAL_POWER):
+    for rules, controls, figures in lines(values.CRITICAL_POWER):
         for sigma, figure in zip(values.CRITICAL_SIGMAS, figures.split(), strict=True):
             ours = _rejection(rules, int(controls), sigma - 1.65)
             printed = f"{figure}.0000" if figure == "1" else figure

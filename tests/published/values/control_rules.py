@@ -96,8 +96,3 @@ CRITICAL_POWER = """
 1-3s                                | 4 | .1837 .4140 .6966 .9019 .9826 .9985 .9999
 1-3s 2-2s R-4s-opposite 4-1s        | 4 | .3695 .7036 .9228 .9900 .9994 1 1
 """
-
-
-def lines(table: str) -> list[tuple[str, ...]]:
-    """Cells of each line of a table, stripped."""
-    return [tuple(cell.strip() for cell in line.split("|")) for line in table.strip().splitlines()]
