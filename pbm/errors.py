@@ -22,3 +22,8 @@ class PlanError(InputError):
 
 class FeedError(PbmError):
     """The live feed or its store cannot go on; nothing that was acknowledged is lost."""
+
+
+def one_line(error: Exception) -> str:
+    """The text of a library's error on one line, to stand inside a paragraph."""
+    return " ".join(str(error).split())

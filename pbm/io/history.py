@@ -19,7 +19,7 @@ import pyarrow as pa
 import pyarrow.compute as pc
 import pyarrow.parquet as pq
 
-from pbm.errors import InputError
+from pbm.errors import InputError, one_line
 from pbm.records.intake import COVARIATES, TakenExtract
 from pbm.records.plan import HistoryMark
 from pbm.records.stream import StreamHistory, StreamName
@@ -60,7 +60,7 @@ def read_extracts(folder: Path) -> list[TakenExtract]:
         return []
     except (ValueError, TypeError, OSError) as error:
         raise InputError(
-            f"{path} cannot be read ({error}). Delete {folder} and take all extracts again with `pbm intake`."
+            f"{path} cannot be read ({one_line(error)}). Delete {folder} and take all extracts again with `pbm intake`."
         ) from None
 
 
@@ -119,7 +119,7 @@ def read_results(folder: Path, name: StreamName, columns: list[str] | None = Non
         raise InputError(_no_such_stream(folder, name)) from None
     except (pa.ArrowInvalid, OSError) as error:
         raise InputError(
-            f"{path} cannot be read ({error}). Delete {folder} and take the extracts again with `pbm intake`."
+            f"{path} cannot be read ({one_line(error)}). Delete {folder} and take the extracts again with `pbm intake`."
         ) from None
 
 

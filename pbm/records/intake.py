@@ -45,7 +45,7 @@ class TextBlock:
     line
         Where each row begins: line of the file, or row of a Parquet file, counted from 1.
     columns
-        Role (see `ROLES`; only those the extract has) -> text of each row, "" where there is none.
+        Role (see `ROLES`; only those the extract has) -> text of each row, plain or encoded by dictionary, "" where there is none.
     left_out
         Lines that are no rows (`LEFT_OUT_SCHEMA`).
     decimal, time_format

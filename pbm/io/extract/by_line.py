@@ -57,7 +57,8 @@ def read_by_line(block: bytes, delimiter: str, width: int, places: set[int], fin
     bad: list[tuple[int, str, str]] = []
     at, inside = 0, 0
     while at < len(lines):
-        record, spans = _record(lines, at, delimiter)
+        # An empty line is a row without anything, as pyarrow reads it.
+        record, spans = _record(lines, at, delimiter) if lines[at] else ([""] * width, 1)
         if record is None and not final and at + _LONGEST_RECORD > len(lines):
             break
         if record is not None and len(record) == width:

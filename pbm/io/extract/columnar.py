@@ -8,7 +8,7 @@ import pyarrow as pa
 import pyarrow.compute as pc
 import pyarrow.parquet as pq
 
-from pbm.errors import InputError
+from pbm.errors import InputError, one_line
 from pbm.io.extract.heading import check_columns, wanted_columns
 from pbm.records.intake import LEFT_OUT_SCHEMA, TextBlock
 from pbm.records.laboratory import Extract
@@ -34,7 +34,7 @@ class ColumnarExtract:
             self._file = pq.ParquetFile(path)
         except (pa.ArrowException, OSError) as error:
             raise InputError(
-                f"{path} is damaged or not a whole Parquet file ({error}). Copy or export it again."
+                f"{path} is damaged or not a whole Parquet file ({one_line(error)}). Copy or export it again."
             ) from None
         schema = self._file.schema_arrow
         check_columns(path, schema.names, columns)
@@ -70,7 +70,7 @@ class ColumnarExtract:
                 yield {role: _text(batch.column(column)) for role, column in self._wanted.items()}
         except (pa.ArrowException, OSError) as error:
             raise InputError(
-                f"{self._path} is damaged ({error}). Nothing was taken; copy or export it again."
+                f"{self._path} is damaged ({one_line(error)}). Nothing was taken; copy or export it again."
             ) from None
 
 
@@ -79,7 +79,13 @@ def _is_number(kind: pa.DataType) -> bool:
 
 
 def _text(column: pa.Array) -> pa.Array:
-    kind = column.type
-    if pa.types.is_timestamp(kind) and kind.unit == "ns":
-        column = pc.cast(column, pa.timestamp("us", kind.tz), safe=False)
-    return column.cast(pa.string()).fill_null("")
+    if not pa.types.is_timestamp(column.type):
+        return column.cast(pa.string()).fill_null("")
+    # Without its zone: pyarrow would look that up in a database of the operating system, which may be missing.
+    instants = (
+        column.cast(pa.timestamp("us", column.type.tz), safe=False)
+        .cast(pa.int64())
+        .cast(pa.timestamp("us"))
+        .cast(pa.string())
+    )
+    return (pc.binary_join_element_wise(instants, "Z", "") if column.type.tz else instants).fill_null("")

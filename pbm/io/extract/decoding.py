@@ -64,6 +64,7 @@ class TextSource:
             self._size = max(path.stat().st_size, 1)
             self._head = self._read(_HEAD)
             self.encoding = encoding or self._encoding_of_head()
+            self._lenient = encoding is None and self.encoding == "utf-8"
         except BaseException:
             self._file.close()
             raise
@@ -87,12 +88,13 @@ class TextSource:
         Raises
         ------
         InputError
-            If the file breaks off, is damaged, is not in its encoding, or has no line ends.
+            If the file is empty, breaks off, is damaged, is not in its encoding, or has no line ends.
         """
-        open_line = b""
+        open_line, any_line = b"", False
         for chunk in self._in_utf8():
             cut = chunk.rfind(b"\n") + 1
             if cut:
+                any_line = True
                 yield open_line + chunk[:cut]
                 open_line = chunk[cut:]
             else:
@@ -103,6 +105,8 @@ class TextSource:
                 )
         if open_line:
             yield open_line + b"\n"
+        elif not any_line:
+            raise self._empty()
 
     def repaired(self, block: bytes, line: int) -> bytes:
         """The block as valid UTF-8; `line` is the number of its first line."""
@@ -119,8 +123,8 @@ class TextSource:
         return block
 
     def _in_utf8(self) -> Iterator[bytes]:
-        old_line_ends = b"\n" not in self._head and b"\r" in self._head and self.encoding == "utf-8"
-        for chunk in self._transcoded() if self.encoding != "utf-8" else self._chunks():
+        old_line_ends = b"\n" not in self._head and b"\r" in self._head and self._lenient
+        for chunk in self._chunks() if self._lenient else self._transcoded():
             yield chunk.replace(b"\r", b"\n") if old_line_ends else chunk
 
     def _transcoded(self) -> Iterator[bytes]:
@@ -149,12 +153,15 @@ class TextSource:
         except OSError as error:
             raise InputError(f"{self._path} cannot be read: {error.strerror}. Nothing was taken.") from None
 
+    def _empty(self) -> InputError:
+        return InputError(f"{self._path} is empty. An extract holds a header line and one line for each result.")
+
     def _encoding_of_head(self) -> str:
         for mark, name in _MARKS:
             if self._head.startswith(mark):
                 return name
         if not self._head.strip():
-            raise InputError(f"{self._path} is empty. An extract holds a header line and one line for each result.")
+            raise self._empty()
         kind = next((name for start, name in _KNOWN if self._head.startswith(start)), "not text")
         if b"\0" in self._head or kind != "not text":
             raise InputError(

@@ -93,6 +93,7 @@ def _parted(block: bytes, heading: Heading) -> tuple[Lines, bytes]:
 
 
 _NO_TEXT = pa.array([], pa.string())
+_REPEATED = pa.dictionary(pa.int32(), pa.string())
 
 
 def _read(block: bytes, heading: Heading, final: bool) -> Lines:
@@ -108,7 +109,8 @@ def _read(block: bytes, heading: Heading, final: bool) -> Lines:
 
 def _regular(block: bytes) -> bool:
     """No quote open at the end (it may close in the next block), and no line end that is not a line feed."""
-    return block.count(b'"') % 2 == 0 and block.count(b"\r") == block.count(b"\r\n")
+    quotes = block.count(b'"') if b'"' in block else 0
+    return quotes % 2 == 0 and (b"\r" not in block or block.count(b"\r") == block.count(b"\r\n"))
 
 
 def _in_one_go(block: bytes, heading: Heading, count: int) -> Lines | None:
@@ -119,6 +121,8 @@ def _in_one_go(block: bytes, heading: Heading, count: int) -> Lines | None:
         bad.append((row.number - 1, *fault(row.text.strip(), row.actual_columns, heading.width)))
         return "skip"
 
+    # Different in nearly every row; the texts of the others come again and again, and are told apart while they are read.
+    plain = {heading.places[role] for role in ("time", "specimen") if role in heading.places}
     places = sorted(set(heading.places.values()))
     try:
         table = pv.read_csv(
@@ -129,10 +133,13 @@ def _in_one_go(block: bytes, heading: Heading, count: int) -> Lines | None:
                 column_names=[str(place) for place in range(heading.width)],
             ),
             parse_options=pv.ParseOptions(
-                delimiter=heading.delimiter, ignore_empty_lines=False, invalid_row_handler=wrong
+                delimiter=heading.delimiter,
+                ignore_empty_lines=False,
+                quote_char='"' if b'"' in block else False,
+                invalid_row_handler=wrong,
             ),
             convert_options=pv.ConvertOptions(
-                column_types={str(place): pa.string() for place in places},
+                column_types={str(place): pa.string() if place in plain else _REPEATED for place in places},
                 include_columns=[str(place) for place in places],
                 strings_can_be_null=False,
                 check_utf8=False,

@@ -5,6 +5,7 @@ birth date of a patient is stored.
 import hashlib
 import re
 from collections.abc import Callable
+from functools import lru_cache
 
 import pyarrow as pa
 
@@ -13,6 +14,8 @@ from pbm.stages.intake.sieve import Codes, Sieve
 
 # "61", "61 Y", "3.5 months"; a date has more digits or other signs.
 _AGE = re.compile(r"\d{1,3}([.,]\d+)?( ?[A-Za-z]{1,6})?")
+
+_REMEMBERED = 65_536  # tokens of patients: most come again within days
 
 
 class Covariates:
@@ -27,6 +30,7 @@ class Covariates:
     def __init__(self, patient_key: bytes) -> None:
         self.ages_refused = 0
         self._key = patient_key
+        self._token = lru_cache(_REMEMBERED)(self._token_of)
 
     def kept(self, sieve: Sieve, rows: Codes) -> list[pa.Array]:
         """The covariates of some rows, in the order of `COVARIATES`; "" where there is none."""
@@ -47,5 +51,5 @@ class Covariates:
             pa.array(codes[rows])
         )
 
-    def _token(self, patient: str) -> str:
+    def _token_of(self, patient: str) -> str:
         return hashlib.blake2b(patient.encode(), digest_size=8, key=self._key).hexdigest() if patient else ""

@@ -35,12 +35,16 @@ class Sieve:
         """The text of some rows without spaces around it; "" if the extract has no such column."""
         if not self.has(role):
             return pa.repeat("", len(rows))
+        if pa.types.is_dictionary(self._block.columns[role].type):
+            codes, texts = self.encoded(role)
+            return pa.array(texts, pa.string()).take(pa.array(codes[rows]))
         return pc.utf8_trim_whitespace(self._block.columns[role].take(pa.array(rows)))
 
     def encoded(self, role: str) -> tuple[Codes, list[str]]:
         """A column as codes into the list of its different texts, which have no spaces around them."""
         if role not in self._encoded:
-            found = self._block.columns[role].dictionary_encode()
+            column = self._block.columns[role]
+            found = column if pa.types.is_dictionary(column.type) else column.dictionary_encode()
             numbers: dict[str, int] = {}
             merged = np.array(
                 [numbers.setdefault(text.strip(), len(numbers)) for text in found.dictionary.to_pylist()], np.int64

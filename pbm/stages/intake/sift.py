@@ -31,32 +31,33 @@ def sift(name: StreamName, results: pa.Table, repeat_hours: float) -> Sifted:
     repeat_hours
         A patient's results count at most once in so many hours; 0: all of them count.
     """
-    results = results.take(np.argsort(_numbers(results, "time"), kind="stable"))
     time = _numbers(results, "time")
+    order = np.argsort(time, kind="stable")
+    time = time[order]
     every = np.arange(len(time))
     duplicate, rerun, repeat = every.copy(), every.copy(), every.copy()
 
     specimen, without = _codes(results, "specimen")
-    bare = every[specimen == without]
-    duplicate[bare] = bare[_resent(results.take(bare))]
-    marked = every[specimen != without]
-    first_run = marked[_first_within(specimen[marked], time[marked], RERUN_HOURS)]
-    duplicate[marked] = marked[_alike(first_run, *_measured(results.take(marked)))[0]]
-    rerun[marked] = first_run
+    bare = every[specimen[order] == without]
+    duplicate[bare] = bare[_resent(results.take(order[bare]))]
+    marked = every[specimen[order] != without]
+    rerun[marked] = marked[_first_within(specimen[order[marked]], time[marked], RERUN_HOURS)]
+    again = _groups_of_several(rerun)
+    duplicate[again] = again[_alike(rerun[again], *_measured(results.take(order[again])))[0]]
 
     if repeat_hours:
         patient, unknown = _codes(results, "patient")
-        known = every[(patient != unknown) & (duplicate == every) & (rerun == every)]
-        repeat[known] = known[_first_within(patient[known], time[known], repeat_hours)]
+        known = every[(patient[order] != unknown) & (duplicate == every) & (rerun == every)]
+        repeat[known] = known[_first_within(patient[order[known]], time[known], repeat_hours)]
     reasons = {
         "duplicate": duplicate,
         "rerun of the specimen": rerun,
         f"same patient within {repeat_hours:g} h": repeat,
     }
-    return _parted(name, results, reasons)
+    return _parted(name, results, order, reasons)
 
 
-def _parted(name: StreamName, results: pa.Table, reasons: dict[str, Rows]) -> Sifted:
+def _parted(name: StreamName, results: pa.Table, order: Rows, reasons: dict[str, Rows]) -> Sifted:
     """Rows that give way to no other are kept; the first reason of the others is told, with the row that counts instead."""
     every = np.arange(len(results))
     kept = np.ones(len(results), np.bool_)
@@ -64,8 +65,8 @@ def _parted(name: StreamName, results: pa.Table, reasons: dict[str, Rows]) -> Si
     for reason, instead in reasons.items():
         rows = every[kept & (instead != every)]
         kept[rows] = False
-        left.append(_left_out(name, results.take(rows), reason, results.take(instead[rows])))
-    return Sifted(results.filter(pa.array(kept)), pa.concat_tables(left))
+        left.append(_left_out(name, results.take(order[rows]), reason, results.take(order[instead[rows]])))
+    return Sifted(results.take(order[kept]), pa.concat_tables(left))
 
 
 def _left_out(name: StreamName, rows: pa.Table, reason: str, instead: pa.Table) -> pa.Table:
@@ -96,10 +97,16 @@ def _alike(*keys: Keys) -> tuple[Rows, Rows]:
     return first, before
 
 
+def _groups_of_several(leader: Rows) -> Rows:
+    """The rows that share their leader with others."""
+    size = np.bincount(leader, minlength=1)
+    return np.flatnonzero(size[leader] > 1)
+
+
 def _first_within(who: Rows, time: Rows, hours: float) -> Rows:
     """For each row the row that counts for it: the first of the same `who`, or the first after more than so many hours since that."""
     counts = np.arange(len(who))
-    several = np.flatnonzero(np.bincount(who, minlength=1)[who] > 1)
+    several = _groups_of_several(who)
     several = several[np.argsort(who[several], kind="stable")]
     instead, leader, last, since = [], -1, -1, 0
     for row, one, at in zip(several.tolist(), who[several].tolist(), time[several].tolist(), strict=True):

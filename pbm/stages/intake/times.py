@@ -11,6 +11,7 @@ import numpy as np
 import numpy.typing as npt
 import pandas as pd
 import pyarrow as pa
+import pyarrow.compute as pc
 
 from pbm.errors import InputError
 from pbm.records.as_written import EARLIEST, LATEST, read_time
@@ -22,6 +23,11 @@ Mask = npt.NDArray[np.bool_]
 READ, NOT_A_TIME, SKIPPED = 0, 1, 2
 _BAD, _LOCAL, _ABSOLUTE = 0, 1, 2
 _DAY = 86_400_000_000
+_WALL = r"^\d{4}-\d\d-\d\d[T ]\d\d:\d\d(:\d\d(\.\d{1,6})?)?"
+_FORMS = (
+    (f"{_WALL}$", pa.timestamp("us"), _LOCAL),
+    (rf"{_WALL}(Z|[+-]\d\d(:?\d\d)?)$", pa.timestamp("us", tz="UTC"), _ABSOLUTE),
+)
 _NEAR = 100  # lines: ambiguous times further apart than this in the file are not read as one sequence
 _EPOCH, _MICROSECOND = datetime(1970, 1, 1), timedelta(microseconds=1)
 _EARLIEST, _LATEST = (EARLIEST - _EPOCH) // _MICROSECOND, (LATEST - _EPOCH) // _MICROSECOND
@@ -103,18 +109,29 @@ class WallClock:
 
 
 def _in_iso(texts: pa.Array) -> tuple[Micros, Kinds]:
-    # Arrow reads all or nothing: try without offset, then with; a mixture goes one by one.
-    for written, kind in ((pa.timestamp("us"), _LOCAL), (pa.timestamp("us", tz="UTC"), _ABSOLUTE)):
-        try:
-            return np.array(texts.cast(written).cast(pa.int64())), np.full(len(texts), kind, np.int8)
-        except pa.ArrowInvalid:
-            continue
     micros, kinds = np.zeros(len(texts), np.int64), np.zeros(len(texts), np.int8)
-    for row, text in enumerate(texts.to_pylist()):
+    rest = np.arange(len(texts))
+    for form, written, kind in _FORMS if _is_local(texts) else reversed(_FORMS):
+        some = texts if len(rest) == len(texts) else texts.take(pa.array(rest))
+        fits = np.array(pc.match_substring_regex(some, form), np.bool_)
+        try:
+            # Arrow reads all or nothing, and is slow to refuse: it gets only what looks right.
+            micros[rest[fits]] = np.array(some.filter(pa.array(fits)).cast(written).cast(pa.int64()))
+        except pa.ArrowInvalid:
+            continue  # such as 30 February
+        kinds[rest[fits]] = kind
+        rest = rest[~fits]
+    for row, text in zip(rest.tolist(), texts.take(pa.array(rest)).to_pylist(), strict=True):
         if found := read_time(text):
             kinds[row] = _LOCAL if found.tzinfo is None else _ABSOLUTE
             micros[row] = (found.replace(tzinfo=None) - _EPOCH - (found.utcoffset() or timedelta())) // _MICROSECOND
     return micros, kinds
+
+
+def _is_local(texts: pa.Array) -> bool:
+    """Whether the first time that can be read has no offset."""
+    found = next(filter(None, (read_time(text.as_py()) for text in texts)), None)
+    return found is not None and found.tzinfo is None
 
 
 def _in_format(texts: pa.Array, time_format: str) -> tuple[Micros, Kinds]:
