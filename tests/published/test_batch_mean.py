@@ -36,9 +36,7 @@ def test_worked_batches() -> None:
     published("first worked batch, P = 1/2", SOURCE, 90.002373169401, after(np.array(FIRST), 90.0), 1e-12)
     published("first worked batch, P = 1 (its mean)", SOURCE, 89.715, after(np.array(FIRST), 90.0, 1.0), 1e-12)
     for exponent, printed in ((0.5, "29.992451842"), (0.66, "29.943198925"), (1.0, "29.635")):
-        published(
-            f"second worked batch, P = {exponent:g}", SOURCE, expected, after(np.array(SECOND), 30.0, exponent), 0
-        )
+        published(f"second worked batch, P = {exponent:g}", SOURCE, printed, after(np.array(SECOND), 30.0, exponent), 0)
 
 
 @pytest.mark.parametrize(
