@@ -65,6 +65,23 @@ def _alarms_loop() -> Callable[..., Any]:
     return compiled(loop)
 
 
+@cache
+def _count_loop() -> Callable[..., Any]:
+    law = compiled(judge)
+
+    def loop(path: Floats, low: float, high: float, centre: float, rearm: float) -> int:
+        found = 0
+        episode = 0
+        for s in path:
+            after = law(episode, s, low, high, centre, rearm)
+            if episode == 0 and after != 0:
+                found += 1
+            episode = after
+        return found
+
+    return compiled(loop)
+
+
 @dataclass(frozen=True, slots=True)
 class Episodes:
     """Alarms on a path of the statistic, one element each: index at which it opened, side (+1, -1) and furthest value."""
@@ -92,3 +109,8 @@ def episodes(path: Floats, limits: Limits) -> Episodes:
     found = _alarms_loop()(path, *limits, opened, peaks)
     at = np.flatnonzero(opened)
     return Episodes(at, opened[at], peaks[:found].copy())
+
+
+def count_episodes(path: Floats, limits: Limits) -> int:
+    """Number of episodes on a path of the statistic, shape (n,)."""
+    return int(_count_loop()(path, *limits))

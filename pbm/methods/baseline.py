@@ -3,8 +3,8 @@
     z = y - b(ward, hour of week),   b = effect of the ward + effect of the hour
 
 The additive effects are fitted on the means of all ward-hour cells, weighted by their counts, and shrunk towards 0 where a ward or an
-hour is thin: an effect with sampling variance s^2 / n among effects with variance t^2 is multiplied by t^2 / (t^2 + s^2 / n). A ward never seen in
-training has effect 0. The table is part of the plan and is never refitted silently.
+hour is thin: an effect with sampling variance s^2 / n among effects with variance t^2 is multiplied by t^2 / (t^2 + s^2 / n). A ward
+never seen in training has effect 0. The table is part of the plan and is never refitted silently.
 
 Source of the adjustment: "Regression-adjusted real-time quality control", Clinical Chemistry 2021;67:1342-50 (from memory). Source of the
 shrinkage: "Data analysis using Stein's estimator and its generalizations", Journal of the American Statistical Association 1975;70:311-319.
@@ -95,20 +95,15 @@ def fit_baseline(y: Floats, mix: Mix) -> Baseline:
 def _effects(
     mean: Floats, count: Integers, ward: Integers, hour: Integers, shape: tuple[int, int]
 ) -> tuple[Floats, Floats]:
-    """Additive effects of wards and hours on cell means, by weighted least squares; 0 for the first ward and for hours never seen."""
-    import warnings
+    """Additive effects of wards and hours on cell means, by weighted least squares.
 
-    from statsmodels.regression.linear_model import WLS
-
-    wards, hours = np.unique(ward)[1:], np.unique(hour)
-    design = np.hstack([ward[:, None] == wards[None, :], hour[:, None] == hours[None, :]]).astype(float)
-    with warnings.catch_warnings():
-        # Wards that never share an hour leave the effects undetermined; the smallest ones, which statsmodels takes, are what is wanted.
-        warnings.filterwarnings("ignore", message="The design matrix is rank-deficient")
-        found = WLS(mean, design, weights=count).fit().params
-    ward_effects, hour_effects = np.zeros(shape[0]), np.zeros(shape[1])
-    ward_effects[wards], hour_effects[hours] = found[: len(wards)], found[len(wards) :]
-    return ward_effects, hour_effects
+    The normal equations of all effects are singular by one (a constant may move between wards and hours), or by more where wards never
+    share an hour; their smallest solution is taken.
+    """
+    design = np.hstack([np.eye(shape[0])[ward], np.eye(shape[1])[hour]])
+    weighted = design * count[:, None]
+    found: Floats = np.linalg.lstsq(design.T @ weighted, weighted.T @ mean, rcond=1e-10)[0].astype(np.float64)
+    return found[: shape[0]], found[shape[0] :]
 
 
 def _centred(effects: Floats, counts: Integers) -> Floats:

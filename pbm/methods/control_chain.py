@@ -42,7 +42,8 @@ def _expansion_loop() -> Callable[..., Any]:
         for s in range(len(states)):
             for t in range(len(values)):
                 row = s * len(values) + t
-                after[row] = states[s]
+                for c in range(after.shape[1]):  # a copy of whole rows takes numba three seconds longer to compile
+                    after[row, c] = states[s, c]
                 passed[row] = 1 if law(after[row], values[t], *judge) else 0
                 for c in range(after.shape[1]):
                     r = c // per_rule

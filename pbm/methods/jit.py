@@ -67,7 +67,10 @@ def _until_loop(step: Step) -> Callable[..., Any]:
     ) -> None:
         state = np.empty(states.shape[1])
         for j in range(len(starts)):
-            state[:] = states[j]
+            for c in range(
+                len(state)
+            ):  # element by element: a copy of a whole row takes numba seconds longer to compile
+                state[c] = states[j, c]
             found[j] = -1
             for i in range(starts[j], ends[j]):
                 if xs[i] == xs[i]:
@@ -90,7 +93,8 @@ def _states_loop(step: Step) -> Callable[..., Any]:
                 if xs[i] == xs[i]:
                     law(state, xs[i], par)
                 i += 1
-            out[j] = state
+            for c in range(len(state)):
+                out[j, c] = state[c]
 
     return compiled(loop)
 

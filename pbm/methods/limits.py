@@ -22,7 +22,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from pbm.methods.alarm import Episodes, Limits, episodes
+from pbm.methods.alarm import Limits, count_episodes, episodes
 from pbm.methods.chain import Tracker
 from pbm.methods.jit import Floats, Integers
 
@@ -75,18 +75,13 @@ def tail_of(path: Floats, centre: float, side: int, expected: float) -> Tail | N
     inner, outer = max(float(np.quantile(judged, 0.75)), 0.01 * top), top
     for _ in range(TAIL_SEARCH):
         middle = (inner + outer) / 2
-        enough = len(_beyond(outward, middle)) >= wanted
+        enough = count_episodes(outward, Limits(-math.inf, middle, 0.0, REARM)) >= wanted
         inner, outer = (middle, outer) if enough else (inner, middle)
     return _tail_beyond(outward, _between_values(judged, inner))
 
 
-def _beyond(outward: Floats, distance: float) -> Episodes:
-    """Episodes beyond a distance of a path given as distances from the centre."""
-    return episodes(outward, Limits(-math.inf, distance, 0.0, REARM))
-
-
 def _tail_beyond(outward: Floats, threshold: float) -> Tail | None:
-    found = _beyond(outward, threshold)
+    found = episodes(outward, Limits(-math.inf, threshold, 0.0, REARM))
     excess = float((found.peak - threshold).mean()) if len(found) else 0.0
     return Tail(threshold, len(found), excess) if excess > 0 else None
 

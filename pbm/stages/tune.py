@@ -4,6 +4,7 @@ The first two thirds of the days train, the last third is held out. Candidates a
 schedule present (methods/search.py); the winner's limits come from the day-block bootstrap (methods/limits.py).
 """
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from datetime import date, timedelta
 from functools import partial
@@ -180,7 +181,7 @@ class _Tuning:
             return None
         score = scores(training, runners, self.trials(training, FIRST_ONSETS), self.stopper(training))
         finalists = best_of(runners, score, FINALISTS)
-        finalists += limited(training, [_with_baseline(r.candidate, training) for r in finalists], self.expected)
+        finalists += limited(training, _with_baseline([r.candidate for r in finalists], training), self.expected)
         score = scores(training, finalists, self.trials(training, ONSETS), self.stopper(training))
         return finalists[simplest_near_best(finalists, score)]
 
@@ -256,9 +257,13 @@ class _Tuning:
         )
 
 
-def _with_baseline(candidate: Candidate, training: Stretch) -> Candidate:
-    y = candidate.preparation.transformed(training.value, training.censor)
-    return replace(candidate, preparation=replace(candidate.preparation, baseline=fit_baseline(y, training.mix)))
+def _with_baseline(given: Sequence[Candidate], training: Stretch) -> list[Candidate]:
+    """The same candidates with a patient-mix baseline, fitted once for each preparation."""
+    fitted = {
+        plain: fit_baseline(plain.transformed(training.value, training.censor), training.mix)
+        for plain in {candidate.preparation for candidate in given}
+    }
+    return [replace(c, preparation=replace(c.preparation, baseline=fitted[c.preparation])) for c in given]
 
 
 def _in_plan(baseline: Baseline | None) -> BaselinePlan | None:
