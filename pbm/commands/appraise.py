@@ -93,18 +93,20 @@ def _kept(appraisal: "Appraisal") -> bool:
 def _told(appraisal: "Appraisal", reports: Path) -> str:
     from pbm.commands.tables import table
 
-    head = ["stream", "verdict", "worst case unreliable: alone -> with monitor", "of these final", "held-out alarms"]
-    rows = [_row(s) for s in appraisal.streams]
-    caution = (
-        "Expected counts are model figures that depend on TEa, analytic SD and the history given. The monitor supplements\n"
-        "control materials and never replaces them; limits and actions are the laboratory director's decision."
+    rows = [_row(s) for s in appraisal.streams if s.monitors]
+    without = [f"{s.stream}: {s.verdict}: {s.reason}" for s in appraisal.streams if not s.monitors]
+    explained = (
+        "Unreliable results expected from one error until it is found, at the size where that is worst: the controls alone ->\n"
+        "with the monitor; and those of them released before the last accepted control event. They are model figures that\n"
+        "depend on TEa, analytic SD and the history given. The monitor supplements control materials and never replaces\n"
+        "them; limits and actions are the laboratory director's decision under local regulation."
     )
-    return f"{table(head, rows)}\n\n{caution}\nReport: {reports / 'appraisal.html'}"
+    head = ["stream", "verdict", "unreliable results", "of these final", "held-out alarms"]
+    parts = [table(head, rows)] * bool(rows) + ["\n".join(without)] * bool(without)
+    return "\n\n".join([*parts, explained, f"Report: {reports / 'appraisal.html'}"])
 
 
 def _row(stream: "StreamAppraisal") -> list[str]:
-    if not stream.monitors:
-        return [stream.stream, stream.verdict, stream.reason, "-", "-"]
     judged = stream.monitors[0]
     alarms = judged.false_alarms
     kept = "kept" if alarms.kept else "NOT KEPT"
@@ -119,4 +121,4 @@ def _row(stream: "StreamAppraisal") -> list[str]:
 
 def _pair(worst: "WorstCase") -> str:
     fewer = 1 - worst.with_monitor.value / worst.alone.value if worst.alone.value > 0 else 0.0
-    return f"{worst.alone.value:.1f} -> {worst.with_monitor.value:.1f} ({fewer:.0%} fewer)"
+    return f"{worst.alone.value:.3g} -> {worst.with_monitor.value:.3g} ({fewer:.0%} fewer)"

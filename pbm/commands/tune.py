@@ -74,14 +74,17 @@ def _merged(folder: LabFolder, tuned: "dict[str, StreamPlan]", seed: int, *, kee
 def _told(path: Path, streams: "dict[str, StreamPlan]") -> str:
     from pbm.commands.tables import table
 
-    rows = [[name, s.verdict, _in_words(s), _held_out(s), s.reason] for name, s in streams.items()]
-    return f"{table(['stream', 'verdict', 'monitor', 'held-out alarms', 'why'], rows)}\n\nWritten: {path}"
+    rows = [[name, s.verdict, _in_brief(s), _held_out(s)] for name, s in streams.items()]
+    why = [f"{name}: {s.verdict}: {s.reason}" for name, s in streams.items() if s.verdict != "useful"]
+    return "\n".join(
+        [table(["stream", "verdict", "monitor", "held-out alarms"], rows), "", *why, "", f"Written: {path}"]
+    )
 
 
-def _in_words(stream: "StreamPlan") -> str:
-    from pbm.stages.words import monitor_in_words
+def _in_brief(stream: "StreamPlan") -> str:
+    from pbm.stages.words import monitor_in_brief
 
-    return "; ".join(monitor_in_words(m, stream.unit) for m in stream.monitors) or "none"
+    return "; ".join(monitor_in_brief(m) for m in stream.monitors) or "none"
 
 
 def _held_out(stream: "StreamPlan") -> str:

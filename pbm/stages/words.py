@@ -15,6 +15,18 @@ def monitor_in_words(monitor: MonitorPlan, unit: str) -> str:
     return f"{title}, {parameter}, {admitted_in_words(monitor.admit, unit)}{SCALES[monitor.transform]}{mix}"
 
 
+def monitor_in_brief(monitor: MonitorPlan) -> str:
+    """A monitor in as few words as a table bears, such as "EWMA 0.05, 125 to 155, log, mix"."""
+    title = TITLES.get(monitor.statistic, monitor.statistic)
+    parameter = monitor.weight if monitor.weight is not None else monitor.window
+    low = "" if monitor.admit.low is None else f"{monitor.admit.low:g}"
+    high = "" if monitor.admit.high is None else f"{monitor.admit.high:g}"
+    parts = [f"{title} {parameter:g}" if parameter is not None else title]
+    parts += [f"{low} to {high}".strip()] * bool(low or high)
+    parts += [{"none": "", "log": "log", "boxcox": "Box-Cox"}[monitor.transform]] * (monitor.transform != "none")
+    return ", ".join(parts + ["mix"] * (monitor.baseline is not None))
+
+
 def admitted_in_words(admit: Admit, unit: str) -> str:
     """Which results a monitor takes."""
     if admit.low is None and admit.high is None:
