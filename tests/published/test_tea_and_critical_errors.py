@@ -36,7 +36,7 @@ def test_critical_systematic_error_counts_both_tails() -> None:
 
 
 def test_critical_random_error_is_sigma_over_1_96() -> None:
-    """Multiple of the SD at which 5 % of results exceed TEa. REPRO, printed with 1.96 for 1.959964: 2e-5 of the figure is allowed for it."""
+    """Multiple of the SD at which 5 % of results exceed TEa. REPRO, with 1.96 for 1.959964 (2e-5 allowed)."""
     for sigma, figure in lines(values.CRITICAL_MULTIPLE):
         ours = float(brentq(lambda multiple, s=float(sigma): beyond(s, 0.0, multiple) - 0.05, 1.0, 10.0, xtol=1e-12))
         published(f"critical random error: sigma {sigma}", values.SOURCE, figure, ours, 2e-5 * float(figure))

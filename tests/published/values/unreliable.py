@@ -25,3 +25,19 @@ CRITICAL_MULTIPLE = """
 4 | 2.0408
 6 | 3.0612
 """
+
+LARGEST_SOURCE = "independent maximisation over the shift; model of Clin Chem 1997;43:2149-54 and 2016;62:959-65"
+# rules | controls | sigma | worst shift (SD) | largest E(Nuf)/M | M at which the largest E(Nuf) is 1
+LARGEST = """
+1-3s                           | 2 | 4 | 2.1791 | .0476824  | 20.97
+1-3s                           | 2 | 5 | 2.9430 | .00474942 | 210.55
+1-3s                           | 4 | 4 | 1.770  | .017713   | 56.5
+1-3s                           | 4 | 5 | 2.385  | .001143   | 875
+1-3s 2-2s R-4s-opposite        | 2 | 4 | 1.930  | .026185   | 38.2
+1-3s 2-2s R-4s-opposite        | 2 | 5 | 2.705  | .002106   | 475
+1-3s 2-2s R-4s-opposite        | 2 | 6 | 3.305  | .000127   | 7846
+1-3s 2-2s R-4s-opposite 4-1s   | 4 | 3 | .795   | .087902   | 11.4
+1-3s 2-2s R-4s-opposite 4-1s   | 4 | 4 | 1.235  | .005557   | 180
+1-3s 2-2s R-4s-opposite 4-1s   | 4 | 5 | 1.870  | .000223   | 4488
+1-2.5s                         | 2 | 4.5 | -    | .004748   | -
+"""
