@@ -246,6 +246,17 @@ def test_limits_of_a_cusum_further_apart_than_two_to_one_can_hide_the_smaller_su
     assert down_first.path(u).tolist() == [-9.0, -5.0], "the upper sum stands at 4 and is not shown"
 
 
+@pytest.mark.parametrize("name", [name for name in TRACKERS if "window" in TRACKERS[name].named])
+def test_a_window_is_never_judged_before_it_is_full(name: str) -> None:
+    window = int(TRACKERS[name].named["window"])
+    judged = ~np.isnan(TRACKERS[name].path(stream(12, 3 * window)))
+    assert np.flatnonzero(judged)[0] == window - 1
+    if TRACKERS[name].statistic == "batch":
+        assert np.flatnonzero(judged).tolist() == [window - 1, 2 * window - 1, 3 * window - 1]
+    else:
+        assert judged[window - 1 :].all()
+
+
 @pytest.mark.parametrize("name", ["mean", "median", "sd", "share"])
 def test_a_far_value_leaves_nothing_behind_once_it_has_left_the_window(name: str) -> None:
     more = {"share": (135.0, 145.0)}.get(name, ())

@@ -37,8 +37,8 @@ def shifted(shift: float, count: int) -> Floats:
     return np.add(_normals("zero state", WHOLE)[:count], shift, out=_bench()[:count])
 
 
-def mean(lengths: Integers) -> Mean:
-    """Mean of run lengths."""
+def mean(lengths: Integers | Floats) -> Mean:
+    """Mean of run lengths or of other independent figures."""
     return Mean(float(lengths.mean()), float(lengths.std() / np.sqrt(len(lengths))))
 
 

@@ -8,7 +8,7 @@ import pytest
 from pbm.methods.chain import Tracker
 from pbm.methods.jit import Floats
 from tests.published.record import published
-from tests.published.simulated import Average, normals
+from tests.published.simulation import SHARP, WHOLE, mean, shifted
 
 SOURCE = "law: Am J Clin Pathol 1974;61:473-481 (MEM), exponent .66 READ-ABS; figure by independent computation (REPRO)"
 FIRST = (
@@ -47,16 +47,16 @@ def test_stationary_spread_and_correlation_on_normal_values(
     size: int, exponent: float, sd: float, correlation: float
 ) -> None:
     """Simulated figures of a million batches, good to .3 %."""
-    tracker, parts = Tracker("batch", size, 0.0, (exponent,)), 4
-    estimates = [tracker.path(normals(part))[size - 1 :: size][100:] for part in range(parts)]
-    # Batches further apart than about 50 share nothing, so that means over blocks are independent figures.
-    blocks = [b[: len(b) // 200 * 200].reshape(-1, 200) for b in estimates]
-    square = Average.of(np.concatenate([(b**2).mean(axis=1) for b in blocks]))
-    product = Average.of(np.concatenate([(b[:, 1:] * b[:, :-1]).mean(axis=1) for b in blocks]))
+    z = shifted(0.0, WHOLE // 4)
+    estimates = Tracker("batch", size, 0.0, (exponent,)).path(z)[size - 1 :: size]
+    # Estimates further apart than about 50 batches share nothing, so that means over blocks are independent figures.
+    blocks = estimates[200 : len(estimates) // 200 * 200].reshape(-1, 200)
+    square = mean((blocks**2).mean(axis=1))
+    product = mean((blocks[:, 1:] * blocks[:, :-1]).mean(axis=1))
     ours = math.sqrt(square.value)
     name = f"N={size}, P={exponent:g}"
-    published(f"SD of the estimate, {name}", SOURCE, sd, ours, square.allowed / (2 * ours) + 0.003 * sd)
-    allowed = product.allowed / square.value + 0.003
+    published(f"SD of the estimate, {name}", SOURCE, sd, ours, SHARP * square.error / (2 * ours) + 0.003 * sd)
+    allowed = SHARP * product.error / square.value + 0.003
     published(
         f"correlation of successive estimates, {name}", SOURCE, correlation, product.value / square.value, allowed
     )
@@ -64,13 +64,17 @@ def test_stationary_spread_and_correlation_on_normal_values(
 
 def test_answer_of_the_first_batch_to_a_shift() -> None:
     """Twenty values, P = 1/2, the estimate starts at the old level: only 27 % of a small shift is followed in one batch."""
-    tracker, z = Tracker("batch", 20, 0.0, (0.5,)), normals(0).reshape(-1, 20)[:20_000]
+    tracker, z = Tracker("batch", 20, 0.0, (0.5,)), shifted(0.0, 400_000).reshape(-1, 20)
     exact = 2**-0.25 * math.gamma(0.25) / math.sqrt(math.pi)
     exact *= math.sqrt(2 / math.pi) * math.sqrt(math.sqrt(2 / math.pi) / 20)
     published("slope at small shifts, closed form", SOURCE, 0.2741, exact, 5e-5)
     for shift, expected in ((0.05, 0.0137), (0.1, 0.0280), (0.25, 0.0795), (0.5, 0.2132), (1.0, 0.6611), (2.0, 1.8175)):
         up, down = (np.array([tracker.path(batch + s)[-1] for batch in z]) for s in (shift, -shift))
-        ours = Average.of((up - down) / 2)  # the same batches shifted both ways: most of the chance cancels
+        ours = mean((up - down) / 2)  # the same batches shifted both ways: most of the chance cancels
         published(
-            f"mean answer to a shift of {shift:g} SD", SOURCE, expected, ours.value, ours.allowed + 0.01 * expected
+            f"mean answer to a shift of {shift:g} SD",
+            SOURCE,
+            expected,
+            ours.value,
+            SHARP * ours.error + 0.01 * expected,
         )

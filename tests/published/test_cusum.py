@@ -7,10 +7,10 @@ import pytest
 
 from pbm.methods.chain import Tracker
 from tests.published.record import published
-from tests.published.simulated import average_run_length, average_run_length_upwards
+from tests.published.simulation import SHARP, WHOLE, Mean, mean, shifted
 from tests.published.values import cusum as values
 
-IN_CONTROL_PARTS = 10
+SHORT = WHOLE // 10
 
 
 def scheme(reference: float) -> Tracker:
@@ -18,12 +18,27 @@ def scheme(reference: float) -> Tracker:
     return Tracker("cusum", reference, 0.0, (0.0, 1.0))
 
 
+def two_sided(tracker: Tracker, h: float, shift: float, count: int, begin: tuple[float, float] = (0.0, 0.0)) -> Mean:
+    """Values from the begin of a run to the alarm, the shift there from the first on."""
+    return mean(np.diff(tracker.run_ends(shifted(shift, count), -h, h, np.array(begin)), prepend=-1))
+
+
+def one_sided(tracker: Tracker, h: float, shift: float, count: int) -> Mean:
+    """Values between alarms of the upper sum while the lower runs beside it.
+
+    When one sum crosses, the other stands at 0, so that starting both again changes nothing for the other.
+    """
+    z = shifted(shift, count)
+    ends = tracker.run_ends(z, -h, h)
+    return mean(np.diff(ends[z[ends] > 0], prepend=-1))
+
+
 def test_the_worked_example_of_the_handbook() -> None:
     """Target 325, k = .3175, h = 4.1959: both sums, the first alarm at mean 14, and the plain sum of deviations."""
     source, tracker = values.HANDBOOK_SOURCE, Tracker("cusum", 0.3175, 0.0, (325.0, 1.0))
     state, sums, shown = tracker.start(), [], []
-    for mean in values.HANDBOOK_MEANS:
-        shown.append(tracker.law.step(state, mean, tracker.par))
+    for z in values.HANDBOOK_MEANS:
+        shown.append(tracker.law.step(state, z, tracker.par))
         sums.append(tuple(state))
     for place, expected in enumerate(values.HANDBOOK_UPPER_FROM_13, start=13):
         published(f"upper sum at mean {place}", source, expected, sums[place - 1][0], 1e-9)
@@ -45,23 +60,20 @@ def test_average_run_length_of_the_two_sided_scheme_with_and_without_a_head_star
     h: float, head_start: float, source: str, printed: str, exact: str
 ) -> None:
     """k = .5, shift from the first value on; every run of the simulation is a run of the tool's own monitor."""
-    begin = np.full(2, head_start)
     for shift, print_, value in zip(values.SHIFTS, printed.split(), exact.split(), strict=True):
-        parts = IN_CONTROL_PARTS if shift == 0 else 1
-        ours = average_run_length(scheme(0.5), -h, h, shift, parts, begin)
+        ours = two_sided(scheme(0.5), h, shift, SHORT if shift else WHOLE, (head_start, head_start))
         quantity = f"ARL, h={h:g}, head start {head_start:g}, shift {shift:g}"
-        published(quantity, source, print_, ours.value, ours.allowed)
-        published(quantity, values.REPRO_SOURCE, value, ours.value, ours.allowed)
+        published(quantity, source, print_, ours.value, SHARP * ours.error)
+        published(quantity, values.REPRO_SOURCE, value, ours.value, SHARP * ours.error)
 
 
 @pytest.mark.parametrize(("h", "exact"), values.ONE_SIDED, ids=["h=4", "h=5"])
 def test_one_sided_run_lengths_are_those_between_upper_alarms(h: float, exact: str) -> None:
     """In control a one-sided scheme runs twice as long as the two-sided one: the two must not be confused."""
     for shift, value in zip(values.SHIFTS, exact.split(), strict=True):
-        parts = IN_CONTROL_PARTS if shift == 0 else 1
-        ours = average_run_length_upwards(scheme(0.5), -h, h, shift, parts)
+        ours = one_sided(scheme(0.5), h, shift, SHORT if shift else WHOLE)
         published(
-            f"one-sided ARL, k=.5, h={h:g}, shift {shift:g}", values.REPRO_SOURCE, value, ours.value, ours.allowed
+            f"one-sided ARL, k=.5, h={h:g}, shift {shift:g}", values.REPRO_SOURCE, value, ours.value, SHARP * ours.error
         )
 
 
@@ -74,20 +86,21 @@ def test_one_sided_run_lengths_of_other_sources(
     k: float, h: float, shift: float, source: str, printed: str, exact: float
 ) -> None:
     """Other references and decision intervals."""
-    parts = IN_CONTROL_PARTS if shift < 0 else 1
-    ours = average_run_length_upwards(scheme(k), -h, h, shift, parts)
-    published(f"one-sided ARL, k={k:g}, h={h:g}, shift {shift:g}", source, printed, ours.value, ours.allowed)
-    published(f"one-sided ARL, k={k:g}, h={h:g}, shift {shift:g}", values.REPRO_SOURCE, exact, ours.value, ours.allowed)
+    ours = one_sided(scheme(k), h, shift, WHOLE if shift < 0 else SHORT)
+    published(f"one-sided ARL, k={k:g}, h={h:g}, shift {shift:g}", source, printed, ours.value, SHARP * ours.error)
+    published(
+        f"one-sided ARL, k={k:g}, h={h:g}, shift {shift:g}", values.REPRO_SOURCE, exact, ours.value, SHARP * ours.error
+    )
 
 
 def test_a_large_shift_with_and_without_a_small_head_start() -> None:
     """k = .25, h = 8, shift 2.5: nearly every run takes four values. READ; the lower sum plays no part."""
     source = "manual page xcusum.arl of the package spc (READ)"
     for head_start, expected in ((0.0, 4.1500836225), (0.1, 4.1061588131)):
-        ours = average_run_length(scheme(0.25), -8.0, 8.0, 2.5, 1, np.array([head_start, 0.0]))
-        published(f"ARL, k=.25, h=8, shift 2.5, start {head_start:g}", source, expected, ours.value, ours.allowed)
-    ours = average_run_length(scheme(0.6), -3.0, 3.0, -0.2)
-    published("ARL, k=.6, h=3, shift -.2", source, "65.4", ours.value, ours.allowed)
+        ours = two_sided(scheme(0.25), 8.0, 2.5, SHORT, (head_start, 0.0))
+        published(f"ARL, k=.25, h=8, shift 2.5, start {head_start:g}", source, expected, ours.value, SHARP * ours.error)
+    ours = two_sided(scheme(0.6), 3.0, -0.2, SHORT)
+    published("ARL, k=.6, h=3, shift -.2", source, "65.4", ours.value, SHARP * ours.error)
 
 
 @pytest.mark.parametrize(("in_control", "half", "quarter"), values.DESIGN)
@@ -96,5 +109,5 @@ def test_decision_intervals_give_the_run_length_they_are_designed_for(
 ) -> None:
     """Two-sided, no shift. REPRO."""
     for k, h in ((0.5, half), (0.25, quarter)):
-        ours = average_run_length(scheme(k), -h, h, parts=4)
-        published(f"ARL in control, k={k:g}, h={h:g}", values.REPRO_SOURCE, in_control, ours.value, ours.allowed)
+        ours = two_sided(scheme(k), h, 0.0, WHOLE)
+        published(f"ARL in control, k={k:g}, h={h:g}", values.REPRO_SOURCE, in_control, ours.value, SHARP * ours.error)
