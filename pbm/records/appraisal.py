@@ -99,8 +99,12 @@ class FaultAppraisal(Found):
     ----------
     label
         The fault in words.
-    kind, size, unit, sign
-        The fault; `size` in `unit`.
+    kind
+        "shift", "drift", "noise" or "sporadic".
+    size, unit
+        Size in this unit ("" for the factor of noise).
+    sign
+        To which side.
     shift
         Its size in the analyte's unit at the median result (None for noise).
     by_first_event
@@ -137,7 +141,7 @@ class WorstCase(Found):
     alone, with_monitor
         The control schedule alone, and with the monitor beside it.
     alone_at, with_monitor_at
-        At which fault.
+        At which fault each is largest.
     """
 
     alone: Figure
@@ -151,8 +155,10 @@ class FalseAlarms(Found):
 
     Attributes
     ----------
-    days, episodes
-        Exposure and count.
+    days
+        Calendar days.
+    episodes
+        Alarms in them.
     allowed
         Episodes that the budget allows in these days.
     interval
@@ -226,14 +232,18 @@ class StreamAppraisal(Found):
 
     Attributes
     ----------
-    stream, unit
-        Name and unit.
+    stream
+        Its name.
+    unit
+        Of its results.
     verdict, reason
         Of the plan.
     results_per_day
         Results a day in the history that made the plan.
-    first_day, last_day, held_out_results
-        The held-out days, and the results in them.
+    first_day, last_day
+        The held-out days.
+    held_out_results
+        Results in them.
     onsets
         Onsets at which each fault was tried.
     horizon_days
@@ -267,8 +277,12 @@ class Appraisal(Found):
     ----------
     version
         Of this layout.
-    made_by, laboratory, seed
-        Version of the tool, name of the laboratory, master seed.
+    made_by
+        Version of the tool.
+    laboratory
+        Its name.
+    seed
+        Master seed.
     history_sha256, plan_sha256, lab_sha256
         What was judged: the history, `plan.toml` and `lab.toml`.
     streams

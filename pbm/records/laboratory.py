@@ -124,7 +124,7 @@ class Alarms(Written):
     budget
         False alarms of one stream.
     fleet_budget
-        False alarms of the whole laboratory together.
+        False alarms of the whole laboratory together; nothing shares it out among the streams yet.
     response_lag
         What is still reported between an alarm and the stop.
     """
@@ -201,9 +201,9 @@ class FaultList(Written):
     signs
         To which side.
     over
-        Of a drift: results until it has grown to its size.
+        Of a drift: results until it has grown to its size; the first affected one if left out.
     share
-        Of a sporadic shift: the share of results that it hits.
+        Of a sporadic shift: the share of results that it hits; all of them if left out.
     weight
         Of these faults in the score by which monitors are chosen.
     """

@@ -36,8 +36,10 @@ class Made(Written):
 
     Attributes
     ----------
-    by, at
-        Version of the tool, and when.
+    by
+        Version of the tool.
+    at
+        When.
     history
         The history.
     seed
@@ -195,8 +197,10 @@ class MonitorPlan(Written):
         What it is meant to find.
     admit
         Which results it takes.
-    transform, transform_lambda
-        What is done to an admitted result; lambda goes with Box-Cox only.
+    transform
+        What is done to an admitted result.
+    transform_lambda
+        Of Box-Cox, and only with it.
     baseline
         Patient mix, if the monitor is adjusted for it.
     statistic
@@ -229,8 +233,10 @@ class MonitorPlan(Written):
         Movement of the mean of admitted values for a unit of true shift.
     inflation
         Variance of a mean of successive values over what independence would give.
-    train, held_out
-        Alarms on the training days and on the held-out days.
+    train
+        Alarms on the training days.
+    held_out
+        Alarms on the held-out days.
     """
 
     watches: Literal["shift", "imprecision"] = "shift"
@@ -277,8 +283,10 @@ class StreamPlan(Written):
     ----------
     unit
         Of the stream.
-    verdict, reason
-        Whether a monitor pays here, and why.
+    verdict
+        Whether a monitor pays here.
+    reason
+        Why.
     results_per_day
         Results a day in the history.
     held_out_from
