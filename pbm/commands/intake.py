@@ -8,7 +8,7 @@ import typer
 from pbm.commands.folder import JsonOption, LabFolder, LabOption
 
 FilesArgument = Annotated[
-    list[Path], typer.Argument(metavar="FILE...", help="Extracts: CSV, CSV.gz or Parquet.", show_default=False)
+    list[Path], typer.Argument(metavar="FILE", help="Extracts: CSV, CSV.gz or Parquet.", show_default=False)
 ]
 
 

@@ -75,7 +75,7 @@ def _sum(account: Account) -> Iterator[str]:
     for reason, count in account.reasons.most_common():
         yield f"  {count:>{width},}  {reason}{_examples(account.found[reason])}"
     if account.displaced:
-        yield f"{account.displaced:,} rows taken before gave way to earlier ones that came only now"
+        yield f"rows taken before that gave way to earlier ones, which came only now: {account.displaced:,}"
 
 
 def _examples(found: Counter[str]) -> str:

@@ -10,7 +10,7 @@ from pathlib import Path
 import pyarrow as pa
 import typer
 
-from pbm.errors import InputError
+from pbm.errors import InputError, one_line
 from pbm.io.extract import extract_fingerprint, open_extract
 from pbm.io.history import read_extracts
 from pbm.io.history_writer import HistoryWriter
@@ -51,6 +51,19 @@ def take(files: list[Path], history: Path, lab: Lab, lab_sha256: str) -> Taken:
     taken = Taken()
     before = read_extracts(history)
     new = _not_taken_yet(files, before, lab_sha256, taken)
+    try:
+        _take_new(new, before, history, lab, lab_sha256, taken)
+    except OSError as error:
+        raise InputError(
+            f"{history} cannot be written: {one_line(error)}. It is as it was; make room or ask for the right to write."
+        ) from None
+    taken.warnings += warnings(taken.account, pooled=lab.extract.analyser is None)
+    return taken
+
+
+def _take_new(
+    new: list[_NewExtract], before: list[TakenExtract], history: Path, lab: Lab, lab_sha256: str, taken: Taken
+) -> None:
     with HistoryWriter(history) as writer, _progress() as progress:
         for number, one in enumerate(new):
             for share in _read(one, lab, writer, taken):
@@ -59,8 +72,6 @@ def take(files: list[Path], history: Path, lab: Lab, lab_sha256: str) -> Taken:
         if not taken.account.taken:
             raise InputError(f"Nothing was taken: {_why_nothing(taken)}. {history} is as it was.")
         writer.put_in_place([*before, *_told(new, taken.account, lab_sha256)])
-    taken.warnings += warnings(taken.account, pooled=lab.extract.analyser is None)
-    return taken
 
 
 def _not_taken_yet(files: list[Path], before: list[TakenExtract], lab_sha256: str, taken: Taken) -> list[_NewExtract]:

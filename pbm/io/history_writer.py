@@ -5,6 +5,7 @@ the scratch file hold of one stream at a time, lets the caller sift it, and writ
 beside the history, which takes the history's place at the end by a rename.
 """
 
+import fcntl
 import json
 import os
 import secrets
@@ -57,7 +58,9 @@ class HistoryWriter:
             kept.rename(folder)
         self._old = folder if folder.is_dir() else None
         self._held = read_extracts(folder)
+        _remove_abandoned(folder)
         self._scratch = Path(tempfile.mkdtemp(dir=folder.parent, prefix=f".{folder.name}-"))
+        self._lock = _locked(self._scratch)
         self._new = self._scratch / "new"
         self._new.mkdir()
         self.patient_key = self._own_key()
@@ -75,6 +78,8 @@ class HistoryWriter:
         self._spool.close()
         self._left_out.close()
         shutil.rmtree(self._scratch, ignore_errors=True)
+        if self._lock is not None:
+            os.close(self._lock)
 
     def add(self, block: ParsedBlock) -> None:
         """Take over a block.
@@ -182,6 +187,25 @@ class HistoryWriter:
         if self._old and (self._old / stream_folder(name) / RESULTS).exists():
             return read_results(self._old, name).cast(RESULT_SCHEMA)
         return RESULT_SCHEMA.empty_table()
+
+
+def _remove_abandoned(folder: Path) -> None:
+    """Remove scratch folders whose intake was killed: nobody holds their lock any more."""
+    for scratch in folder.parent.glob(f".{folder.name}-*"):
+        if (lock := _locked(scratch)) is not None:
+            shutil.rmtree(scratch, ignore_errors=True)
+            os.close(lock)
+
+
+def _locked(scratch: Path) -> int | None:
+    """A lock on a scratch folder, which ends with the process however that ends; None if another process holds it."""
+    handle = os.open(scratch, os.O_RDONLY)
+    try:
+        fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
+    except OSError:
+        os.close(handle)
+        return None
+    return handle
 
 
 class _LeftOutFile:

@@ -116,4 +116,4 @@ def fault(line: str, found: int | None, expected: int) -> tuple[str, str]:
         return "blank line", ""
     if found is None:
         return "quote not closed", ""
-    return "wrong number of columns", f"{found} columns, not {expected}"
+    return "wrong number of columns", f"columns: {found}, not {expected}"

@@ -123,8 +123,10 @@ class TextSource:
         return block
 
     def _in_utf8(self) -> Iterator[bytes]:
-        old_line_ends = b"\n" not in self._head and b"\r" in self._head and self._lenient
+        old_line_ends: bool | None = None
         for chunk in self._chunks() if self._lenient else self._transcoded():
+            if old_line_ends is None:
+                old_line_ends = b"\n" not in chunk and b"\r" in chunk
             yield chunk.replace(b"\r", b"\n") if old_line_ends else chunk
 
     def _transcoded(self) -> Iterator[bytes]:

@@ -109,10 +109,10 @@ def test_lines_of_another_width_are_left_out_and_never_shown(tmp_path: Path) -> 
     rows, left, _ = read(put(tmp_path, text(ROWS[0], "t2,K", ROWS[1], "a,b,c,d,e,f", "   ", ROWS[2], "Total;3")))
     assert [row[0] for row in rows] == [2, 4, 7]
     assert sorted(left) == [
-        (3, "wrong number of columns", "2 columns, not 5"),
-        (5, "wrong number of columns", "6 columns, not 5"),
+        (3, "wrong number of columns", "columns: 2, not 5"),
+        (5, "wrong number of columns", "columns: 6, not 5"),
         (6, "blank line", ""),
-        (8, "wrong number of columns", "1 columns, not 5"),
+        (8, "wrong number of columns", "columns: 1, not 5"),
     ]
 
 
