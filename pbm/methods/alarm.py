@@ -15,6 +15,7 @@ import numpy.typing as npt
 from pbm.methods.jit import Floats, Integers, compiled
 
 Sides = npt.NDArray[np.int8]
+REARM = 0.5
 
 
 class Limits(NamedTuple):
@@ -82,6 +83,23 @@ def _count_loop() -> Callable[..., Any]:
     return compiled(loop)
 
 
+@cache
+def _before_loop() -> Callable[..., Any]:
+    law = compiled(judge)
+
+    def loop(path: Floats, limits: tuple[float, float, float, float], at: Integers, out: Integers) -> None:
+        low, high, centre, rearm = limits
+        episode = 0
+        i = 0
+        for j in range(len(at)):
+            while i < at[j]:
+                episode = law(episode, path[i], low, high, centre, rearm)
+                i += 1
+            out[j] = episode
+
+    return compiled(loop)
+
+
 @dataclass(frozen=True, slots=True)
 class Episodes:
     """Alarms on a path of the statistic, one element each: index at which it opened, side (+1, -1) and furthest value."""
@@ -114,3 +132,10 @@ def episodes(path: Floats, limits: Limits) -> Episodes:
 def count_episodes(path: Floats, limits: Limits) -> int:
     """Number of episodes on a path of the statistic, shape (n,)."""
     return int(_count_loop()(path, *limits))
+
+
+def episodes_before(path: Floats, limits: Limits, at: Integers) -> Integers:
+    """Episode open before each index of `at` (not decreasing) on a path (n,): 0 armed, +1 above, -1 below; shape (r,)."""
+    out = np.empty(len(at), dtype=np.int64)
+    _before_loop()(path, limits, at, out)
+    return out

@@ -9,6 +9,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from pbm.methods.admit import admit
+from pbm.methods.alarm import REARM, Limits, episodes_before, judge
 from pbm.methods.baseline import Baseline, Mix
 from pbm.methods.jit import Floats, Integers, mapped, mapped_pairs, run_ends, scan, states_at, until
 from pbm.methods.statistics import STATISTICS, Statistic
@@ -144,11 +145,23 @@ class Tracker:
         """State before each index of `at` (not decreasing), from a fresh start, shape (r, s)."""
         return states_at(self.law.step, np.array(self.start()), z, self.par, at)
 
+    def standing(self, z: Floats, limits: Limits, at: Integers) -> "Standing":
+        """The monitor before each index of `at` (not decreasing), having run from a fresh start."""
+        return Standing(self.states_at(z, at), episodes_before(self.path(z), limits, at))
+
+    def first_alarms(
+        self, z: Floats, standing: "Standing", starts: Integers, ends: Integers, limits: Limits
+    ) -> Integers:
+        """Index into z of the value that opens the first episode in each z[start:end], -1 where none opens, shape (r,)."""
+        begun = (standing.states, standing.episodes)
+        return until(self.law.step, judge, begun, starts, ends, z, self.par, limits)
+
     def first_crossings(
         self, z: Floats, states: Floats, starts: Integers, ends: Integers, low: float, high: float
     ) -> Integers:
-        """Index into z of the first value at which the statistic leaves [low, high], -1 where it does not, shape (r,)."""
-        return until(self.law.step, states, starts, ends, z, self.par, low, high)
+        """The same for runs that begin armed: where the statistic first leaves [low, high]."""
+        armed = Standing(states, np.zeros(len(states), dtype=np.int64))
+        return self.first_alarms(z, armed, starts, ends, Limits(low, high, self.centre, REARM))
 
     def run_ends(self, z: Floats, low: float, high: float, begin: Floats | None = None) -> Integers:
         """Runs one after the other, each begun afresh: index into z of the value with which each leaves [low, high], shape (r,).
@@ -163,6 +176,14 @@ class Tracker:
             State at the begin of each run; a fresh start if left out.
         """
         return run_ends(self.law.step, np.array(self.start()) if begin is None else begin, z, self.par, low, high)
+
+
+@dataclass(frozen=True, slots=True)
+class Standing:
+    """A running monitor before each of many onsets: state of the statistic (r, s), and open episode (r,), 0 where armed."""
+
+    states: Floats
+    episodes: Integers
 
 
 def tracker_for(z: Floats, statistic: str, parameter: float, **more: float) -> Tracker:

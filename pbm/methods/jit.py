@@ -18,6 +18,7 @@ State = MutableSequence[float]
 Parameters = Sequence[float]
 # `step(state, x, par) -> value` changes the state in place; the value is not a number while it is not judged yet.
 Step = Callable[[State, float, Parameters], float]
+Judge = Callable[[int, float, float, float, float, float], int]
 F = TypeVar("F", bound=Callable[..., Any])
 
 
@@ -52,32 +53,33 @@ def _scan_loop(step: Step) -> Callable[..., Any]:
 
 
 @cache
-def _until_loop(step: Step) -> Callable[..., Any]:
-    law = compiled(step)
+def _until_loop(step: Step, judge: Judge) -> Callable[..., Any]:
+    law, rule = compiled(step), compiled(judge)
 
     def loop(
         states: Floats,
+        episodes: Integers,
         starts: Integers,
         ends: Integers,
         xs: Floats,
         par: Parameters,
-        low: float,
-        high: float,
+        limits: tuple[float, float, float, float],
         found: Integers,
     ) -> None:
+        low, high, centre, rearm = limits
         state = np.empty(states.shape[1])
         for j in range(len(starts)):
-            for c in range(
-                len(state)
-            ):  # element by element: a copy of a whole row takes numba seconds longer to compile
+            for c in range(len(state)):  # not by whole rows: numba takes seconds longer to compile that
                 state[c] = states[j, c]
+            episode = episodes[j]
             found[j] = -1
             for i in range(starts[j], ends[j]):
                 if xs[i] == xs[i]:
-                    s = law(state, xs[i], par)
-                    if s > high or s < low:
+                    after = rule(episode, law(state, xs[i], par), low, high, centre, rearm)
+                    if episode == 0 and after != 0:
                         found[j] = i
                         break
+                    episode = after
 
     return compiled(loop)
 
@@ -165,32 +167,41 @@ def scan(step: Step, state: Floats, xs: Floats, par: Parameters) -> Floats:
 
 
 def until(
-    step: Step, states: Floats, starts: Integers, ends: Integers, xs: Floats, par: Parameters, low: float, high: float
+    step: Step,
+    judge: Judge,
+    begun: tuple[Floats, Integers],
+    starts: Integers,
+    ends: Integers,
+    xs: Floats,
+    par: Parameters,
+    limits: tuple[float, float, float, float],
 ) -> Integers:
-    """First index at which the statistic leaves [low, high], for many starts.
+    """Index of the value that opens the first episode, for many starts.
 
     Parameters
     ----------
     step
         The statistic.
-    states : (r, s)
-        State before the first value of each run; not changed.
+    judge
+        The alarm machine, `judge(episode, s, low, high, centre, rearm) -> episode`.
+    begun : (r, s), (r,)
+        State and episode before the first value of each run; not changed.
     starts, ends : (r,)
         Each run reads xs[start:end].
     xs : (n,)
         Values; not-a-number entries are dropped results.
     par
         Parameters of the step.
-    low, high
-        Control limits; a value on a limit is inside.
+    limits
+        Low, high, centre, re-arm share.
 
     Returns
     -------
     (r,)
-        Index into xs of the value that crossed, -1 where none did.
+        Index into xs, -1 where no episode opens.
     """
     found = np.empty(len(starts), dtype=np.int64)
-    _until_loop(step)(states, starts, ends, xs, par, low, high, found)
+    _until_loop(step, judge)(begun[0], begun[1], starts, ends, xs, par, limits, found)
     return found
 
 

@@ -22,11 +22,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from pbm.methods.alarm import Limits, count_episodes, episodes
+from pbm.methods.alarm import REARM, Limits, count_episodes, episodes
 from pbm.methods.chain import Tracker
 from pbm.methods.jit import Floats, Integers
 
-REARM = 0.5
 TAIL_EPISODES = 30
 TAIL_SEARCH = 12
 

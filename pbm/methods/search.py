@@ -71,12 +71,13 @@ def scores(stretch: Stretch, runners: Sequence[Runner], trials: Sequence[tuple[T
     out = np.zeros((len(runners), len(trials[0][0].onsets.at)))
     for preparation, group in _grouped(runners).items():
         z = stretch.prepared(preparation)
-        states = {i: runners[i].tracker.states_at(z, trials[0][0].onsets.at) for i in group}
+        at = trials[0][0].onsets.at
+        standing = {i: runners[i].tracker.standing(z, runners[i].limits, at) for i in group}
         for trial, weight in trials:
             faulted = trial.prepared(preparation)
             for i in group:
                 runner = runners[i]
-                found = trial.results_to_alarm(faulted, runner.tracker, runner.limits, states[i])
+                found = trial.results_to_alarm(faulted, runner.tracker, runner.limits, standing[i])
                 out[i] += weight / total * trial.exposure.unreliable(stop(found, trial.onsets)[1])
     return out
 

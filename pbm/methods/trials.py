@@ -11,7 +11,7 @@ import numpy as np
 
 from pbm.methods.alarm import Limits
 from pbm.methods.baseline import Mix
-from pbm.methods.chain import Preparation, Tracker
+from pbm.methods.chain import Preparation, Standing, Tracker
 from pbm.methods.expected import Exposure, Onsets, exposure
 from pbm.methods.faults import Chance, Fault, Reporting, inflict
 from pbm.methods.jit import Floats, Integers
@@ -88,19 +88,21 @@ class Trial:
         """The faulted results as prepared for a statistic, shape (m,)."""
         return preparation.all(self.values, self.censor, self.mix)
 
-    def results_to_alarm(self, z: Floats, tracker: Tracker, limits: Limits, states: Floats) -> Integers:
+    def results_to_alarm(self, z: Floats, tracker: Tracker, limits: Limits, standing: Standing) -> Integers:
         """Offered results from the onset to the alarm, both included; 0 where there is none within the horizon.
+
+        An episode that is open at the onset is a false alarm already on the bench: the fault is found by the next one.
 
         Parameters
         ----------
         z : (m,)
-            `values` as prepared for the statistic.
+            The faulted results as prepared for the statistic.
         tracker, limits
             The statistic and its control limits.
-        states : (r, s)
-            Its in-control state before each onset.
+        standing
+            The monitor before each onset.
         """
-        found = tracker.first_crossings(z, states, self.starts, self.ends, limits.low, limits.high)
+        found = tracker.first_alarms(z, standing, self.starts, self.ends, limits)
         return np.where(found >= 0, found - self.starts + 1, 0)
 
 

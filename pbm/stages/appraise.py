@@ -12,7 +12,7 @@ import numpy as np
 
 from pbm.errors import PlanError
 from pbm.methods.alarm import Limits, episodes
-from pbm.methods.chain import Preparation, Tracker
+from pbm.methods.chain import Preparation, Standing, Tracker
 from pbm.methods.clock_time import local_days
 from pbm.methods.detection import Detection, by_both, by_monitor, by_schedule
 from pbm.methods.expected import Onsets
@@ -169,23 +169,24 @@ class _FaultTrial:
 
 @dataclass(frozen=True, slots=True)
 class _Running:
-    """A plan's monitor over the whole history, with its in-control state at each onset."""
+    """A plan's monitor over the whole history, and its standing at each onset."""
 
     preparation: Preparation
     tracker: Tracker
     limits: Limits
     z: Floats
     path: Floats
-    states: Floats
+    standing: Standing
 
     @classmethod
     def of(cls, monitor: MonitorPlan, stretch: Stretch, onsets: Onsets) -> "_Running":
         prepared, tracked = preparation(monitor), tracker(monitor)
         z = stretch.prepared(prepared)
-        return cls(prepared, tracked, limits(monitor), z, tracked.path(z), tracked.states_at(z, onsets.at))
+        within = limits(monitor)
+        return cls(prepared, tracked, within, z, tracked.path(z), tracked.standing(z, within, onsets.at))
 
     def results_to_alarm(self, tried: Trial) -> Integers:
-        return tried.results_to_alarm(tried.prepared(self.preparation), self.tracker, self.limits, self.states)
+        return tried.results_to_alarm(tried.prepared(self.preparation), self.tracker, self.limits, self.standing)
 
 
 @dataclass(frozen=True, slots=True)

@@ -46,7 +46,7 @@ FEWEST_RESULTS = 1_000
 FIRST_ONSETS, ONSETS, FINALISTS = 40, 250, 12
 WINDOWS = 50  # a window is no longer than this part of the training results
 NEEDED_AT_MOST = 5_000
-WORTHWHILE = 0.1
+WORTHWHILE, SOME_GAIN = 0.1, 0.02
 
 
 def tune_stream(history: StreamHistory, lab: Lab, seed: int) -> StreamPlan:
@@ -108,13 +108,20 @@ def judge_usefulness(needed: float, per_day: float, gain: float) -> Judgement:
 
     Notes
     -----
-    Useful: found within an average day's run (common practice) and a gain of at least a tenth. Marginal: one of the two.
+    Useful: found within an average day's run (common practice) and a gain of at least a tenth. Marginal: one of the two, and
+    at least some gain.
     """
     sees = f"needs about {needed:.0f} results to see" if np.isfinite(needed) else "does not see"
     gained = f"{max(gain, 0):.0%} fewer unreliable results expected than with the controls alone"
     reason = f"{sees} a shift of 1 TEa; the line makes {per_day:.0f} a day; {gained}"
     same_day, gains = needed <= per_day, gain >= WORTHWHILE
-    word: Verdict = "useful" if same_day and gains else "marginal" if same_day or gains else "not useful here"
+    word: Verdict = (
+        "useful"
+        if same_day and gains
+        else "marginal"
+        if gain >= SOME_GAIN and (same_day or gains)
+        else "not useful here"
+    )
     return Judgement(word, reason)
 
 
@@ -198,12 +205,12 @@ class _Tuning:
         at = onsets.at[onsets.at < max(len(training) - NEEDED_AT_MOST, len(training) // 2)]
         far = follow(at, np.minimum(at + NEEDED_AT_MOST, len(training)), np.zeros(0, dtype=np.int64), 1)
         z = training.prepared(runner.candidate.preparation)
-        states = runner.tracker.states_at(z, at)
+        standing = runner.tracker.standing(z, runner.limits, at)
         found = []
         for sign in (-1, 1):
             shifted = trial(training, Fault("shift", 1.0, "TEa", sign), far, np.ones(2))
             faulted = shifted.prepared(runner.candidate.preparation)
-            count = shifted.results_to_alarm(faulted, runner.tracker, runner.limits, states)
+            count = shifted.results_to_alarm(faulted, runner.tracker, runner.limits, standing)
             found.append(np.where(count > 0, count, np.inf))
         return float(np.median(np.concatenate(found)))
 
