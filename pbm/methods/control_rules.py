@@ -6,12 +6,13 @@
     R-Ls           largest less smallest measurement of one event more than L SD                      R-4s
     R-Ls-opposite  in one event one measurement beyond +L/2 SD and another beyond -L/2 SD             R-4s-opposite
 
-Each measurement counts in units of its own level's SD from its own level's mean. R-4s has both readings in print, and they differ (false
-rejection of 1-3s/2-2s/R-4s with two measurements: 0.97 % by the range, 0.72 % by opposite limits). The range is the default reading.
+Each measurement counts in units of its own level's SD from its own level's mean. Every rule named rejects: where 1-2s only warns, it is
+left out. R-4s has both readings in print, and they differ (false rejection of 1-3s/2-2s/R-4s with two measurements: 0.97 % by the range,
+0.72 % by opposite limits). The range is the default reading.
 
-Sources: "A multi-rule Shewhart chart for quality control in clinical chemistry", Clinical Chemistry 1981;27:493-501 (the rules);
-"Performance characteristics of rules for internal quality control: probabilities for false rejection and error detection", Clinical
-Chemistry 1977;23:1857-67 (the range).
+Sources: "Performance characteristics of rules for internal quality control: probabilities for false rejection and error detection",
+Clinical Chemistry 1977;23:1857-67; "A multi-rule Shewhart chart for quality control in clinical chemistry", Clinical Chemistry
+1981;27:493-501.
 """
 
 import re

@@ -175,11 +175,10 @@ def _checked(bias: Floats, multiple: float, repeats: Integers) -> tuple[Floats, 
 
 
 def _followed(chain: Chain, bias: Floats, multiple: float) -> Floats:
-    state = chain.accepted_history
+    state, chances = chain.accepted_history, np.empty(0)
     passed = np.ones(len(bias) + 1)
-    chances = chain.chances(bias[0], multiple) if len(bias) else state
     for k, shift in enumerate(bias):
-        if k and (shift != bias[k - 1]).any():
+        if k == 0 or (shift != bias[k - 1]).any():
             chances = chain.chances(shift, multiple)
         state = chain.after(state, chances)
         passed[k + 1] = min(state.sum(), passed[k])

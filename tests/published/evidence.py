@@ -27,6 +27,7 @@ printed, or that unrelated code or a closed form gives, beside what the tool com
 the last printed place, and 3.5 standard errors where the tool simulates. READ: the printed figure was read. MEM: quoted from memory.
 REPRO: reproduced by an independent computation.
 """
+WORDS = {"ewma": "EWMA", "cusum": "CUSUM", "tea": "TEa", "sd": "SD", "poisson": "Poisson", "n": "N"}
 Row = dict[str, Any]
 
 
@@ -56,7 +57,7 @@ def section(name: str, rows: list[Row]) -> Iterator[str]:
     """One check: its sentence, what its docstring says of it, and its table."""
     file, function = name.split("::")
     module = importlib.import_module(file.removesuffix(".py").replace("/", "."))
-    yield from ("", f"### {function.removeprefix('test_').replace('_', ' ').capitalize()}", "")
+    yield from ("", f"### {sentence(function)}", "")
     if text := getdoc(getattr(module, function)):
         yield from (*cleandoc(text).splitlines(), "")
     if len({row["source"] for row in rows}) == 1:
@@ -71,8 +72,14 @@ def table(rows: list[Row], columns: tuple[str, ...]) -> Iterator[str]:
     yield f"| {' | '.join(columns)} |"
     yield "|---" * len(columns) + "|"
     for row in rows:
-        shown = {**row, "ours": f"{row['ours']:.7g}", "tolerance": f"{row['tolerance']:.2g}"}
+        shown = {**row, "ours": f"{row['ours']:.10g}", "tolerance": f"{row['tolerance']:.2g}"}
         yield f"| {' | '.join(str(shown[column]).replace('|', '/') for column in columns)} |"
+
+
+def sentence(function: str) -> str:
+    """A test's name as a sentence."""
+    words = [WORDS.get(word, word) for word in function.removeprefix("test_").split("_")]
+    return words[0][0].upper() + " ".join(words)[1:]
 
 
 def title(module: object) -> str:

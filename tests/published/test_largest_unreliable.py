@@ -58,8 +58,8 @@ def worst(rules: str, controls: int, sigma: float) -> tuple[float, float]:
 def test_largest_number_of_final_unreliable_results_over_error_sizes() -> None:
     """Worst shift, largest E(Nuf)/M, and the M that keeps it at 1. REPRO; .1 % on the largest, .01 on the shift.
 
-    Published guidance on run sizes (Am J Clin Pathol 2019;151:364-70, numbers MEM): about 450 at sigma 5 with the rules of two controls, 200 at
-    sigma 4 with those of four, read off a nomogram: 475 and 180 here.
+    Published guidance on run sizes (Am J Clin Pathol 2019;151:364-70, numbers MEM), read off a nomogram: about 450 at sigma 5 with the
+    rules of two controls, 200 at sigma 4 with those of four; 475 and 180 here.
     """
     for rules, controls, sigma, shift, largest, spacing in lines(values.LARGEST):
         at, ours = worst(rules, int(controls), float(sigma))
