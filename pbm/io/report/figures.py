@@ -5,10 +5,9 @@ Who finds the error is told by line style, marker and a name at the line; colour
 
 import math
 import warnings
-from collections.abc import Callable, Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
-from itertools import pairwise
 
 import matplotlib
 import numpy as np
@@ -18,6 +17,7 @@ from matplotlib.figure import Figure as Canvas
 from matplotlib.ticker import FuncFormatter, MaxNLocator, NullLocator
 
 from pbm.io.report import seen, words
+from pbm.io.report.groups import FaultGroup
 from pbm.io.report.labels import Line, Points, write_names
 from pbm.io.report.svg import LOOK, Album
 from pbm.records.appraisal import FaultAppraisal, Figure, MonitorAppraisal, ResultsUntil
@@ -54,55 +54,6 @@ def drawing() -> Iterator[None]:
         matplotlib.rcdefaults()
         matplotlib.rcParams.update(LOOK)
         yield
-
-
-@dataclass(frozen=True, slots=True)
-class FaultGroup:
-    """Errors of one kind in several sizes, ordered by signed size.
-
-    Attributes
-    ----------
-    kind
-        "shift", "drift", "noise", "sporadic".
-    unit
-        What sizes are measured in, in words.
-    faults
-        The errors.
-    """
-
-    kind: str
-    unit: str
-    faults: tuple[FaultAppraisal, ...]
-
-    @property
-    def sizes(self) -> tuple[float, ...]:
-        """Signed sizes, ascending."""
-        return tuple(signed_size(fault) for fault in self.faults)
-
-
-def signed_size(fault: FaultAppraisal) -> float:
-    """Size with its sign; noise has none."""
-    return fault.size * fault.sign
-
-
-def fault_groups(faults: Iterable[FaultAppraisal], analyte_unit: str) -> list[FaultGroup]:
-    """Errors that belong on one axis; a second error of the same size (say a slower drift) starts a group of its own."""
-    groups: list[dict[float, FaultAppraisal]] = []
-    for fault in faults:
-        like = [one for one in groups if _same_axis(next(iter(one.values())), fault) and signed_size(fault) not in one]
-        if not like:
-            groups.append({})
-        (like or groups[-1:])[0][signed_size(fault)] = fault
-    return [_ordered(group, analyte_unit) for group in groups]
-
-
-def _same_axis(one: FaultAppraisal, other: FaultAppraisal) -> bool:
-    return (one.kind, one.unit) == (other.kind, other.unit)
-
-
-def _ordered(group: dict[float, FaultAppraisal], analyte_unit: str) -> FaultGroup:
-    faults = tuple(group[size] for size in sorted(group))
-    return FaultGroup(faults[0].kind, words.unit_in_words(faults[0].unit, analyte_unit), faults)
 
 
 def trace_plot(album: Album, monitor: MonitorAppraisal, unit: str) -> Markup:
@@ -156,7 +107,7 @@ def _mark_beyond(axes: Axes, days: Points, low: Points, high: Points, limits: tu
 
 def unreliable_plot(album: Album, group: FaultGroup) -> Markup:
     """Expected unreliable results against error size, controls alone and with the monitor, each with its interval."""
-    canvas, axes = _sheet(_size_in_words(group), "expected unreliable results")
+    canvas, axes = _sheet(group.axis, "expected unreliable results")
     ways: tuple[tuple[Look, Callable[[FaultAppraisal], Figure]], ...] = (
         (ALONE, lambda fault: fault.unreliable.alone),
         (BOTH, lambda fault: fault.unreliable.with_monitor),
@@ -170,7 +121,7 @@ def unreliable_plot(album: Album, group: FaultGroup) -> Markup:
 
 def first_event_plot(album: Album, group: FaultGroup) -> Markup:
     """Probability that the error is found no later than the first control event, by the controls, the monitor, and both."""
-    canvas, axes = _sheet(_size_in_words(group), "found by the first control event")
+    canvas, axes = _sheet(group.axis, "found by the first control event")
     ways: tuple[tuple[Look, Callable[[FaultAppraisal], Figure]], ...] = (
         (ALONE, lambda fault: fault.by_first_event.schedule),
         (MONITOR, lambda fault: fault.by_first_event.monitor),
@@ -186,7 +137,7 @@ def first_event_plot(album: Album, group: FaultGroup) -> Markup:
 
 def until_plot(album: Album, group: FaultGroup, horizon_days: float) -> Markup:
     """Affected results until detection: the median and up to the 95th percentile, by the controls, the monitor, and both."""
-    canvas, axes = _sheet(_size_in_words(group), "affected results until detection")
+    canvas, axes = _sheet(group.axis, "affected results until detection")
     ways: tuple[tuple[Look, Callable[[FaultAppraisal], ResultsUntil]], ...] = (
         (ALONE, lambda fault: fault.until.schedule),
         (MONITOR, lambda fault: fault.until.monitor),
@@ -260,7 +211,7 @@ def _figure_line(axes: Axes, group: FaultGroup, look: Look, which: Callable[[Fau
     """A figure against error size with its interval band."""
     xs, figures = np.array(group.sizes), [which(fault) for fault in group.faults]
     value, low, high = (np.array([getattr(one, part) for one in figures]) for part in ("value", "low", "high"))
-    for part in _parts_of(group):
+    for part in group.parts:
         axes.fill_between(xs[part], low[part], high[part], color=look.colour, alpha=_BAND, linewidth=0)
         if part.stop - part.start == 1:
             axes.vlines(xs[part], low[part], high[part], color=look.colour, linewidth=1.0)
@@ -268,16 +219,9 @@ def _figure_line(axes: Axes, group: FaultGroup, look: Look, which: Callable[[Fau
 
 
 def _draw(axes: Axes, group: FaultGroup, look: Look, xs: Points, ys: Points) -> tuple[Points, ...]:
-    for part in _parts_of(group):
+    for part in group.parts:
         axes.plot(xs[part], ys[part], color=look.colour, linestyle=look.dash, marker=look.marker, markeredgewidth=0)
-    return tuple(np.column_stack([xs[part], ys[part]]) for part in _parts_of(group))
-
-
-def _parts_of(group: FaultGroup) -> list[slice]:
-    """Errors downwards and upwards: a line never crosses the size 0, which was not tried."""
-    cuts = [place for place, (left, right) in enumerate(pairwise(group.sizes), 1) if left < 0 < right]
-    edges = [0, *cuts, len(group.sizes)]
-    return [slice(start, stop) for start, stop in pairwise(edges)]
+    return tuple(np.column_stack([xs[part], ys[part]]) for part in group.parts)
 
 
 def _sheet(across: str, along: str) -> tuple[Canvas, Axes]:
@@ -300,10 +244,6 @@ def _finish(axes: Axes, group: FaultGroup, formatted: bool = True) -> None:
     if formatted:
         axes.yaxis.set_major_locator(MaxNLocator(7, steps=_STEPS))
         axes.yaxis.set_major_formatter(FuncFormatter(lambda count, _: _tick(count)))
-
-
-def _size_in_words(group: FaultGroup) -> str:
-    return f"size of the {words.kind_in_words(group.kind)}, {group.unit}"
 
 
 def _tick(value: float, signed: bool = False) -> str:

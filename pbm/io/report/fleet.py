@@ -1,10 +1,18 @@
 """The summary: every monitor of the laboratory sorted by what it gains, and what is not covered, with the reason."""
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass
 
 from pbm.io.report import words
-from pbm.records.appraisal import Appraisal, FalseAlarms, FaultAppraisal, MonitorAppraisal, StreamAppraisal
+from pbm.records.appraisal import (
+    AloneAndWith,
+    Appraisal,
+    FalseAlarms,
+    FaultAppraisal,
+    MonitorAppraisal,
+    StreamAppraisal,
+    WorstCase,
+)
 
 MONTH = 30
 _LITTLE = 0.1
@@ -104,27 +112,69 @@ def _greatest(row: FleetRow) -> str:
 
 
 @dataclass(frozen=True, slots=True)
-class Gap:
-    """Something that is not covered: where, and why."""
+class Gaps:
+    """One way in which something is not covered, and where: pairs of a stream and what is said of it."""
 
-    where: str
-    why: str
+    title: str
+    places: tuple[tuple[str, str], ...]
 
 
-def gaps(appraisal: Appraisal) -> list[Gap]:
+def gaps(appraisal: Appraisal) -> list[Gaps]:
     """What is not covered in this laboratory: streams, alarm budgets, errors that stay unfound, kinds of error not tried."""
-    found = [Gap(stream.stream, " ".join(whys)) for stream in appraisal.streams if (whys := list(_shortcomings(stream)))]
-    return found + _not_tried([stream for stream in appraisal.streams if stream.monitors])
+    streams = appraisal.streams
+    found = [
+        Gaps("No monitor that is clearly useful", tuple(_verdict_and_reason(streams))),
+        Gaps("Alarm budget not kept on held-out days", tuple(_budgets_not_kept(streams))),
+        Gaps("Worst case lowered by less than a tenth", tuple(_worst_case_hardly_lower(streams))),
+        Gaps("Errors at which the monitor saves less than a tenth of the unreliable results", tuple(_errors(streams, little_helped))),
+        Gaps("Errors of which more than half are never found while followed, even with the monitor", tuple(_errors(streams, never_found))),
+        Gaps("Kinds of error not tried in this appraisal", tuple(_not_tried([one for one in streams if one.monitors]))),
+    ]
+    return [one for one in found if one.places]
 
 
-def _shortcomings(stream: StreamAppraisal) -> Iterator[str]:
-    if not stream.monitors or stream.verdict != "useful":
-        yield f"{stream.verdict}. {stream.reason}".strip()
-    for monitor in stream.monitors:
-        alarms = monitor.false_alarms
-        if not alarms.kept:
-            yield f"The alarm budget was not kept ({words.whole(alarms.episodes)} alarms, {words.expected(alarms.allowed)} allowed)."
-        yield from where_it_does_not_help(stream, monitor)
+def _verdict_and_reason(streams: Iterable[StreamAppraisal]) -> Iterator[tuple[str, str]]:
+    for stream in streams:
+        if not stream.monitors or stream.verdict != "useful":
+            yield stream.stream, f"{stream.verdict}. {words.sentence(stream.reason)}".strip()
+
+
+def _budgets_not_kept(streams: Iterable[StreamAppraisal]) -> Iterator[tuple[str, str]]:
+    for stream in streams:
+        for alarms in (monitor.false_alarms for monitor in stream.monitors):
+            if not alarms.kept:
+                yield stream.stream, f"{words.whole(alarms.episodes)} alarms, {words.expected(alarms.allowed)} allowed"
+
+
+def _worst_case_hardly_lower(streams: Iterable[StreamAppraisal]) -> Iterator[tuple[str, str]]:
+    for stream in streams:
+        for worst in (monitor.worst_unreliable for monitor in stream.monitors):
+            if _hardly_lower(worst):
+                alone, beside = words.expected(worst.alone.value), words.expected(worst.with_monitor.value)
+                yield stream.stream, f"{alone} alone, {beside} with the monitor"
+
+
+def _hardly_lower(found: AloneAndWith | WorstCase) -> bool:
+    return found.with_monitor.value > (1 - _LITTLE) * found.alone.value
+
+
+def _errors(
+    streams: Iterable[StreamAppraisal], which: Callable[[MonitorAppraisal], list[FaultAppraisal]]
+) -> Iterator[tuple[str, str]]:
+    for stream in streams:
+        for faults in filter(None, map(which, stream.monitors)):
+            yield stream.stream, listed(faults, stream.unit)
+
+
+def _not_tried(judged: list[StreamAppraisal]) -> Iterator[tuple[str, str]]:
+    """Kinds of error that no monitor of a stream was tried on, those missing in the same streams together."""
+    missing: dict[tuple[str, ...], list[str]] = {}
+    for kind, name in KINDS.items():
+        without = tuple(one.stream for one in judged if kind not in {fault.kind for monitor in one.monitors for fault in monitor.faults})
+        if without:
+            missing.setdefault(without, []).append(name)
+    for streams, kinds in missing.items():
+        yield "all streams" if len(streams) == len(judged) else ", ".join(streams), ", ".join(kinds)
 
 
 def where_it_does_not_help(stream: StreamAppraisal, monitor: MonitorAppraisal) -> Iterator[str]:
@@ -142,20 +192,22 @@ def never_found(monitor: MonitorAppraisal) -> list[FaultAppraisal]:
 
 def little_helped(monitor: MonitorAppraisal) -> list[FaultAppraisal]:
     """Errors for which the monitor saves less than a tenth of the unreliable results."""
-    return [
-        fault
-        for fault in monitor.faults
-        if fault.unreliable.with_monitor.value > (1 - _LITTLE) * fault.unreliable.alone.value
-    ]
+    return [fault for fault in monitor.faults if _hardly_lower(fault.unreliable)]
 
 
 def listed(faults: Iterable[FaultAppraisal], analyte_unit: str) -> str:
-    """Errors in short, those of one kind together: "shift −0.25, +0.25 TEa; noise 1.5 times the analytic SD"."""
-    kinds: dict[tuple[str, str], list[str]] = {}
+    """Errors in short, those of one kind and size together: "shift ±0.25, +0.5 TEa; noise 1.5 times the analytic SD"."""
+    kinds: dict[tuple[str, str], dict[float, list[FaultAppraisal]]] = {}
     for fault in faults:
         kind = words.kind_in_words(fault.kind), words.unit_in_words(fault.unit, analyte_unit)
-        kinds.setdefault(kind, []).append(words.size_of(fault))
-    return "; ".join(f"{kind} {', '.join(sizes)} {unit}" for (kind, unit), sizes in kinds.items())
+        kinds.setdefault(kind, {}).setdefault(fault.size, []).append(fault)
+    return "; ".join(f"{kind} {', '.join(map(_sizes, sizes.values()))} {unit}" for (kind, unit), sizes in kinds.items())
+
+
+def _sizes(faults: list[FaultAppraisal]) -> str:
+    """One size, with both signs where both are meant."""
+    size = words.size_of(faults[0])
+    return f"±{size[1:]}" if {fault.sign for fault in faults} == {-1, 1} else size
 
 
 def named(monitor: MonitorAppraisal, label: str, analyte_unit: str) -> str:
@@ -163,25 +215,12 @@ def named(monitor: MonitorAppraisal, label: str, analyte_unit: str) -> str:
     return next((words.fault_in_words(fault, analyte_unit) for fault in monitor.faults if fault.label == label), label)
 
 
-def _not_tried(judged: list[StreamAppraisal]) -> list[Gap]:
-    """Kinds of error that this appraisal did not try, those missing in the same streams together."""
-    missing: dict[tuple[str, ...], list[str]] = {}
-    for kind, name in KINDS.items():
-        without = tuple(one.stream for one in judged if kind not in {fault.kind for monitor in one.monitors for fault in monitor.faults})
-        if without:
-            missing.setdefault(without, []).append(name)
-    return [
-        Gap("All streams" if len(streams) == len(judged) else ", ".join(streams), f"not tried: {', '.join(kinds)}.")
-        for streams, kinds in missing.items()
-    ]
-
-
-def judged_days(appraisal: Appraisal) -> str:
-    """The first and last held-out day over all streams."""
+def judged_on(appraisal: Appraisal) -> str:
+    """On which days the monitors were judged: the first and last held-out day over all streams."""
     if not appraisal.streams:
-        return "no stream"
+        return ""
     first, last = min(one.first_day for one in appraisal.streams), max(one.last_day for one in appraisal.streams)
-    return f"{first} to {last}"
+    return f"Judged on the laboratory’s own results of {first} to {last}, days on which no monitor was chosen or tuned."
 
 
 def simulated(monitor: MonitorAppraisal) -> str:

@@ -11,6 +11,7 @@ from markupsafe import Markup
 
 from pbm.io.atomic import replace_file
 from pbm.io.report import figures, fleet, words
+from pbm.io.report.groups import FaultGroup, fault_groups
 from pbm.io.report.svg import Album
 from pbm.records.appraisal import Appraisal, FaultAppraisal, MonitorAppraisal, StreamAppraisal
 
@@ -21,7 +22,7 @@ _HERE = Path(__file__).parent
 class DrawnGroup:
     """The plots of one kind of error."""
 
-    group: figures.FaultGroup
+    group: FaultGroup
     unreliable: Markup
     until: Markup
     first_event: Markup
@@ -88,11 +89,11 @@ def _sections(album: Album, appraisal: Appraisal) -> Iterator[Section]:
 def _drawn(album: Album, stream: StreamAppraisal, monitor: MonitorAppraisal) -> DrawnMonitor:
     unit = words.in_a_plot(stream.unit)
     trace = figures.trace_plot(album, monitor, unit) if monitor.trace.day else None
-    groups = figures.fault_groups(monitor.faults, unit)
+    groups = fault_groups(monitor.faults, unit)
     return DrawnMonitor(monitor, trace, tuple(_drawn_group(album, group, stream.horizon_days) for group in groups))
 
 
-def _drawn_group(album: Album, group: figures.FaultGroup, horizon_days: float) -> DrawnGroup:
+def _drawn_group(album: Album, group: FaultGroup, horizon_days: float) -> DrawnGroup:
     return DrawnGroup(
         group,
         figures.unreliable_plot(album, group),

@@ -127,6 +127,12 @@ def days(count: float) -> str:
     return f"{text} day{'' if text == '1' else 's'}"
 
 
+def sentence(text: str) -> str:
+    """Text that starts with a capital letter and ends with a full stop; nothing stays nothing."""
+    told = text.strip()
+    return told and f"{told[0].upper()}{told[1:]}{'' if told.endswith(('.', '!', '?')) else '.'}"
+
+
 def printable(text: str) -> str:
     """Text without control characters, which neither HTML nor SVG may hold."""
     return _NOT_PRINTABLE.sub("\ufffd", text)

@@ -245,6 +245,10 @@ def hostile() -> Appraisal:
     """Every text that people write is an attack, or at least very long."""
     judged = monitor(812.5, 4.0, 139.1, 30, ("shift", "noise"))
     faults = tuple(one.model_copy(update={"unit": "unit"}) if one.kind == "shift" else one for one in judged.faults)
-    attacked = stream(HOSTILE, HOSTILE, 1.0, judged.model_copy(update={"words": HOSTILE, "faults": faults}), reason=HOSTILE)
+    attacked = stream(
+        HOSTILE, HOSTILE, 1.0, judged.model_copy(update={"words": HOSTILE, "faults": faults}), reason=HOSTILE
+    )
     texts = {"allowable_error": HOSTILE, "schedule": HOSTILE, "response_lag": HOSTILE}
-    return appraisal(attacked.model_copy(update=texts), stream(HOSTILE, HOSTILE, 1.0, verdict="not useful here"), laboratory=HOSTILE)
+    return appraisal(
+        attacked.model_copy(update=texts), stream(HOSTILE, HOSTILE, 1.0, verdict="not useful here"), laboratory=HOSTILE
+    )
