@@ -23,18 +23,18 @@ def what_is_watched(lab: Lab, plan: Plan, live: Live, source: str) -> str:
     rows = [row for name, stream in plan.streams.items() for row in _rows(name, stream, live)]
     planned = {StreamName.parse(name).analyte for name in plan.streams}
     rows += [
-        [key, "no monitor: not in plan.toml; `pbm tune` chooses one", ""] for key in lab.analytes if key not in planned
+        [key, "no monitor", "not in plan.toml; `pbm tune` chooses one"] for key in lab.analytes if key not in planned
     ]
     head = f"{lab.laboratory.name}: {len(live.streams)} of {len(plan.streams)} streams of plan.toml are watched, from {source}."
-    return "\n\n".join([head, table(["stream", "monitor", "state"], rows), CAUTION])
+    return "\n\n".join([head, table(["stream", "state", "monitor"], rows), CAUTION])
 
 
 def _rows(name: str, stream: StreamPlan, live: Live) -> Iterator[list[str]]:
     if not stream.monitors:
-        yield [name, f"no monitor, {stream.verdict}: {stream.reason}", ""]
+        yield [name, "no monitor", f"{stream.verdict}: {stream.reason}"]
         return
     for monitor in live.streams[StreamName.parse(name)].monitors:
-        yield [name, monitor_in_words(monitor.plan, stream.unit), state_in_words(monitor)]
+        yield [name, state_in_words(monitor), monitor_in_words(monitor.plan, stream.unit)]
 
 
 def state_in_words(monitor: StreamMonitor) -> str:

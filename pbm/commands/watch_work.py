@@ -47,7 +47,7 @@ def watch_feed(folder: LabFolder, source: str, *, json: bool, once: bool, speed:
     live = Live(lab, plan, fingerprint)
     with Store(folder.store) as store:
         opened = _open(source, folder, lab, store, once=once, speed=speed)
-        going_on = live.go_on(store.snapshots(), store.recent_results, store.newest_times)
+        going_on = live.go_on(store.snapshots(), store.newest_times(), store.recent_results)
         begun = [one.snapshot() for one in live.monitors]
         store.begin(time.time_ns() // 1_000, "watch begun", fingerprint, opening(live, going_on), begun)
         work = _Work(lab, live, store, opened, json)

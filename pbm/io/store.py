@@ -4,6 +4,7 @@ SQLite in WAL mode with synchronous=FULL: what was kept survives a kill and a po
 are SQLAlchemy Core, and only `_engine` knows which database it is.
 """
 
+import json
 from collections.abc import Iterable, Mapping, Sequence
 from pathlib import Path
 from types import TracebackType
@@ -21,7 +22,6 @@ from sqlalchemy import (
     insert,
     inspect,
     select,
-    tuple_,
     update,
 )
 from sqlalchemy.pool import StaticPool
@@ -29,7 +29,9 @@ from sqlalchemy.pool import StaticPool
 from pbm.io import store_rows
 from pbm.io.store_errors import told
 from pbm.io.store_schema import (
+    NAMED,
     SCHEMA_VERSION,
+    UNNAMED,
     alarms,
     audit,
     feeds,
@@ -109,31 +111,31 @@ class Store:
 
     def earlier(self, some: Iterable[Result]) -> Earlier:
         """What is kept of the same specimens in the same streams; of results without a specimen, what is kept of the same moment."""
-        known = [(self._streams[one.stream], one) for one in some if one.stream in self._streams]
-        named = {(stream, one.specimen) for stream, one in known if one.specimen}
-        unnamed = {(stream, one.time) for stream, one in known if not one.specimen}
+        asked = list(some)
         found = Earlier()
         with told(self.path), self._connection.begin():
-            if named:
+            if named := {one.specimen for one in asked if one.specimen}:
                 self._find_runs(named, found)
-            if unnamed:
+            if unnamed := {one.time for one in asked if not one.specimen}:
                 self._find_unnamed(unnamed, found)
         return found
 
-    def _find_runs(self, wanted: set[tuple[int, str]], found: Earlier) -> None:
+    def _find_runs(self, specimens: set[str], found: Earlier) -> None:
         r, names = results.c, {number: name for name, number in self._streams.items()}
-        asked = select(r.stream, r.specimen, r.time, r.value, r.censor, r.left_out)
-        for one in self._connection.execute(asked.where(r.specimen != "", tuple_(r.stream, r.specimen).in_(wanted))):
-            runs = found.runs.setdefault((names[one.stream], one.specimen), {})
-            runs[one.time, one.value, one.censor] = one.left_out != RERUN
+        asked = select(r.stream, r.specimen, r.time, r.value, r.censor, r.left_out).where(
+            NAMED, r.specimen.in_(specimens)
+        )
+        for stream, specimen, time, value, censor, left_out in self._connection.execute(asked):
+            runs = found.runs.setdefault((names[stream], specimen), {})
+            runs[time, value, censor] = left_out != RERUN
 
-    def _find_unnamed(self, wanted: set[tuple[int, int]], found: Earlier) -> None:
+    def _find_unnamed(self, times: set[int], found: Earlier) -> None:
         r, names = results.c, {number: name for name, number in self._streams.items()}
         sources = {number: source for source, number in self._feeds.items()}
-        asked = select(r.stream, r.time, r.value, r.censor, r.feed, r.edition)
-        for one in self._connection.execute(asked.where(r.specimen == "", tuple_(r.stream, r.time).in_(wanted))):
-            editions = found.unnamed.setdefault((names[one.stream], one.time, one.value, one.censor), set())
-            editions.add(Edition(sources[one.feed], one.edition))
+        asked = select(r.stream, r.time, r.value, r.censor, r.feed, r.edition).where(UNNAMED, r.time.in_(times))
+        for stream, time, value, censor, feed, edition in self._connection.execute(asked):
+            editions = found.unnamed.setdefault((names[stream], time, value, censor), set())
+            editions.add(Edition(sources[feed], edition))
 
     # What is kept
 
@@ -147,7 +149,7 @@ class Store:
                 aside = [item._asdict() | {"feed": feeds_known[source]} for source, item in batch.set_aside]
                 self._insert_numbered(set_aside, aside)
                 self._add_to_tallies(batch.tallies)
-                self._update_monitors(batch.snapshots, known)
+                self._update_states(batch, known)
             self._streams, self._feeds = known, feeds_known
             self._last = {
                 results: self._last[results] + len(batch.results),
@@ -191,7 +193,10 @@ class Store:
         if not new:
             return self._streams
         numbers = dict(zip(new, range(len(self._streams) + 1, len(self._streams) + len(new) + 1), strict=True))
-        rows = [{"id": number, "analyte": name.analyte, "analyser": name.analyser} for name, number in numbers.items()]
+        rows = [
+            {"id": number, "analyte": name.analyte, "analyser": name.analyser, "newest": "[]"}
+            for name, number in numbers.items()
+        ]
         self._connection.execute(insert(streams), rows)
         return self._streams | numbers
 
@@ -211,10 +216,14 @@ class Store:
             if self._connection.execute(added).rowcount == 0:
                 self._connection.execute(insert(tallies).values(reason=reason, count=count))
 
-    def _update_monitors(self, moved: Sequence[Snapshot], known: Mapping[StreamName, int]) -> None:
-        if moved:
-            rows = [store_rows.snapshot_row(one) | {"of": known[one.stream], "nth": one.monitor} for one in moved]
+    def _update_states(self, batch: Batch, known: Mapping[StreamName, int]) -> None:
+        if batch.snapshots:
+            rows = [
+                store_rows.snapshot_row(one) | {"of": known[one.stream], "nth": one.monitor} for one in batch.snapshots
+            ]
             self._connection.execute(_UPDATE_MONITOR, rows)
+            times = [{"of": known[name], "newest": json.dumps(newest)} for name, newest in batch.newest.items()]
+            self._connection.execute(_UPDATE_STREAM, times)
 
     # How a watch begins
 
@@ -240,17 +249,13 @@ class Store:
         with told(self.path), self._connection.begin():
             return store_rows.recent_results(self._connection, name, count)
 
-    def newest_times(self, name: StreamName, count: int) -> list[int]:
-        """The highest times among the results of a stream that counted, ascending."""
-        r = results.c
-        asked = (
-            select(r.time)
-            .where(r.stream == self._streams.get(name, 0), r.left_out == "")
-            .order_by(r.time.desc())
-            .limit(count)
-        )
+    def newest_times(self) -> dict[StreamName, list[int]]:
+        """The newest times that the monitors of each stream have taken, ascending."""
         with told(self.path), self._connection.begin():
-            return sorted(self._connection.execute(asked).scalars())
+            return {
+                StreamName(one.analyte, one.analyser): json.loads(one.newest)
+                for one in self._connection.execute(select(streams))
+            }
 
     def begin(self, at: int, what: str, plan_sha256: str, detail: str, states: Sequence[Snapshot]) -> None:
         """Put the monitors of a plan in the place of those kept, and say so in the audit.
@@ -280,6 +285,7 @@ class Store:
 
 
 _UPDATE_MONITOR = update(monitors).where(monitors.c.stream == bindparam("of"), monitors.c.monitor == bindparam("nth"))
+_UPDATE_STREAM = update(streams).where(streams.c.id == bindparam("of"))
 
 
 def _engine(path: Path) -> Engine:

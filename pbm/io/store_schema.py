@@ -13,6 +13,7 @@ from sqlalchemy import (
     String,
     Table,
     UniqueConstraint,
+    literal_column,
 )
 
 SCHEMA_VERSION = 1
@@ -36,6 +37,9 @@ streams = Table(
     Column("id", _Number, primary_key=True, autoincrement=False),
     Column("analyte", String, nullable=False),
     Column("analyser", String, nullable=False),
+    Column(
+        "newest", String, nullable=False, comment="the newest times that its monitors have taken, ascending, as JSON"
+    ),
     UniqueConstraint("analyte", "analyser"),
     comment="Every stream met, watched or not.",
 )
@@ -54,19 +58,21 @@ results = Table(
     Column("feed", ForeignKey("feeds.id"), nullable=False),
     Column("edition", Integer, nullable=False, comment="of the feed: a feed begun anew has the next number"),
     Index("results_of_a_stream", "stream", "seq"),
-    Index("results_in_time", "stream", "left_out", "time"),
     comment="Every patient result, once.",
 )
 
-# Results without a specimen may be alike and yet two patients'.
-_named = results.c.specimen != ""
+# Results without a specimen may be alike and yet two patients'. The text stands in the index literally: both databases then know when a
+# question is about it.
+NAMED = results.c.specimen != literal_column("''")
+UNNAMED = results.c.specimen == literal_column("''")
 Index(
     "one_result_once",
-    *(results.c[name] for name in ("stream", "specimen", "time", "value", "censor")),
+    *(results.c[name] for name in ("specimen", "stream", "time", "value", "censor")),
     unique=True,
-    sqlite_where=_named,
-    postgresql_where=_named,
+    sqlite_where=NAMED,
+    postgresql_where=NAMED,
 )
+Index("results_without_specimen", results.c.time, sqlite_where=UNNAMED, postgresql_where=UNNAMED)
 
 monitors = Table(
     "monitors",

@@ -88,6 +88,8 @@ class Batch:
         Each with the index of its result in `results`.
     snapshots
         Of the monitors that the results moved.
+    newest
+        Of the streams that moved: the newest times that their monitors have taken, ascending.
     set_aside
         Source and piece of the feed that was not taken as a result.
     tallies
@@ -99,6 +101,7 @@ class Batch:
     results: Sequence[KeptResult]
     alarms: Sequence[tuple[int, Alarm]]
     snapshots: Sequence[Snapshot]
+    newest: Mapping[StreamName, Sequence[int]]
     set_aside: Sequence[tuple[str, SetAside]]
     tallies: Mapping[str, int]
     positions: Mapping[str, str]

@@ -53,11 +53,11 @@ def _crossing(alarm: Alarm, decimals: int) -> str:
 
 
 def _estimated(estimate: OnsetEstimate, decimals: int, unit: str, today: date, zone: ZoneInfo) -> list[str]:
-    expected = "<1" if estimate.expected_unreliable < 0.5 else f"{estimate.expected_unreliable:.0f}"
+    expected = f"{estimate.expected_unreliable:.0f}"
     return [
         f"about {estimate.size:+.{decimals}f} {unit} ({abs(estimate.size_in_tea):.1f} TEa)",
         f"since ~{_clock(estimate.onset, today, zone)} ({estimate.results} result{'s' * (estimate.results != 1)})",
-        f"expect {expected} unreliable",
+        f"expect {expected if expected != '0' else '<1'} unreliable",
     ]
 
 

@@ -77,8 +77,8 @@ class Live:
     def go_on(
         self,
         kept: Iterable[Snapshot],
+        newest: Mapping[StreamName, Sequence[int]],
         recent: Callable[[StreamName, int], list[Result]],
-        newest: Callable[[StreamName, int], list[int]],
     ) -> list[StreamMonitor]:
         """Go on from the states that were kept; a monitor whose settings have changed begins afresh.
 
@@ -86,8 +86,10 @@ class Live:
         ----------
         kept
             The states.
-        recent, newest
-            The last results of a stream that counted, and its highest times (ascending); at most so many.
+        newest
+            The newest times that each stream has taken, ascending.
+        recent
+            The last results of a stream that counted, at most so many, in order of arrival.
 
         Returns
         -------
@@ -97,7 +99,7 @@ class Live:
         states = {(one.stream, one.settings): one.state for one in kept}
         going_on = []
         for name, stream in self.streams.items():
-            stream.newest = newest(name, NEWEST)
+            stream.newest = list(newest.get(name, ()))
             for monitor in stream.monitors:
                 if state := states.get((name, monitor.settings)):
                     monitor.go_on(state, recent(name, WINDOW))
@@ -189,6 +191,7 @@ class _Work:
             results=self._results,
             alarms=self._alarms,
             snapshots=[monitor.snapshot() for stream in self._moved.values() for monitor in stream.monitors],
+            newest={name: tuple(stream.newest) for name, stream in self._moved.items()},
             set_aside=self._set_aside,
             tallies=dict(self._tallies),
             positions=self._positions,

@@ -61,7 +61,7 @@ class StreamMonitor:
         self._preparation, self._limits, statistic = preparation(plan), limits(plan), tracker(plan)
         self._law = statistic.law
         self._state, self._step, self._par = statistic.start(), statistic.law.step, statistic.par
-        self.needed = 1 if statistic.law.starts_at_centre else int(statistic.parameter)
+        self.needed = 0 if statistic.law.starts_at_centre else int(statistic.parameter)
         self._recent: deque[Offered] = deque(maxlen=WINDOW)
 
     @property

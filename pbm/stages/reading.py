@@ -10,7 +10,7 @@ from datetime import datetime, timedelta
 from functools import lru_cache
 from typing import Literal
 
-from pbm.records.as_written import read_time, read_value
+from pbm.records.as_written import EARLIEST, LATEST, read_time, read_value
 from pbm.records.laboratory import Analyte, Lab
 from pbm.records.reading import Reading, SetAside
 from pbm.records.result import Result
@@ -18,6 +18,7 @@ from pbm.records.stream import LONGEST_ANALYSER, POOLED, StreamName
 
 _EPOCH = datetime(1970, 1, 1)
 _MICROSECOND = timedelta(microseconds=1)
+_LONGEST_FOUND = 40
 _KNOWN_TEXTS = 65_536  # different values kept read: results repeat, digits are few
 
 
@@ -63,11 +64,15 @@ class Reader:
     def read(self, reading: Reading) -> Result | SetAside:
         """The result, or why it is none."""
         try:
-            return self._result(Reading(reading.place, *(text.strip() for text in reading[1:])))
+            return self._result(Reading(reading.place, *map(str.strip, reading[1:])))
         except ReadingError as error:
-            key, _ = self._analytes.get(reading.analyte.strip(), ("", None))
-            stream = f"{key}@{reading.analyser.strip() or POOLED}" if key else ""
-            return SetAside(reading.place, error.reason, error.found, stream)
+            return SetAside(reading.place, error.reason, error.found[:_LONGEST_FOUND], self._name(reading))
+
+    def _name(self, reading: Reading) -> str:
+        """The stream a reading belongs to; "" where it does not say."""
+        known = self._analytes.get(reading.analyte.strip())
+        analyser = reading.analyser.strip() or (POOLED if self._extract.analyser is None else "")
+        return f"{known[0]}@{analyser[:LONGEST_ANALYSER]}" if known and analyser else ""
 
     def _result(self, reading: Reading) -> Result:
         self._check_it_is_data(reading)
@@ -115,6 +120,8 @@ class Reader:
         raise ReadingError(f"unit is not {analyte.unit}", unit)
 
     def _time(self, text: str) -> int:
+        if not text:
+            raise ReadingError("no time")
         found = self._as_written(text)
         if found is None:
             raise ReadingError("not a time", text)
@@ -130,9 +137,10 @@ class Reader:
         if self._time_format is None:
             return read_time(text)
         try:
-            return datetime.strptime(text, self._time_format)
+            found = datetime.strptime(text, self._time_format)
         except ValueError:
             return None
+        return found if EARLIEST <= found.replace(tzinfo=None) < LATEST else None
 
     @staticmethod
     def _check_plausible(value: float, analyte: Analyte) -> None:
