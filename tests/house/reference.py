@@ -38,8 +38,8 @@ def pages() -> dict[str, str]:
 
 
 _LAB = (
-    "Written by people: the laboratory, the columns of its extracts, analytes, TEa, controls, alarm budget. An unknown key, a wrong type or "
-    "an impossible number stops a command; all mistakes are told at once, each with its key, what was found and what was expected.",
+    "Written by people: the laboratory, the columns of its extracts, analytes, TEa, controls, alarm budget. An unknown key, a wrong type "
+    "or an impossible number stops a command; all mistakes are told at once, each with its key, what was found and what was expected.",
 )
 _PLAN = (
     "Written by `pbm tune`: what each stream's monitor is, its limits, and where they came from. A person may edit it; `pbm appraise` then "
