@@ -27,6 +27,7 @@ _FRAME = (0.158, 0.165, 0.815, 0.8)
 _BAND, _INK, _MUTED = 0.16, "#1d1d1b", "#8a8a86"
 _DODGE = 0.011
 _STEPS = (1, 2, 2.5, 5, 10)
+_NAME_PLACES = (("right", 0.99, 0.8), ("left", 0.01, 0.2), ("center", 0.5, 0.5))  # alignment, anchor, middle of the name
 _LEAST, _STRIP = 0.9, 0.13
 
 
@@ -66,30 +67,32 @@ def trace_plot(album: Album, monitor: MonitorAppraisal, unit: str) -> Markup:
     axes.set_xlim(days[0], days[-1] if days[-1] > days[0] else days[0] + 1)
     axes.set_ylim(min(low.min(), monitor.limits[0]) - 0.14 * width, max(high.max(), monitor.limits[1]) + 0.14 * width)
     for value, name, up in ((monitor.limits[0], "lower limit", False), (monitor.limits[1], "upper limit", True)):
-        _limit(axes, value, f"{name} {words.level(value, *monitor.limits)}", up, right=_mostly_left(marked[up], days))
+        _limit(axes, value, f"{name} {words.level(value, *monitor.limits)}", up, _freest(marked[up], days))
     axes.axhline(monitor.scale_centre, color=_MUTED, linewidth=0.9, linestyle=(0, (1, 2)))
     axes.yaxis.set_major_locator(MaxNLocator(6, steps=_STEPS))
     return album.inline(canvas, seen.trace(monitor, unit))
 
 
-def _mostly_left(marked: Points, days: Points) -> bool:
-    """Whether the right half is freer of marks, so that a name can stand there."""
-    return 2 * int((marked > days.mean()).sum()) <= len(marked)
+def _freest(marked: Points, days: Points) -> tuple[str, float]:
+    """Where along a limit the fewest marks stand, so that its name can."""
+    along = (marked - days[0]) / ((days[-1] - days[0]) or 1)
+    return min(_NAME_PLACES, key=lambda place: int((abs(along - place[2]) < 0.17).sum()))[:2]
 
 
 def _scale_in_words(monitor: MonitorAppraisal, unit: str) -> str:
     return f"statistic, {unit}" if monitor.limits == (monitor.low, monitor.high) else "statistic, transformed scale"
 
 
-def _limit(axes: Axes, value: float, text: str, up: bool, right: bool) -> None:
+def _limit(axes: Axes, value: float, text: str, up: bool, place: tuple[str, float]) -> None:
     axes.axhline(value, color=BOTH.colour, linewidth=1.2, linestyle=BOTH.dash)
+    side, across = place
     axes.annotate(
         text,
-        (1 if right else 0, value),
+        (across, value),
         xycoords=("axes fraction", "data"),
-        xytext=(-2 if right else 2, 2 if up else -2),
+        xytext=(0, 2 if up else -2),
         textcoords="offset points",
-        ha="right" if right else "left",
+        ha=side,
         va="bottom" if up else "top",
         color=BOTH.colour,
         fontsize=8,
