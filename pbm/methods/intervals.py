@@ -4,10 +4,11 @@ Poisson: "Fiducial limits for the Poisson distribution", Biometrika 1936;28:437-
 illustrated in the case of the binomial", Biometrika 1934;26:404-413.
 """
 
+import math
 from collections.abc import Callable
 
 import numpy as np
-from scipy.stats import beta, chi2
+from scipy.stats import beta, binomtest, chi2
 
 from pbm.methods.jit import Floats, Integers
 
@@ -37,6 +38,43 @@ def binomial_interval(successes: int, trials: int, level: float = 0.9) -> tuple[
     low = 0.0 if successes == 0 else float(beta.ppf(tail, successes, trials - successes + 1))
     high = 1.0 if successes == trials else float(beta.ppf(1 - tail, successes + 1, trials - successes))
     return low, high
+
+
+def rate_ratio(
+    first: int, exposure: float, second: int, other_exposure: float, level: float = 0.9
+) -> tuple[float, float, float]:
+    """Ratio of two Poisson rates with its exact interval: given the sum of the counts, the first is binomial.
+
+    Returns
+    -------
+    ratio, low, high
+        Not a number, 0 and infinity where both counts are 0.
+
+    Examples
+    --------
+    >>> [round(figure, 5) for figure in rate_ratio(11, 800, 21, 3011, 0.95)]
+    [1.97149, 0.85843, 4.27727]
+    """
+    if first + second == 0:
+        return math.nan, 0.0, math.inf
+    low, high = (_odds(share) * other_exposure / exposure for share in binomial_interval(first, first + second, level))
+    ratio = math.inf if second == 0 else first / exposure / (second / other_exposure)
+    return ratio, low, high
+
+
+def _odds(share: float) -> float:
+    return share / (1 - share) if share < 1 else math.inf
+
+
+def rates_differ(first: int, exposure: float, second: int, other_exposure: float) -> float:
+    """Exact two-sided p-value of the hypothesis that two Poisson rates are equal.
+
+    Examples
+    --------
+    >>> round(rates_differ(11, 800, 21, 3011), 6)
+    0.079669
+    """
+    return float(binomtest(first, first + second, exposure / (exposure + other_exposure)).pvalue)
 
 
 def day_weights(days: Integers, draws: int, random: np.random.Generator) -> Floats:

@@ -102,8 +102,15 @@ def _between_values(judged: Floats, distance: float) -> float:
     return (first + float(further.min())) / 2 if len(further) else first + (first - middle)
 
 
-def quick_limits(path: Floats, centre: float, expected: float) -> Limits | None:
-    """Predictive limits for an expected number of episodes in a history of this length, split evenly between the sides.
+def _shares(upper: float) -> dict[int, float]:
+    """Share of the budget on each side that has a limit."""
+    if not 0 <= upper <= 1:
+        raise ValueError(f"the upper side's share of the budget lies between 0 and 1, not at {upper}")
+    return {side: share for side, share in ((-1, 1 - upper), (1, upper)) if share > 0}
+
+
+def quick_limits(path: Floats, centre: float, expected: float, upper: float = 0.5) -> Limits | None:
+    """Predictive limits for an expected number of episodes in a history of this length.
 
     Parameters
     ----------
@@ -113,28 +120,30 @@ def quick_limits(path: Floats, centre: float, expected: float) -> Limits | None:
         Its centre.
     expected
         Episodes on both sides together.
+    upper
+        Share of them above the upper limit; with 1 there is no lower limit (it is infinite), with 0 no upper one.
 
     Returns
     -------
     Limits or None
         None if a side has no tail to learn from.
     """
-    ends = []
-    for side in (-1, 1):
-        if (tail := tail_of(path, centre, side, expected / 2)) is None:
+    ends = {-1: -math.inf, 1: math.inf}
+    for side, share in _shares(upper).items():
+        if (tail := tail_of(path, centre, side, share * expected)) is None:
             return None
         outward = side * (path - centre)
-        ends.append(centre + side * _between_values(outward[~np.isnan(outward)], tail.limit(expected / 2)))
-    return Limits(ends[0], ends[1], centre, REARM)
+        ends[side] = centre + side * _between_values(outward[~np.isnan(outward)], tail.limit(share * expected))
+    return Limits(ends[-1], ends[1], centre, REARM)
 
 
 @dataclass(frozen=True, slots=True)
 class CalibratedLimits:
-    """Limits with the 90 % intervals of the day-block bootstrap, each (low, high)."""
+    """Limits with the 90 % intervals of the day-block bootstrap, each (low, high); None for a side without a limit."""
 
     limits: Limits
-    low_interval: tuple[float, float]
-    high_interval: tuple[float, float]
+    low_interval: tuple[float, float] | None
+    high_interval: tuple[float, float] | None
 
 
 def _resampled_days(z: Floats, first: Integers, random: np.random.Generator) -> Floats:
@@ -155,7 +164,13 @@ def _predictive(tails: list[Tail], expected: float) -> float:
 
 
 def calibrated_limits(
-    tracker: Tracker, z: Floats, day_starts: Integers, expected: float, random: np.random.Generator, draws: int = 200
+    tracker: Tracker,
+    z: Floats,
+    day_starts: Integers,
+    expected: float,
+    random: np.random.Generator,
+    draws: int = 200,
+    upper: float = 0.5,
 ) -> CalibratedLimits | None:
     """Limits for an alarm budget, by the day-block bootstrap.
 
@@ -173,6 +188,8 @@ def calibrated_limits(
         Generator; the caller owns the seed.
     draws
         Pseudo-histories.
+    upper
+        Share of the episodes above the upper limit; with 1 there is no lower limit, with 0 no upper one.
 
     Returns
     -------
@@ -180,18 +197,20 @@ def calibrated_limits(
         None if a side has no tail to learn from.
     """
     path, centre = tracker.path(z), tracker.centre
-    tails = {side: tail for side in (-1, 1) if (tail := tail_of(path, centre, side, expected / 2)) is not None}
-    if len(tails) < 2:
+    allowed = {side: share * expected for side, share in _shares(upper).items()}
+    tails = {side: tail for side, count in allowed.items() if (tail := tail_of(path, centre, side, count)) is not None}
+    if len(tails) < len(allowed):
         return None
-    drawn: dict[int, list[Tail]] = {-1: [], 1: []}
+    drawn: dict[int, list[Tail]] = {side: [] for side in tails}
     for _ in range(draws):
         pseudo = tracker.path(_resampled_days(z, day_starts, random))
         for side, tail in tails.items():
             if (again := _tail_beyond(side * (pseudo - centre), tail.threshold)) is not None:
                 drawn[side].append(again)
-    ends = {side: _side_limit(path, centre, side, drawn[side], expected / 2) for side in (-1, 1)}
-    intervals = {side: _side_interval(centre, side, drawn[side], expected / 2) for side in (-1, 1)}
-    return CalibratedLimits(Limits(ends[-1], ends[1], centre, REARM), intervals[-1], intervals[1])
+    ends = {side: _side_limit(path, centre, side, found, allowed[side]) for side, found in drawn.items()}
+    intervals = {side: _side_interval(centre, side, found, allowed[side]) for side, found in drawn.items()}
+    limits = Limits(ends.get(-1, -math.inf), ends.get(1, math.inf), centre, REARM)
+    return CalibratedLimits(limits, intervals.get(-1), intervals.get(1))
 
 
 def _side_limit(path: Floats, centre: float, side: int, tails: list[Tail], expected: float) -> float:
