@@ -15,6 +15,7 @@ MICROSECONDS_PER_DAY = 86_400_000_000
 MICROSECONDS_PER_HOUR = 3_600_000_000
 MICROSECONDS_PER_MINUTE = 60_000_000
 HOURS_A_WEEK = 168
+EVERY_DAY = frozenset(range(7))
 HOURS_FROM_MONDAY = 72  # 1970-01-01 was a Thursday
 
 
@@ -42,11 +43,21 @@ def hour_of_week(time: int, zone: ZoneInfo) -> int:
     return local.weekday() * 24 + local.hour
 
 
-def control_events(first: int, last: int, times: tuple[str, ...], zone: ZoneInfo) -> Integers:
-    """Instants of the control events from first to last (UTC microseconds), ascending, at the given local clock times."""
+def control_events(
+    first: int, last: int, times: tuple[str, ...], zone: ZoneInfo, weekdays: frozenset[int] = EVERY_DAY
+) -> Integers:
+    """Instants of the control events from first to last (UTC microseconds), ascending.
+
+    Parameters
+    ----------
+    times
+        Local clock times, such as "06:00".
+    weekdays
+        Local days with control events, 0 = Monday.
+    """
     start = datetime.fromtimestamp(first / 1e6, zone).date()
     end = datetime.fromtimestamp(last / 1e6, zone).date()
-    days = [start + timedelta(n) for n in range((end - start).days + 1)]
+    days = [day for n in range((end - start).days + 1) if (day := start + timedelta(n)).weekday() in weekdays]
     instants = sorted(_instant(day, clock, zone) for day in days for clock in times)
     return np.array([t for t in instants if first <= t <= last], dtype=np.int64)
 

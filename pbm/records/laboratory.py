@@ -2,7 +2,7 @@
 
 import codecs
 from collections.abc import Iterable, Iterator, Mapping
-from typing import Annotated, Literal
+from typing import Annotated, Literal, get_args
 from zoneinfo import ZoneInfo, available_timezones
 
 from pydantic import AfterValidator, Field, model_validator
@@ -150,13 +150,19 @@ class ControlLevel(Written):
     repeats: int = Field(default=1, ge=1, le=10)
 
 
+Weekday = Literal["Mon", "Tue", "Wed", "Thu", "Fri", "Sat", "Sun"]
+WEEKDAYS: tuple[Weekday, ...] = get_args(Weekday)
+
+
 class Controls(Written):
     """A control schedule: clock times or a count of results, the rules, and the levels measured.
 
     Attributes
     ----------
     times
-        Control events at these local clock times, every day.
+        Control events at these local clock times.
+    weekdays
+        With times: the days on which there are control events; every day if left out.
     every
         Instead of times: a control event after so many results of the stream.
     rules
@@ -166,6 +172,7 @@ class Controls(Written):
     """
 
     times: tuple[ClockTime, ...] | None = None
+    weekdays: Annotated[tuple[Weekday, ...], Field(min_length=1)] | None = None
     every: EveryResults | None = None
     rules: tuple[str, ...] | None = None
     levels: tuple[ControlLevel, ...] = ()
@@ -174,13 +181,20 @@ class Controls(Written):
     def _times_or_count(self) -> "Controls":
         if self.times is not None and self.every is not None:
             raise ValueError("expected times or every, not both")
+        if self.weekdays is not None and self.times is None:
+            raise ValueError("weekdays goes with times")
         return self
+
+    def on_weekdays(self) -> frozenset[int]:
+        """The days with control events by clock time, 0 = Monday."""
+        return frozenset(WEEKDAYS.index(day) for day in self.weekdays or WEEKDAYS)
 
     def over(self, default: "Controls") -> "Controls":
         """These controls with what is not said here taken from the laboratory's default."""
         scheduled = self if self.times is not None or self.every is not None else default
         return Controls(
             times=scheduled.times,
+            weekdays=scheduled.weekdays,
             every=scheduled.every,
             rules=self.rules if self.rules is not None else default.rules,
             levels=self.levels or default.levels,

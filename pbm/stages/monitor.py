@@ -114,12 +114,12 @@ class StreamMonitor:
         return Estimator(in_control(self.plan), self._preparation, error).estimate(list(self._recent), self.episode)
 
     def _last_control(self, time: int) -> int | None:
-        times = self._lab.controls_of(self.stream.analyte).times
-        if not times:
+        controls = self._lab.controls_of(self.stream.analyte)
+        if not controls.times:
             return None
-        # Two days back: a day on which clocks change can leave more than 24 hours between two events of the same name.
-        events = control_events(time - 2 * MICROSECONDS_PER_DAY, time, times, self._zone)
-        return int(events[-1])
+        # Eight days back: a schedule of one weekday, and a day longer by the hour that clocks are put back.
+        since = time - 8 * MICROSECONDS_PER_DAY
+        return int(control_events(since, time, controls.times, self._zone, controls.on_weekdays())[-1])
 
     def snapshot(self) -> Snapshot:
         """The monitor as it stands, for the store."""

@@ -71,7 +71,7 @@ class Surroundings:
         if not self.controls.times:
             return np.zeros(0, dtype=np.int64)
         zone = self.lab.laboratory.zone
-        events = control_events(int(time[0]), int(time[-1]), self.controls.times, zone)
+        events = control_events(int(time[0]), int(time[-1]), self.controls.times, zone, self.controls.on_weekdays())
         return np.searchsorted(time, events, side="left").astype(np.int64)
 
     def onsets(self, time: Integers, first: int, last: int, count: int) -> Onsets:

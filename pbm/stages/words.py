@@ -42,4 +42,5 @@ def controls_in_words(controls: Controls) -> str:
     if not controls.levels or not controls.rules:
         return "no control schedule given"
     when = f"every {controls.every} results" if controls.every is not None else f"at {', '.join(controls.times or ())}"
+    when += f" on {', '.join(controls.weekdays)}" if controls.weekdays else ""
     return f"{when}; rules {', '.join(controls.rules)}; {len(controls.levels)} levels"
