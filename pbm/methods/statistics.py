@@ -77,7 +77,7 @@ STATISTICS = {
                   ewma.start, ewma.step, "level", False),
         Statistic("ewsd", "exponentially weighted SD", ("weight", "level"), "imprecision",
                   ewsd.start, ewsd.step, "spread", True),
-        Statistic("share", "moving share outside", ("window", "low", "high"), "shift seen in the tails",
+        Statistic("share", "moving share", ("window", "low", "high"), "shift seen in the tails",
                   moving_share.start, moving_share.step, "zero", True),
         Statistic("cusum", "CUSUM", ("reference", "level", "spread"), "small sustained shift",
                   cusum.start, cusum.step, "zero", False),

@@ -1,6 +1,7 @@
 """How the words of lab.toml and plan.toml become the numbers that methods work with."""
 
 import math
+from typing import Any
 
 from pbm.methods.alarm import Limits
 from pbm.methods.baseline import Baseline
@@ -10,7 +11,7 @@ from pbm.methods.onset import InControl
 from pbm.methods.statistics import STATISTICS
 from pbm.methods.unreliable import ErrorModel
 from pbm.records.laboratory import Analyte, FaultList
-from pbm.records.plan import MonitorPlan
+from pbm.records.plan import MonitorPlan, Outside
 
 
 def error_model(analyte: Analyte) -> ErrorModel:
@@ -65,6 +66,18 @@ def _parameter(monitor: MonitorPlan, name: str) -> float:
         side = getattr(monitor.outside, name)
         return float({"low": -math.inf, "high": math.inf}[name] if side is None else side)
     return float(getattr(monitor, name))  # the plan's own check has it there
+
+
+def planned_parameters(tracker: Tracker, level: float) -> dict[str, Any]:
+    """The parameters of a tracker by the keys of the plan; the in-control level of the values where the centre does not tell it."""
+    numbers = ({} if tracker.law.begins == "level" else {"level": level}) | tracker.named
+    keys: dict[str, Any] = {name: x for name, x in numbers.items() if name not in ("low", "high", "spread")}
+    if "window" in keys:
+        keys["window"] = int(keys["window"])
+    if "low" in numbers:
+        sides = {side: numbers[side] for side in ("low", "high") if math.isfinite(numbers[side])}
+        keys["outside"] = Outside(**sides)
+    return keys
 
 
 def limits(monitor: MonitorPlan) -> Limits:

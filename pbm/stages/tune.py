@@ -38,7 +38,7 @@ from pbm.records.plan import (
     Verdict,
 )
 from pbm.records.stream import StreamHistory
-from pbm.stages.from_plan import faults_of
+from pbm.stages.from_plan import faults_of, planned_parameters
 from pbm.stages.surroundings import Surroundings
 
 FEWEST_DAYS = 20
@@ -228,7 +228,6 @@ class _Tuning:
     def _monitor(self, training: Stretch, runner: Runner, limits: CalibratedLimits) -> MonitorPlan:
         preparation, tracker = runner.candidate.preparation, runner.tracker
         z = training.prepared(preparation)
-        parameter = tracker.law.parameter
         budget = self.around.lab.budget_of(self.around.name.analyte).per_day
         low, high = limits.limits.low, limits.limits.high
         return MonitorPlan(
@@ -241,8 +240,7 @@ class _Tuning:
             transform_lambda=preparation.transform_lambda if preparation.transform == "boxcox" else None,
             baseline=_in_plan(preparation.baseline),
             statistic=tracker.statistic,
-            window=int(tracker.parameter) if parameter == "window" else None,
-            weight=tracker.parameter if parameter == "weight" else None,
+            **planned_parameters(tracker, float(np.nanmean(z))),
             centre=tracker.centre,
             limits=ControlLimits(low=low, high=high),
             limits_interval=LimitsInterval(low=limits.low_interval, high=limits.high_interval),

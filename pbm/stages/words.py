@@ -1,27 +1,42 @@
 """Monitors and control schedules as people read them."""
 
+from pbm.methods.statistics import STATISTICS
 from pbm.records.laboratory import Controls
 from pbm.records.plan import Admit, MonitorPlan
 
-TITLES = {"mean": "moving mean", "median": "moving median", "ewma": "EWMA"}
 SCALES = {"none": "", "log": ", on the logarithm", "boxcox": ", Box-Cox transformed"}
 
 
 def monitor_in_words(monitor: MonitorPlan, unit: str) -> str:
     """A monitor in one sentence part, such as "EWMA, weight 0.05, of results from 125 to 155 mmol/L"."""
-    title = TITLES.get(monitor.statistic, monitor.statistic)
-    parameter = f"weight {monitor.weight:g}" if monitor.weight is not None else f"of {monitor.window} results"
+    title, parameter = STATISTICS[monitor.statistic].title, ", ".join(_parameters_in_words(monitor))
     mix = ", adjusted for patient mix" if monitor.baseline is not None else ""
     return f"{title}, {parameter}, {admitted_in_words(monitor.admit, unit)}{SCALES[monitor.transform]}{mix}"
 
 
+def _parameters_in_words(monitor: MonitorPlan) -> list[str]:
+    outside = monitor.outside
+    window = "batches of {} results" if monitor.statistic == "batch" else "of {} results"
+    return [
+        *([window.format(monitor.window)] if monitor.window is not None else []),
+        *([f"weight {monitor.weight:g}"] if monitor.weight is not None else []),
+        *([f"reference {monitor.reference:g} SD"] if monitor.reference is not None else []),
+        *([f"exponent {monitor.exponent:g}"] if monitor.exponent is not None else []),
+        *([_sides_in_words(outside.low, outside.high)] if outside is not None else []),
+    ]
+
+
+def _sides_in_words(low: float | None, high: float | None) -> str:
+    sides = ([f"below {low:g}"] if low is not None else []) + ([f"above {high:g}"] if high is not None else [])
+    return " or ".join(sides)
+
+
 def monitor_in_brief(monitor: MonitorPlan) -> str:
     """A monitor in as few words as a table bears, such as "EWMA 0.05, 125 to 155, log, mix"."""
-    title = TITLES.get(monitor.statistic, monitor.statistic)
-    parameter = monitor.weight if monitor.weight is not None else monitor.window
+    law = STATISTICS[monitor.statistic]
     low = "" if monitor.admit.low is None else f"{monitor.admit.low:g}"
     high = "" if monitor.admit.high is None else f"{monitor.admit.high:g}"
-    parts = [f"{title} {parameter:g}" if parameter is not None else title]
+    parts = [f"{law.title} {getattr(monitor, law.parameter):g}"]
     parts += [f"{low} to {high}".strip()] * bool(low or high)
     parts += [{"none": "", "log": "log", "boxcox": "Box-Cox"}[monitor.transform]] * (monitor.transform != "none")
     return ", ".join(parts + ["mix"] * (monitor.baseline is not None))
@@ -32,9 +47,7 @@ def admitted_in_words(admit: Admit, unit: str) -> str:
     if admit.low is None and admit.high is None:
         return "all results"
     beyond = "set to the limit" if admit.mode == "winsorize" else "left out"
-    low = f"below {admit.low:g}" if admit.low is not None else ""
-    high = f"above {admit.high:g}" if admit.high is not None else ""
-    return f"results {' or '.join(filter(None, (low, high)))} {unit} {beyond}"
+    return f"results {_sides_in_words(admit.low, admit.high)} {unit} {beyond}"
 
 
 def controls_in_words(controls: Controls) -> str:

@@ -1,6 +1,7 @@
 """Every statistic of the table: live = scan = restarted anywhere, and what its definition says."""
 
 from collections.abc import Callable
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -354,14 +355,13 @@ def test_no_values_cannot_centre_a_statistic() -> None:
 KEYS: dict[str, tuple[str, ...]] = {str(name): keys for name, keys in PARAMETER_KEYS.items()}
 
 
-def _written(tracker: Tracker) -> dict[str, object]:
+def _written(tracker: Tracker) -> dict[str, Any]:
     """A monitor as `plan.toml` holds it."""
-    numbers = {"level": LEVEL, **tracker.named}
-    outside = {side: numbers[side] for side in ("low", "high") if side in numbers}
-    parameters = {key: outside if key == "outside" else numbers[key] for key in KEYS[tracker.statistic]}
     limits = {"low": tracker.centre - 1, "high": tracker.centre + 1}
     rest = {"centre": tracker.centre, "limits": limits, "spread": SPREAD, "budget_per_day": 0.1}
-    return {"statistic": tracker.statistic, **parameters, **rest}
+    parameters = from_plan.planned_parameters(tracker, LEVEL)
+    outside = {"outside": parameters["outside"].model_dump(exclude_none=True)} if "outside" in parameters else {}
+    return {"statistic": tracker.statistic, **parameters, **outside, **rest}
 
 
 def _pinned(name: str) -> Tracker:
@@ -373,6 +373,8 @@ def _pinned(name: str) -> Tracker:
 def test_a_plan_carries_every_parameter_of_every_statistic(name: str) -> None:
     plan = MonitorPlan.model_validate(_written(_pinned(name)))
     assert from_plan.tracker(plan) == _pinned(name)
+    above = TRACKERS["share of 7 above"]
+    assert from_plan.tracker(MonitorPlan.model_validate(_written(above))) == above
 
 
 @pytest.mark.parametrize("name", sorted(STATISTICS))
