@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from tests.house.commands import commands
 
 _FENCED = re.compile(r"^```(\w*)\n(.*?)^```$", re.MULTILINE | re.DOTALL)
-_PBM = re.compile(r"(?:^|[\s/|;&`(])(pbm [a-z-][^|;&`\n]*)")
+_PBM = re.compile(r"(?:^|[/|;&(] ?)(pbm [a-z-][^|;&`\n]*)")
 
 
 def fenced(text: str, language: str) -> list[str]:
