@@ -195,8 +195,8 @@ class MonitorAppraisal(Found):
 
     Attributes
     ----------
-    words
-        What the monitor is, in a sentence.
+    words, brief
+        What the monitor is, in a sentence and in as few words as a table bears.
     admitted
         Share of held-out results that the statistic takes.
     centre, low, high
@@ -214,6 +214,7 @@ class MonitorAppraisal(Found):
     """
 
     words: str
+    brief: str
     admitted: float
     centre: float
     low: float

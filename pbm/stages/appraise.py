@@ -39,7 +39,7 @@ from pbm.records.plan import MonitorPlan, StreamPlan
 from pbm.records.stream import StreamHistory
 from pbm.stages.from_plan import faults_of, limits, preparation, tracker
 from pbm.stages.surroundings import Surroundings
-from pbm.stages.words import controls_in_words, monitor_in_words
+from pbm.stages.words import controls_in_words, monitor_in_brief, monitor_in_words
 
 ONSETS = 400
 EPOCH = date(1970, 1, 1)
@@ -126,6 +126,7 @@ class _Appraising:
         back = running.preparation.back
         return MonitorAppraisal(
             words=monitor_in_words(monitor, self.around.analyte.unit),
+            brief=monitor_in_brief(monitor),
             admitted=float(np.isfinite(running.z[self.split.at :]).mean()),
             centre=back(monitor.centre),
             low=back(monitor.limits.low),

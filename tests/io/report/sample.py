@@ -119,6 +119,7 @@ def monitor(
     spread = half * 0.25 * (0.4 + random.random(parts))
     episodes = int(random.integers(0, 5))
     return MonitorAppraisal(
+        brief=f"EWMA 0.03, {centre - 3 * tea:.4g} to {centre + 3 * tea:.4g}",
         words=f"Exponentially weighted mean (weight 0.03) of results from {centre - 3 * tea:.4g} to {centre + 3 * tea:.4g}",
         admitted=0.943,
         centre=centre,
@@ -246,7 +247,7 @@ def hostile() -> Appraisal:
     judged = monitor(812.5, 4.0, 139.1, 30, ("shift", "noise"))
     faults = tuple(one.model_copy(update={"unit": "unit"}) if one.kind == "shift" else one for one in judged.faults)
     attacked = stream(
-        HOSTILE, HOSTILE, 1.0, judged.model_copy(update={"words": HOSTILE, "faults": faults}), reason=HOSTILE
+        HOSTILE, HOSTILE, 1.0, judged.model_copy(update={"words": HOSTILE, "brief": HOSTILE, "faults": faults}), reason=HOSTILE
     )
     texts = {"allowable_error": HOSTILE, "schedule": HOSTILE, "response_lag": HOSTILE}
     return appraisal(
