@@ -25,9 +25,11 @@ import numpy as np
 from pbm.methods.alarm import REARM, Limits, count_episodes, episodes
 from pbm.methods.chain import Tracker
 from pbm.methods.jit import Floats, Integers
+from pbm.methods.lattice import lattice_of
 
 TAIL_EPISODES = 30
 TAIL_SEARCH = 12
+ROUNDING = 1e-9  # of the centre: a path that stays so near to it shows rounding errors and no tail
 
 
 @dataclass(frozen=True, slots=True)
@@ -68,7 +70,7 @@ def tail_of(path: Floats, centre: float, side: int, expected: float) -> Tail | N
     """The tail of a path (n,) on one side, or None if the path never leaves the centre often enough to tell."""
     outward = side * (path - centre)
     judged = outward[~np.isnan(outward)]
-    if len(judged) < TAIL_EPISODES or (top := float(judged.max())) <= 0:
+    if len(judged) < TAIL_EPISODES or (top := float(judged.max())) <= ROUNDING * abs(centre):
         return None
     wanted = max(TAIL_EPISODES, math.ceil(2 * expected))
     inner, outer = max(float(np.quantile(judged, 0.75)), 0.01 * top), top
@@ -76,30 +78,13 @@ def tail_of(path: Floats, centre: float, side: int, expected: float) -> Tail | N
         middle = (inner + outer) / 2
         enough = count_episodes(outward, Limits(-math.inf, middle, 0.0, REARM)) >= wanted
         inner, outer = (middle, outer) if enough else (inner, middle)
-    return _tail_beyond(outward, _between_values(judged, inner))
+    return _tail_beyond(outward, lattice_of(judged).gap_within(inner))
 
 
 def _tail_beyond(outward: Floats, threshold: float) -> Tail | None:
     found = episodes(outward, Limits(-math.inf, threshold, 0.0, REARM))
     excess = float((found.peak - threshold).mean()) if len(found) else 0.0
     return Tail(threshold, len(found), excess) if excess > 0 else None
-
-
-def _between_values(judged: Floats, distance: float) -> float:
-    """The nearest distance not inside the given one that lies half-way between two neighbouring values of the path.
-
-    Results in whole steps put the statistic on a lattice; a limit on a lattice point would be decided by rounding, and a tail
-    threshold just below one would hide the step.
-    """
-    inside, outside = judged[judged <= distance], judged[judged > distance]
-    if not len(inside) or not len(outside):
-        return distance
-    first = float(outside.min())
-    middle = (float(inside.max()) + first) / 2
-    if middle >= distance:
-        return middle
-    further = outside[outside > first]
-    return (first + float(further.min())) / 2 if len(further) else first + (first - middle)
 
 
 def _shares(upper: float) -> dict[int, float]:
@@ -133,7 +118,7 @@ def quick_limits(path: Floats, centre: float, expected: float, upper: float = 0.
         if (tail := tail_of(path, centre, side, share * expected)) is None:
             return None
         outward = side * (path - centre)
-        ends[side] = centre + side * _between_values(outward[~np.isnan(outward)], tail.limit(share * expected))
+        ends[side] = centre + side * lattice_of(outward[~np.isnan(outward)]).gap_beyond(tail.limit(share * expected))
     return Limits(ends[-1], ends[1], centre, REARM)
 
 
@@ -207,6 +192,8 @@ def calibrated_limits(
         for side, tail in tails.items():
             if (again := _tail_beyond(side * (pseudo - centre), tail.threshold)) is not None:
                 drawn[side].append(again)
+    if not all(drawn.values()):
+        return None
     ends = {side: _side_limit(path, centre, side, found, allowed[side]) for side, found in drawn.items()}
     intervals = {side: _side_interval(centre, side, found, allowed[side]) for side, found in drawn.items()}
     limits = Limits(ends.get(-1, -math.inf), ends.get(1, math.inf), centre, REARM)
@@ -215,7 +202,7 @@ def calibrated_limits(
 
 def _side_limit(path: Floats, centre: float, side: int, tails: list[Tail], expected: float) -> float:
     outward = side * (path - centre)
-    return centre + side * _between_values(outward[~np.isnan(outward)], _predictive(tails, expected))
+    return centre + side * lattice_of(outward[~np.isnan(outward)]).gap_beyond(_predictive(tails, expected))
 
 
 def _side_interval(centre: float, side: int, tails: list[Tail], expected: float) -> tuple[float, float]:
