@@ -115,3 +115,17 @@ def batch_mean(z: Sequence[float], size: int, exponent: float, centre: float) ->
         centre += math.copysign(abs(mean) ** (1 / exponent), mean)
         out[first + size - 1] = centre
     return out
+
+
+def admitted(x: float, censor: int, low: float, high: float, winsorize: bool, places: Sequence[float]) -> float:
+    """What a result counts as, by trying every value that it may stand for; NaN if it is dropped.
+
+    `places` are the values tried: "<x" stands for those below x, ">x" for those above; where these do not all lie on the same side of the
+    limits, the true place is not known.
+    """
+    stands_for = [t for t in places if (t < x if censor < 0 else t > x if censor > 0 else t == x)]
+    sides = {"below" if t < low else "above" if t > high else "inside" for t in stands_for}
+    if len(sides) != 1:
+        return math.nan
+    outside = low if sides == {"below"} else high
+    return x if sides == {"inside"} else outside if winsorize else math.nan
