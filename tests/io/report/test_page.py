@@ -198,7 +198,7 @@ def test_the_summary_holds_each_stream_with_its_worst_case_and_alarms() -> None:
         (monitor,) = stream.monitors
         worst, alarms = monitor.worst_unreliable, monitor.false_alarms
         for part in (
-            words.sentence(monitor.brief),
+            monitor.brief,
             f"{words.expected(worst.alone.value)} {words.interval(worst.alone)}",
             f"{words.expected(worst.with_monitor.value)} {words.interval(worst.with_monitor)}",
             words.saved(worst.alone.value, worst.with_monitor.value),
