@@ -133,16 +133,16 @@ def monitor_plan(tracker: Tracker, preparation: Preparation, limits: Limits, spr
             high=preparation.high if np.isfinite(preparation.high) else None,
             mode="winsorize" if preparation.winsorize else "truncate",
         ),
-        transform=preparation.transform,  # type: ignore[arg-type]
+        transform=preparation.transform,
         transform_lambda=preparation.transform_lambda if preparation.transform == "boxcox" else None,
         baseline=None if baseline is None else BaselinePlan(wards=dict(baseline.wards), hours=baseline.hours),
-        statistic=tracker.statistic,  # type: ignore[arg-type]
+        statistic=tracker.statistic,
         centre=limits.centre,
         limits=ControlLimits(low=limits.low, high=limits.high),
         rearm=limits.rearm,
         budget_per_day=0.033,
         spread=spread,
-        **keys,  # type: ignore[arg-type]
+        **keys,
     )
 
 

@@ -76,14 +76,21 @@ class Account:
 def _first_of(reason: str, batch: Batch) -> str:
     for source, item in batch.set_aside:
         if item.reason == reason:
-            found = f" ({item.found})" if item.found else ""
+            found = f" ({_plain(item.found)})" if item.found else ""
             return f"{source}, line {item.place}: {reason}{found}. Set aside; more of the kind are counted."
     result = next(one.result for one in batch.results if one.left_out == reason)
-    return f"{result.stream}, specimen {result.specimen or 'not given'}: {reason}. No monitor takes it; more of the kind are counted."
+    specimen = _plain(result.specimen) or "not given"
+    return f"{result.stream}, specimen {specimen}: {reason}. No monitor takes it; more of the kind are counted."
 
 
-def opening(live: Live, going_on: Iterable[StreamMonitor]) -> str:
+def _plain(text: str) -> str:
+    """Text of a feed as it may go to a terminal: without signs that steer it."""
+    return "".join(sign if sign.isprintable() else "?" for sign in text)
+
+
+def opening(live: Live, going_on: Iterable[StreamMonitor], *, changed: bool) -> str:
     """What the audit says when a watch begins: which monitors go on and which begin afresh."""
     kept = set(going_on)
     fresh = [f"{one.stream} monitor {one.index}" for one in live.monitors if one not in kept]
-    return f"{len(kept)} monitors go on" + (f"; begun afresh: {', '.join(fresh)}" if fresh else "")
+    under = " under the new plan" if changed else ""
+    return f"{len(kept)} monitors go on{under}" + (f"; begun afresh: {', '.join(fresh)}" if fresh else "")

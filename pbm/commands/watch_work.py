@@ -11,7 +11,7 @@ import typer
 from pbm.commands.folder import LabFolder
 from pbm.commands.lab import read_checked_lab
 from pbm.commands.watch_text import Account, opening, what_is_watched
-from pbm.errors import InputError
+from pbm.errors import InputError, PlanError
 from pbm.io.feeds import Feed, FileFeed, LineFeed, PacedFeed, run
 from pbm.io.follow import FollowedFile
 from pbm.io.ndjson import alarm_text
@@ -43,15 +43,19 @@ def watch_feed(folder: LabFolder, source: str, *, json: bool, once: bool, speed:
         raise InputError(
             "--speed paces the replay of a history: pbm watch --from history --speed 60. Other feeds have their own pace."
         )
+    if not folder.plan.is_file():
+        raise PlanError(f"There is no {folder.plan}, so nothing can be watched. `pbm tune` makes it from the history.")
     lab, plan, fingerprint = read_checked_lab(folder.lab), read_plan(folder.plan), plan_fingerprint(folder.plan)
     live = Live(lab, plan, fingerprint)
     with Store(folder.store) as store:
         opened = _open(source, folder, lab, store, once=once, speed=speed)
         going_on = live.go_on(store.snapshots(), store.newest_times(), store.recent_results)
-        begun = [one.snapshot() for one in live.monitors]
-        store.begin(time.time_ns() // 1_000, "watch begun", fingerprint, opening(live, going_on), begun)
+        changed = store.plan_in_force() not in ("", fingerprint)
+        begun, monitors = opening(live, going_on, changed=changed), [one.snapshot() for one in live.monitors]
+        store.begin(time.time_ns() // 1_000, "watch begun", fingerprint, begun, monitors)
         work = _Work(lab, live, store, opened, json)
-        work.say(what_is_watched(lab, plan, live, source), *(f"Open: {work.line(one)}" for one in store.open_alarms()))
+        work.say(what_is_watched(lab, plan, live, source), *[begun] * changed)
+        work.say(*(f"Open: {work.line(one)}" for one in store.open_alarms()))
         try:
             run([opened.feed], work.take)
         finally:

@@ -176,14 +176,14 @@ async def _read_until_stopped(feeds: Sequence[Feed], queue: asyncio.Queue[Chunk 
     stop = asyncio.create_task(stopped.wait())
     readers: asyncio.Future[list[None]] = asyncio.gather(*(_fill(feed, queue) for feed in feeds))
     try:
-        await asyncio.wait((stop, readers), return_when=asyncio.FIRST_COMPLETED)
+        ended, _ = await asyncio.wait((stop, readers), return_when=asyncio.FIRST_COMPLETED)
     finally:
         stop.cancel()
         readers.cancel()
         await asyncio.wait([readers])
     await queue.put(None)
-    if not readers.cancelled():
-        readers.result()
+    if readers in ended:
+        readers.result()  # raises what a feed raised
 
 
 async def _fill(feed: Feed, queue: asyncio.Queue[Chunk | None]) -> None:

@@ -14,11 +14,12 @@ import os
 import stat
 from collections.abc import Iterable
 from dataclasses import asdict, dataclass
+from operator import itemgetter
 from pathlib import Path
 
 import pbm.io.extract.decoding  # noqa: F401  registers the reading of single bytes that are not UTF-8
 from pbm.errors import FeedError, InputError
-from pbm.io.extract.by_line import Lines, read_by_line
+from pbm.io.extract.by_line import Rows, split_rows
 from pbm.io.extract.heading import Heading, find_heading
 from pbm.records.laboratory import Extract
 from pbm.records.reading import Chunk, Reading, SetAside
@@ -113,8 +114,11 @@ class FollowedFile:
         full = len(block) == _BLOCK
         chunk = self._rows(lines, final=self._leaving or full) if lines else None
         if chunk is None and full:
-            return self._too_long(block)
-        return chunk or self._follow_the_name(block)
+            chunk = self._too_long(block)
+        if chunk is None:
+            return self._follow_the_name(block)
+        self._leaving = False
+        return chunk
 
     # What is in the lines
 
@@ -143,8 +147,8 @@ class FollowedFile:
     def _rows(self, lines: list[bytes], final: bool) -> Chunk | None:
         heading, first = self._heading, self._at.line + 1
         assert heading is not None
-        text = self._decoded(b"".join(line + b"\n" for line in lines)).encode("utf-8")
-        read = read_by_line(text, heading.delimiter, heading.width, set(heading.places.values()), final)
+        texts = [line.removesuffix("\r") for line in self._decoded(b"\n".join(lines)).split("\n")]
+        read = split_rows(texts, heading.delimiter, heading.width, final)
         return self._chunk(_items(read, heading, first), lines[: read.used]) if read.used else None
 
     def _too_long(self, block: bytes) -> Chunk:
@@ -207,11 +211,13 @@ class FollowedFile:
         return not os.path.samestat(named, os.fstat(self._file))
 
 
-def _items(read: Lines, heading: Heading, first: int) -> list[Reading | SetAside]:
+def _items(read: Rows, heading: Heading, first: int) -> list[Reading | SetAside]:
     """Rows and bad lines in the order of the file."""
-    none = [""] * len(read.line)
-    columns = [read.columns[heading.places[role]].to_pylist() if role in heading.places else none for role in _ROLES]
-    rows: list[Reading | SetAside] = list(map(Reading, (read.line + first).tolist(), *columns))
+    # One field more, empty, stands for the roles that the file has no column for.
+    pick = itemgetter(*(heading.places.get(role, heading.width) for role in _ROLES))
+    rows: list[Reading | SetAside] = [
+        Reading(first + line, *pick([*row, ""])) for line, row in zip(read.starts, read.rows, strict=True)
+    ]
     if not read.bad:
         return rows
     bad = [SetAside(first + line, reason) for line, reason, _ in read.bad]

@@ -48,7 +48,18 @@ def read_line(place: int, line: bytes) -> Reading | SetAside:
         return SetAside(place, "not a JSON object")
     texts = ["" if (text := given.get(name)) is None else text for name in _FIELDS]
     wrong = next((name for name, text in zip(_FIELDS, texts, strict=True) if not isinstance(text, str)), None)
-    return SetAside(place, "neither text nor a number", wrong) if wrong else Reading(place, *texts)
+    if wrong:
+        return SetAside(place, "neither text nor a number", wrong)
+    return Reading(place, *texts) if _is_unicode(texts) else SetAside(place, "not Unicode text")
+
+
+def _is_unicode(texts: list[str]) -> bool:
+    """Whether the texts can be stored: JSON can escape halves of characters."""
+    try:
+        "".join(texts).encode()
+    except UnicodeEncodeError:
+        return False
+    return True
 
 
 def alarm_text(alarm: Alarm) -> str:

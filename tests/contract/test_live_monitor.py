@@ -1,5 +1,5 @@
-"""The promise: live = replay = restarted half-way, bit for bit, for every statistic, with truncation, winsorizing, transforms, censoring and
-patient mix; the alarms and their texts included.
+"""The promise: live = replay = restarted half-way, bit for bit, for every statistic; with truncation, winsorizing, transforms, censoring
+and patient mix, and down to the texts of the alarms.
 """
 
 import itertools

@@ -8,19 +8,19 @@ import pytest
 from pbm.records.alarm import Alarm, OnsetEstimate
 from pbm.records.laboratory import Analyte
 from pbm.stages.alarm_line import alarm_line
-from tests.live_laboratory import StreamName, laboratory
+from tests.live_laboratory import SODIUM_2, laboratory
 
 LAB = laboratory()
 ZONE = LAB.laboratory.zone
 
 
 def at(clock: str, day: int = 2) -> int:
-    hour, minute, *second = map(int, clock.split(":"))
-    return round(datetime(2031, 3, day, hour, minute, *second, tzinfo=ZONE).timestamp()) * 1_000_000
+    local = datetime.fromisoformat(f"2031-03-{day:02d} {clock}").replace(tzinfo=ZONE)
+    return round(local.timestamp()) * 1_000_000
 
 
 ALARM = Alarm(
-    stream=StreamName("sodium", "line-2"),
+    stream=SODIUM_2,
     monitor=0,
     time=at("07:41:12"),
     specimen="31-1",

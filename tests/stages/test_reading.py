@@ -84,9 +84,9 @@ def test_what_is_no_result_is_set_aside_for_the_first_reason(changed: dict[str, 
 
 
 def test_what_is_set_aside_names_its_stream_as_far_as_it_is_known() -> None:
-    assert read(value="HEM").stream == "sodium@line-2"  # type: ignore[union-attr]
-    assert read(analyte="XYZ").stream == ""  # type: ignore[union-attr]
-    assert read(analyser="").stream == ""  # type: ignore[union-attr]
+    assert read(value="HEM").stream == "sodium@line-2"
+    assert read(analyte="XYZ").stream == ""
+    assert read(analyser="").stream == ""
 
 
 def test_another_name_of_the_unit_is_the_unit() -> None:

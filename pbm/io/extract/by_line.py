@@ -37,6 +37,17 @@ class Lines:
     held: bytes = b""
 
 
+@dataclass(frozen=True, slots=True)
+class Rows:
+    """Rows of fields, the line at which each begins, and the rest as in `Lines`."""
+
+    rows: list[list[str]]
+    starts: list[int]
+    bad: list[tuple[int, str, str]]
+    used: int
+    inside_quotes: int
+
+
 def read_by_line(block: bytes, delimiter: str, width: int, places: set[int], final: bool) -> Lines:
     """Read whole lines of UTF-8.
 
@@ -52,6 +63,14 @@ def read_by_line(block: bytes, delimiter: str, width: int, places: set[int], fin
         Whether no lines follow: else a record whose quote is open at the end waits for them.
     """
     lines = [line.removesuffix("\r") for line in block.decode("utf-8").split("\n")[:-1]]
+    rows = split_rows(lines, delimiter, width, final)
+    columns = {place: pa.array([row[place] for row in rows.rows], pa.string()) for place in places}
+    held = "".join(f"{line}\n" for line in lines[rows.used :]).encode("utf-8")
+    return Lines(columns, np.array(rows.starts, np.int64), rows.bad, rows.used, rows.inside_quotes, held)
+
+
+def split_rows(lines: list[str], delimiter: str, width: int, final: bool) -> Rows:
+    """Part lines without their line ends into rows; the other arguments as for `read_by_line`."""
     rows: list[list[str]] = []
     starts: list[int] = []
     bad: list[tuple[int, str, str]] = []
@@ -69,9 +88,7 @@ def read_by_line(block: bytes, delimiter: str, width: int, places: set[int], fin
             continue
         bad.append((at, *fault(lines[at].strip(), None if record is None else len(record), width)))
         at += 1
-    columns = {place: pa.array([row[place] for row in rows], pa.string()) for place in places}
-    held = "".join(f"{line}\n" for line in lines[at:]).encode("utf-8")
-    return Lines(columns, np.array(starts, np.int64), bad, at, inside, held)
+    return Rows(rows, starts, bad, at, inside)
 
 
 def _record(lines: list[str], at: int, delimiter: str) -> tuple[list[str] | None, int]:

@@ -89,10 +89,10 @@ def _parted(block: bytes, heading: Heading) -> tuple[Lines, bytes]:
     """The lines above the header line, as lines left out, and the bytes below it."""
     *above, _, below = block.split(b"\n", heading.line)
     bad = [(number, "above the header line", "") for number in range(len(above))]
-    return Lines(dict.fromkeys(heading.places.values(), _NO_TEXT), np.array([], np.int64), bad, heading.line), below
+    none = dict.fromkeys(heading.places.values(), pa.nulls(0, pa.string()))
+    return Lines(none, np.array([], np.int64), bad, heading.line), below
 
 
-_NO_TEXT = pa.array([], pa.string())
 _REPEATED = pa.dictionary(pa.int32(), pa.string())
 
 
