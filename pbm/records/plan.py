@@ -275,6 +275,16 @@ class MonitorPlan(Written):
             raise ValueError(f"statistic {self.statistic} takes {' and '.join(needed)}, found {found}")
         return self
 
+    @model_validator(mode="after")
+    def _no_hidden_sum(self) -> "MonitorPlan":
+        narrower, wider = sorted((self.centre - self.limits.low, self.limits.high - self.centre))
+        if self.statistic == "cusum" and wider > 2 * narrower:
+            # Only the larger of the two sums is seen: methods/cusum.py says why it can then hide the smaller.
+            raise ValueError(
+                "expected limits of a cusum of which one is at most twice as far from the centre as the other"
+            )
+        return self
+
 
 class StreamPlan(Written):
     """What was decided for one stream: its monitors, or the reason why it has none.

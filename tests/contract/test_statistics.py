@@ -247,6 +247,13 @@ def test_limits_of_a_cusum_further_apart_than_two_to_one_can_hide_the_smaller_su
     assert down_first.path(u).tolist() == [-9.0, -5.0], "the upper sum stands at 4 and is not shown"
 
 
+def test_a_plan_refuses_limits_of_a_cusum_that_could_hide_a_sum() -> None:
+    written = _written(_pinned("cusum"))
+    MonitorPlan.model_validate({**written, "limits": {"low": -4.0, "high": 8.0}})
+    with pytest.raises(ValidationError, match="at most twice as far"):
+        MonitorPlan.model_validate({**written, "limits": {"low": -4.0, "high": 8.5}})
+
+
 @pytest.mark.parametrize("name", [name for name in TRACKERS if "window" in TRACKERS[name].named])
 def test_a_window_is_never_judged_before_it_is_full(name: str) -> None:
     window = int(TRACKERS[name].named["window"])
