@@ -129,3 +129,20 @@ def admitted(x: float, censor: int, low: float, high: float, winsorize: bool, pl
         return math.nan
     outside = low if sides == {"below"} else high
     return x if sides == {"inside"} else outside if winsorize else math.nan
+
+
+def alarms(path: Sequence[float], low: float, high: float, centre: float, rearm: float) -> list[tuple[int, int, float]]:
+    """Index, side and furthest value of each alarm: look for the first value outside, then for the first one back in the band, and again."""
+    found = []
+    newest = 0
+    while newest < len(path):
+        outside = [i for i in range(newest, len(path)) if path[i] > high or path[i] < low]
+        if not outside:
+            break
+        first = outside[0]
+        ends = [centre - rearm * (centre - low), centre + rearm * (high - centre)]
+        back = [i for i in range(first + 1, len(path)) if ends[0] <= path[i] <= ends[1]]
+        newest = back[0] if back else len(path)
+        seen = [x for x in path[first:newest] if not math.isnan(x)]
+        found.append((first, 1, max(seen)) if path[first] > high else (first, -1, min(seen)))
+    return found
