@@ -4,6 +4,7 @@ import itertools
 import math
 import statistics
 from collections.abc import Callable, Sequence
+from decimal import ROUND_HALF_EVEN, Decimal
 from fractions import Fraction
 
 Event = Sequence[tuple[int, float]]  # measurements of one control event in order: level, and SD from that level's mean
@@ -132,7 +133,7 @@ def admitted(x: float, censor: int, low: float, high: float, winsorize: bool, pl
 
 
 def alarms(path: Sequence[float], low: float, high: float, centre: float, rearm: float) -> list[tuple[int, int, float]]:
-    """Index, side and furthest value of each alarm: look for the first value outside, then for the first one back in the band, and again."""
+    """Index, side and furthest value of each alarm: find the first value outside, then the first one back in the band, and again."""
     found = []
     newest = 0
     while newest < len(path):
@@ -146,3 +147,48 @@ def alarms(path: Sequence[float], low: float, high: float, centre: float, rearm:
         seen = [x for x in path[first:newest] if not math.isnan(x)]
         found.append((first, 1, max(seen)) if path[first] > high else (first, -1, min(seen)))
     return found
+
+
+def reported(raw: float, step: str, low: float, high: float) -> tuple[float, int]:
+    """Rounded to the step in decimal arithmetic (a half goes to the even multiple), then printed as "<low" or ">high" where beyond."""
+    count = int((Decimal(raw) / Decimal(step)).quantize(Decimal(1), rounding=ROUND_HALF_EVEN))
+    value = float(count * Decimal(step))
+    return (low, -1) if value < low else (high, 1) if value > high else (value, 0)
+
+
+def unreliable_results(
+    onset: int, stop: int, end: int, events: Sequence[int], p: Sequence[float], passed: Sequence[float]
+) -> tuple[float, float]:
+    """Expected unreliable results reported, and of these final, bracket by bracket as the formulas have them.
+
+    `events` are the places of the first result after each control event of the whole history, `p` the chances from the onset on (p[0] is
+    the onset's own), `passed` the chances S_0, S_1 ... Reporting stops after `stop` affected results, or
+    (for the final ones) the alarm comes with that one; nothing is followed beyond `end`.
+    """
+    since = [e for e in events if onset < e < end]
+    ends = [*since, end]
+    reported = final = 0.0
+    begin = onset
+    for i, close in enumerate(ends):
+        inside = [p[j - onset] for j in range(begin, close)]
+        before_stop = [p[j - onset] for j in range(begin, close) if j < onset + stop]
+        reported += passed[i] * math.fsum(before_stop)
+        if i < len(since) and close < onset + stop:
+            final += passed[i + 1] * math.fsum(inside)
+        begin = close
+    return reported, final
+
+
+def detections(
+    onset: int, end: int, events: Sequence[int], passed: Sequence[float], alarm: int | None
+) -> dict[int | None, float]:
+    """Chance of each number of affected results until the fault is found, by events until the alarm comes; None: not within the horizon."""
+    chances: dict[int | None, float] = {}
+    still = 1.0
+    for k, count in enumerate(e - onset for e in events if onset < e < end):
+        if alarm is not None and count >= alarm:  # the event would come after the alarm
+            break
+        chances[count] = chances.get(count, 0.0) + passed[k] - passed[k + 1]
+        still -= passed[k] - passed[k + 1]
+    chances[alarm] = chances.get(alarm, 0.0) + still
+    return chances

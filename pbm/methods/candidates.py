@@ -13,6 +13,7 @@ from scipy.stats import boxcox_normmax, skew
 
 from pbm.methods.chain import Preparation
 from pbm.methods.jit import Floats
+from pbm.methods.reported_step import multiples
 
 QUANTILE_PAIRS = ((0.0, 1.0), (0.001, 0.999), (0.005, 0.995), (0.02, 0.98), (0.05, 0.95), (0.1, 0.9))
 WINSORIZED_PAIRS = ((0.005, 0.995), (0.02, 0.98), (0.05, 0.95))
@@ -60,14 +61,15 @@ def _truncation(x: Floats, pair: tuple[float, float], step: float) -> tuple[floa
     if pair == (0.0, 1.0):
         return -math.inf, math.inf
     low, high = np.quantile(x, pair)
-    return float(np.floor(low / step + 1e-9) * step), float(np.ceil(high / step - 1e-9) * step)
+    ends = multiples(np.array([np.floor(low / step + 1e-9), np.ceil(high / step - 1e-9)]), step)
+    return float(ends[0]), float(ends[1])
 
 
 def _transforms(x: Floats, random: np.random.Generator) -> list[tuple[str, float]]:
-    if x.min() <= 0 or abs(float(skew(x))) < SKEWED:
+    if x.min() <= 0 or np.ptp(x) == 0 or abs(float(skew(x))) < SKEWED:
         return [("none", 1.0)]
     sample = x if len(x) <= ENOUGH_FOR_LAMBDA else random.choice(x, ENOUGH_FOR_LAMBDA, replace=False)
-    power = round(float(np.clip(boxcox_normmax(sample, method="mle"), -2, 2)), 2)
+    power = round(float(np.clip(boxcox_normmax(sample, method="mle"), -2, 2)), 2) if np.ptp(sample) > 0 else 0.0
     return [("none", 1.0), ("log", 0.0)] + ([("boxcox", power)] if abs(power) >= 0.05 else [])
 
 

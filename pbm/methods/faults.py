@@ -7,6 +7,8 @@
 
 The fault is added to the raw value, then the value is rounded to the reported step, then censored at the method's limits. A result in the
 history is already rounded, so its raw value is taken anywhere in its rounding cell; without that a shift below half a step would vanish.
+A result that is already censored ("<5") stays as it was reported: its raw value is not known, and to let it appear at its limit would show
+the monitor results that no fault brings out.
 """
 
 import math
@@ -17,6 +19,7 @@ from typing import Literal
 import numpy as np
 
 from pbm.methods.jit import Floats
+from pbm.methods.reported_step import multiples
 from pbm.methods.unreliable import ErrorModel
 
 SCALES: dict[str, Callable[[Floats, ErrorModel], Floats]] = {
@@ -85,7 +88,7 @@ class Reporting:
 
     def report(self, raw: Floats) -> tuple[Floats, Floats]:
         """Rounded and censored values and their censor codes (-1, 0, +1), both shape (n,)."""
-        value = np.rint(raw / self.step) * self.step
+        value = multiples(np.rint(raw / self.step), self.step)
         censor = np.where(value < self.low, -1.0, np.where(value > self.high, 1.0, 0.0))
         return np.clip(value, self.low, self.high), censor
 
@@ -105,14 +108,20 @@ class Chance:
 
 
 def inflict(
-    x: Floats, fault: Fault, error: ErrorModel, reporting: Reporting, chance: Chance, growth: Floats | float = 1.0
+    x: Floats,
+    censor: Floats,
+    fault: Fault,
+    error: ErrorModel,
+    reporting: Reporting,
+    chance: Chance,
+    growth: Floats | float = 1.0,
 ) -> tuple[Floats, Floats]:
     """The results as they would have been reported under a fault present throughout.
 
     Parameters
     ----------
-    x : (n,)
-        Results in control.
+    x, censor : (n,)
+        Results in control, as reported.
     growth
         Share of the full size at each result (a drift's growth since its onset).
 
@@ -127,4 +136,5 @@ def inflict(
     else:
         hit = chance.uniform < fault.share if fault.kind == "sporadic" else 1.0
         raw = raw + growth * hit * fault.bias(x, error)
-    return reporting.report(raw)
+    value, beyond = reporting.report(raw)
+    return np.where(censor == 0, value, x), np.where(censor == 0, beyond, censor)

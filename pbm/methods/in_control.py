@@ -38,6 +38,6 @@ def _moved(stretch: Stretch, preparation: Preparation, sign: int) -> float:
     true = preparation.scale(float((typical + fault.bias(typical, stretch.error))[0])) - preparation.scale(
         float(typical[0])
     )
-    values, censor = inflict(stretch.value, fault, stretch.error, stretch.reporting, stretch.chance)
+    values, censor = inflict(stretch.value, stretch.censor, fault, stretch.error, stretch.reporting, stretch.chance)
     shifted, base = preparation.all(values, censor, stretch.mix), stretch.prepared(preparation)
     return float(np.nanmean(shifted) - np.nanmean(base)) / true

@@ -111,7 +111,7 @@ def trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats) -> Tri
     if fault.kind == "drift":
         return _drift_trial(stretch, fault, onsets, passed)
     error = stretch.error
-    values, censor = inflict(stretch.value, fault, error, stretch.reporting, stretch.chance)
+    values, censor = inflict(stretch.value, stretch.censor, fault, error, stretch.reporting, stretch.chance)
     p = _chance_unreliable(stretch.value, fault, error, fault.bias(stretch.value, error))
     return Trial(fault, onsets, values, censor, stretch.mix, onsets.at, onsets.end, exposure(onsets, p, passed))
 
@@ -129,7 +129,7 @@ def _drift_trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats)
     ages = (np.arange(len(rows)) - np.repeat(starts, onsets.length) + 1).astype(np.float64)
     growth, x = fault.growth(ages), stretch.value[rows]
     chance = Chance(stretch.chance.cell[rows], stretch.chance.normal[rows], stretch.chance.uniform[rows])
-    values, censor = inflict(x, fault, stretch.error, stretch.reporting, chance, growth)
+    values, censor = inflict(x, stretch.censor[rows], fault, stretch.error, stretch.reporting, chance, growth)
     p = np.zeros((len(onsets.at), int(onsets.length.max())))
     inside = np.arange(p.shape[1])[None, :] < onsets.length[:, None]
     p[inside] = _chance_unreliable(x, fault, stretch.error, growth * fault.bias(x, stretch.error))
