@@ -76,7 +76,14 @@ def follow(at: Integers, end: Integers, event_positions: Integers, events: int) 
 
 @kernel
 def _accumulate(
-    at: Integers, end: Integers, edges: Integers, p: Floats, passed: Floats, reported: Floats, final: Floats
+    at: Integers,
+    end: Integers,
+    edges: Integers,
+    p: Floats,
+    by_onset: bool,
+    passed: Floats,
+    reported: Floats,
+    final: Floats,
 ) -> None:
     for r in range(len(at)):
         bracket = 0
@@ -89,7 +96,7 @@ def _accumulate(
                 closed += passed[bracket + 1] * inside
                 inside = 0.0
                 bracket += 1
-            chance = p[r, j] if p.shape[0] > 1 else p[0, at[r] + j]
+            chance = p[r, j] if by_onset else p[0, at[r] + j]
             inside += chance
             reported[r, j + 1] = reported[r, j] + passed[bracket] * chance
             final[r, j + 1] = final[r, j] + closed
@@ -141,5 +148,5 @@ def exposure(onsets: Onsets, p: Floats, passed: Floats) -> Exposure:
     width = int(onsets.length.max()) + 1 if len(onsets.at) else 1
     reported = np.empty((len(onsets.at), width))
     final = np.empty_like(reported)
-    _accumulate(onsets.at, onsets.end, onsets.edges, np.atleast_2d(p), passed, reported, final)
+    _accumulate(onsets.at, onsets.end, onsets.edges, np.atleast_2d(p), p.ndim == 2, passed, reported, final)
     return Exposure(onsets, passed, reported, final)
