@@ -2,6 +2,7 @@
 
 import sys
 from collections.abc import Callable, Iterator
+from concurrent.futures import ThreadPoolExecutor
 from contextlib import contextmanager
 from dataclasses import dataclass, field
 from datetime import UTC, datetime
@@ -14,7 +15,7 @@ from pbm.errors import InputError, one_line
 from pbm.io.extract import extract_fingerprint, open_extract
 from pbm.io.history import read_extracts
 from pbm.io.history_writer import HistoryWriter
-from pbm.records.intake import Sifted, TakenExtract
+from pbm.records.intake import Sifted, TakenExtract, TextBlock
 from pbm.records.laboratory import Lab
 from pbm.records.stream import StreamName
 from pbm.stages.intake import Account, RowReader, sift, warnings
@@ -112,12 +113,21 @@ def _read(one: _NewExtract, lab: Lab, writer: HistoryWriter, taken: Taken) -> It
     """Lay the rows of one extract down; tells from time to time which share of it has been read."""
     extract = open_extract(one.path, one.name, lab.extract)
     reader = RowReader(lab, writer.patient_key)
-    for block in extract.blocks():
+    for block in _one_ahead(extract.blocks()):
         parsed = reader.parse(block)
         writer.add(parsed)
         taken.account.add_block(one.name, parsed)
         yield extract.share_read
     taken.guesses[one.name] = [*extract.guesses, *_guesses(reader)]
+
+
+def _one_ahead(blocks: Iterator[TextBlock]) -> Iterator[TextBlock]:
+    """The same blocks, the next being read while one is worked on."""
+    with ThreadPoolExecutor(1) as reader:
+        coming = reader.submit(next, blocks, None)
+        while (block := coming.result()) is not None:
+            coming = reader.submit(next, blocks, None)
+            yield block
 
 
 def _guesses(reader: RowReader) -> Iterator[str]:

@@ -5,6 +5,7 @@ number, another unit, no time, implausible value. A unit is never converted.
 """
 
 from collections.abc import Iterable
+from functools import lru_cache
 
 import numpy as np
 import numpy.typing as npt
@@ -19,6 +20,7 @@ from pbm.stages.intake.covariates import Covariates
 from pbm.stages.intake.sieve import Codes, Mask, Sieve
 from pbm.stages.intake.times import NOT_A_TIME, SKIPPED, WallClock
 
+_KNOWN_VALUES = 65_536  # different texts kept read: results repeat, digits are few
 Floats = npt.NDArray[np.float64]
 
 
@@ -37,6 +39,7 @@ class RowReader:
         analytes = lab.analytes.values()
         self.clock = WallClock(lab.laboratory.zone)
         self.covariates = Covariates(patient_key)
+        self._value = lru_cache(_KNOWN_VALUES)(read_value)
         self._columns = lab.extract
         self._keys = list(lab.analytes)
         self._spellings = {name: self._keys.index(key) for name, key in lab.spellings().items()}
@@ -84,7 +87,7 @@ class RowReader:
 
     def _values(self, sieve: Sieve, block: TextBlock) -> tuple[Floats, Codes]:
         codes, texts = sieve.encoded("value")
-        read = [read_value(text, block.decimal) for text in texts]
+        read = [self._value(text, block.decimal) for text in texts]
         sieve.leave_where("value", lambda text: not text, "no value")
         value = np.array([np.nan if one is None else one[0] for one in read], np.float64)[codes]
         sieve.leave(np.isnan(value), "not a number", "value")

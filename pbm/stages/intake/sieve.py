@@ -45,11 +45,14 @@ class Sieve:
         if role not in self._encoded:
             column = self._block.columns[role]
             found = column if pa.types.is_dictionary(column.type) else column.dictionary_encode()
-            numbers: dict[str, int] = {}
-            merged = np.array(
-                [numbers.setdefault(text.strip(), len(numbers)) for text in found.dictionary.to_pylist()], np.int64
-            )
-            self._encoded[role] = merged[found.indices.to_numpy()], list(numbers)
+            texts = list(map(str.strip, found.dictionary.to_pylist()))
+            # Texts that differ only in spaces become one.
+            different = list(dict.fromkeys(texts))
+            codes = found.indices.to_numpy().astype(np.int64)
+            if len(different) < len(texts):
+                number = {text: code for code, text in enumerate(different)}
+                codes = np.array([number[text] for text in texts], np.int64)[codes]
+            self._encoded[role] = codes, different
         return self._encoded[role]
 
     def mapped(self, role: str, number: Callable[[str], int]) -> Codes:
