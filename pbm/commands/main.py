@@ -1,4 +1,4 @@
-"""The `pbm` command: one file per sub-command, errors in one paragraph, exit codes 0 (done), 1 (the answer is no), 2 (wrong use or input)."""
+"""The `pbm` command: a file per sub-command, errors in one paragraph; exit codes 0 done, 1 the answer is no, 2 wrong use or input."""
 
 import os
 import sys
@@ -6,7 +6,7 @@ import sys
 import typer
 
 from pbm import __version__
-from pbm.commands import appraise, intake, tune, watch
+from pbm.commands import appraise, demo, intake, tune, watch
 from pbm.errors import PbmError
 
 app = typer.Typer(
@@ -19,6 +19,7 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
     add_completion=False,
 )
+app.command("demo")(demo.demo)
 app.command("intake")(intake.intake)
 app.command("tune")(tune.tune)
 app.command("appraise")(appraise.appraise)
