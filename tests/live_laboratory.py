@@ -46,6 +46,7 @@ unit = "unit"
 specimen = "specimen"
 ward = "location"
 kind = "kind"
+patient = "patient"
 
 [controls]
 times = ["06:00", "14:00", "22:00"]
@@ -67,6 +68,7 @@ step = 0.01
 allowable_error = { percent = 20 }
 analytic_sd = { cv_percent = 5 }
 leave_out_wards = ["RESEARCH"]
+repeat_hours = 12
 """
 
 MADE = Made(
@@ -162,7 +164,7 @@ def shifted_values(seed: int, count: int, shifts: dict[int, float]) -> Floats:
     return np.round(values)
 
 
-CSV_HEADER = "reported_at,test,line,result,unit,specimen,location,kind"
+CSV_HEADER = "reported_at,test,line,result,unit,specimen,location,kind,patient"
 
 
 def csv_lines(some: Iterable[Result]) -> list[str]:
@@ -170,7 +172,7 @@ def csv_lines(some: Iterable[Result]) -> list[str]:
     units = {"sodium": "mmol/L", "tsh": "uIU/mL"}
     return [
         f"{_iso(one.time)},{one.stream.analyte},{one.stream.analyser},{'<' * (one.censor < 0)}{one.value:g},"
-        f"{units[one.stream.analyte]},{one.specimen},{one.ward},P"
+        f"{units[one.stream.analyte]},{one.specimen},{one.ward},P,{one.patient}"
         for one in some
     ]
 

@@ -66,3 +66,8 @@ class LabFolder:
     def store(self) -> Path:
         """What `pbm watch` writes."""
         return self.root / "watch.sqlite"
+
+    @property
+    def patient_key(self) -> Path:
+        """The key of the tokens for patients on the live feed."""
+        return self.root / "watch.key"

@@ -15,6 +15,7 @@ from pbm.errors import InputError, PlanError
 from pbm.io.feeds import Feed, FileFeed, LineFeed, PacedFeed, run
 from pbm.io.follow import FollowedFile
 from pbm.io.ndjson import alarm_text
+from pbm.io.patient_key import patient_key
 from pbm.io.plan_file import plan_fingerprint, read_plan
 from pbm.io.store import Store
 from pbm.records.alarm import Alarm
@@ -79,18 +80,26 @@ class _Opened:
 
 
 def _open(source: str, folder: LabFolder, lab: Lab, store: Store, *, once: bool, speed: float | None) -> _Opened:
-    if source == "-":
-        return _Opened(LineFeed(STDIN, sys.stdin.fileno(), store.position(STDIN)), Reader(lab))
     if source == "history":
         return _replay(folder.history, lab, store, speed)
     if "://" in source:
         raise InputError(
             f'"{source}" is no feed that this version reads. Give a CSV file, - for NDJSON on standard input, or history.'
         )
+    key = patient_key(folder.patient_key) if any(one.repeat_hours for one in lab.analytes.values()) else b""
+    if source == "-":
+        return _Opened(LineFeed(STDIN, sys.stdin.fileno(), store.position(STDIN)), Reader(lab, patient_key=key))
     columns, path = lab.extract, Path(source)
     file = FollowedFile(path, columns, store.position(str(path.absolute())))
-    given = {"units_given": columns.unit is not None, "kinds_given": columns.kind is not None}
-    return _Opened(FileFeed(file, once=once), Reader(lab, columns.decimal, columns.time_format, **given), file)
+    reader = Reader(
+        lab,
+        columns.decimal,
+        columns.time_format,
+        units_given=columns.unit is not None,
+        kinds_given=columns.kind is not None,
+        patient_key=key,
+    )
+    return _Opened(FileFeed(file, once=once), reader, file)
 
 
 def _replay(history: Path, lab: Lab, store: Store, speed: float | None) -> _Opened:

@@ -13,7 +13,7 @@ from pbm.records.alarm import Alarm
 from pbm.records.reading import Reading, SetAside
 
 LONGEST_LINE = 2**16
-_FIELDS = ("time", "analyte", "analyser", "value", "unit", "specimen", "ward", "kind")
+_FIELDS = ("time", "analyte", "analyser", "value", "unit", "specimen", "ward", "kind", "patient")
 _TIMES = ("time", "onset", "onset_low", "onset_high", "last_control")
 _WITHOUT_BOUND = (math.inf, -math.inf)
 

@@ -32,6 +32,7 @@ from pbm.io.store_schema import (
     NAMED,
     SCHEMA_VERSION,
     UNNAMED,
+    VISITS,
     alarms,
     audit,
     feeds,
@@ -46,7 +47,7 @@ from pbm.io.store_schema import (
 from pbm.io.writer_lock import WriterLock
 from pbm.records.alarm import Alarm
 from pbm.records.result import Result
-from pbm.records.snapshot import RERUN, Batch, Earlier, Edition, Snapshot
+from pbm.records.snapshot import LATE, RERUN, Batch, Earlier, Edition, Snapshot
 from pbm.records.stream import StreamName
 
 _LOCK_SECONDS = 10.0
@@ -110,7 +111,7 @@ class Store:
             return self._connection.execute(select(feeds.c.position).where(feeds.c.source == source)).scalar() or ""
 
     def earlier(self, some: Iterable[Result]) -> Earlier:
-        """What is kept of the same specimens in the same streams; of results without a specimen, what is kept of the same moment."""
+        """What is kept of the same specimens and patients; of results without a specimen, what is kept of the same moment."""
         asked = list(some)
         found = Earlier()
         with told(self.path), self._connection.begin():
@@ -118,6 +119,8 @@ class Store:
                 self._find_runs(named, found)
             if unnamed := {one.time for one in asked if not one.specimen}:
                 self._find_unnamed(unnamed, found)
+            if patients := {one.patient for one in asked if one.patient}:
+                self._find_visits(patients, found)
         return found
 
     def _find_runs(self, specimens: set[str], found: Earlier) -> None:
@@ -136,6 +139,15 @@ class Store:
         for stream, time, value, censor, feed, edition in self._connection.execute(asked):
             editions = found.unnamed.setdefault((names[stream], time, value, censor), set())
             editions.add(Edition(sources[feed], edition))
+
+    def _find_visits(self, patients: set[str], found: Earlier) -> None:
+        r, names = results.c, {number: name for name, number in self._streams.items()}
+        # One that came too late counts for its patient all the same.
+        counted = r.left_out.in_(("", LATE))
+        for stream, patient, time in self._connection.execute(
+            select(r.stream, r.patient, r.time).where(VISITS, r.patient.in_(patients), counted)
+        ):
+            found.visits.setdefault((names[stream], patient), []).append(time)
 
     # What is kept
 
@@ -166,6 +178,7 @@ class Store:
                 "value": one.value,
                 "censor": one.censor,
                 "ward": one.ward,
+                "patient": one.patient,
                 "left_out": left_out,
                 "feed": feeds_known[edition.source],
                 "edition": edition.number,

@@ -42,7 +42,9 @@ def recent_results(connection: Connection, name: StreamName, count: int) -> list
         .limit(count)
     )
     rows = connection.execute(asked).all()
-    return [Result(row.time, name, row.value, row.censor, row.specimen, row.ward) for row in reversed(rows)]
+    return [
+        Result(row.time, name, row.value, row.censor, row.specimen, row.ward, row.patient) for row in reversed(rows)
+    ]
 
 
 def last_alarms(connection: Connection, count: int) -> list[Alarm]:

@@ -54,6 +54,7 @@ results = Table(
     Column("value", Float, nullable=False, comment="in the unit of the stream; of a censored result the limit printed"),
     Column("censor", SmallInteger, nullable=False, comment='-1 for "<", +1 for ">", else 0'),
     Column("ward", String, nullable=False, comment='"" where not given'),
+    Column("patient", String, nullable=False, comment='keyed token where repeats of a patient are limited, else ""'),
     Column("left_out", String, nullable=False, comment='why no monitor may take it (a rerun, too late), else ""'),
     Column("feed", ForeignKey("feeds.id"), nullable=False),
     Column("edition", Integer, nullable=False, comment="of the feed: a feed begun anew has the next number"),
@@ -65,6 +66,7 @@ results = Table(
 # question is about it.
 NAMED = results.c.specimen != literal_column("''")
 UNNAMED = results.c.specimen == literal_column("''")
+VISITS = results.c.patient != literal_column("''")
 Index(
     "one_result_once",
     *(results.c[name] for name in ("specimen", "stream", "time", "value", "censor")),
@@ -72,6 +74,7 @@ Index(
     sqlite_where=NAMED,
     postgresql_where=NAMED,
 )
+Index("results_of_a_patient", results.c.patient, sqlite_where=VISITS, postgresql_where=VISITS)
 Index("results_without_specimen", results.c.time, sqlite_where=UNNAMED, postgresql_where=UNNAMED)
 
 monitors = Table(

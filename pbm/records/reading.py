@@ -14,8 +14,8 @@ class Reading(NamedTuple):
     ----------
     place
         Where it stands in the feed: the line.
-    time, analyte, analyser, value, unit, specimen, ward, kind
-        As written; "" where not given.
+    time, analyte, analyser, value, unit, specimen, ward, kind, patient
+        As written; "" where not given. The patient is never kept as written.
     """
 
     place: int
@@ -27,6 +27,7 @@ class Reading(NamedTuple):
     specimen: str
     ward: str
     kind: str
+    patient: str = ""
 
 
 class SetAside(NamedTuple):

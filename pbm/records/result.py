@@ -21,6 +21,8 @@ class Result:
         -1 for "<v", +1 for ">v", 0.
     specimen, ward
         Text, "" where not given.
+    patient
+        A keyed one-way token, where repeats of a patient are limited; else "".
     """
 
     time: int
@@ -29,3 +31,4 @@ class Result:
     censor: int = 0
     specimen: str = ""
     ward: str = ""
+    patient: str = ""

@@ -9,7 +9,7 @@ from pbm.records.reading import SetAside
 from pbm.records.result import Result
 from pbm.records.stream import StreamName
 
-DUPLICATE, RERUN, LATE = "duplicate", "rerun of the specimen", "too late"
+DUPLICATE, RERUN, REPEAT, LATE = "duplicate", "rerun of the specimen", "same patient again", "too late"
 
 
 @dataclass(frozen=True, slots=True)
@@ -70,10 +70,13 @@ class Earlier:
         Stream and specimen -> time, value and censor of each result, and whether it is a first run.
     unnamed
         Stream, time, value and censor of results without a specimen -> the editions that held one.
+    visits
+        Stream and patient's token -> times of the results that count.
     """
 
     runs: dict[tuple[StreamName, str], dict[tuple[int, float, int], bool]] = field(default_factory=dict)
     unnamed: dict[tuple[StreamName, int, float, int], set[Edition]] = field(default_factory=dict)
+    visits: dict[tuple[StreamName, str], list[int]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)

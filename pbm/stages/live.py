@@ -2,6 +2,7 @@
 
 - A result counts once. A further one of the same specimen in the stream within 24 hours is a rerun; with the same time and value it is a
   duplicate. A result without a specimen is a duplicate only of one in another edition of a feed.
+- Where repeats are limited, a result counts once for a patient in so many hours; within them another one is kept, and no monitor takes it.
 - Results are taken in order of arrival and never held back: an alarm must not wait for a later result, and neighbours may swap without
   harm to a statistic. One that is older than the stream's newest results by more than `SLACK` is late: it is kept, and no monitor takes it.
   The bar is the fifth newest time, so that a few times that lie in the future do not shut out what follows.
@@ -17,14 +18,14 @@ from pbm.records.laboratory import Lab
 from pbm.records.plan import Plan
 from pbm.records.reading import Chunk, Reading, SetAside
 from pbm.records.result import Result
-from pbm.records.snapshot import DUPLICATE, LATE, RERUN, Batch, Earlier, Edition, KeptResult, Snapshot
+from pbm.records.snapshot import DUPLICATE, LATE, REPEAT, RERUN, Batch, Earlier, Edition, KeptResult, Snapshot
 from pbm.records.stream import RERUN_HOURS, StreamName
 from pbm.stages.monitor import WINDOW, StreamMonitor
 from pbm.stages.reading import Reader
 
 SLACK = 90 * 60_000_000  # microseconds; more than the hour that clocks are put back
 NEWEST = 5
-_RERUN = RERUN_HOURS * 3_600_000_000
+_HOUR = 3_600_000_000
 
 
 class LiveStream:
@@ -60,6 +61,7 @@ class Live:
     """
 
     def __init__(self, lab: Lab, plan: Plan, plan_sha256: str) -> None:
+        self._repeats = {key: one.repeat_hours for key, one in lab.analytes.items() if one.repeat_hours}
         self.streams: dict[StreamName, LiveStream] = {}
         for text, stream in plan.streams.items():
             if stream.monitors:
@@ -116,7 +118,7 @@ class Live:
         earlier
             What is kept of the same specimens; results taken here are added to it.
         """
-        work = _Work(self.streams, earlier)
+        work = _Work(self.streams, self._repeats, earlier)
         for chunk in chunks:
             work.take(chunk)
         return work.batch()
@@ -137,8 +139,10 @@ def _check_it_fits(lab: Lab, name: StreamName, unit: str) -> None:
 class _Work:
     """One batch in the making."""
 
-    def __init__(self, streams: Mapping[StreamName, LiveStream], earlier: Earlier) -> None:
-        self._streams, self._earlier = streams, earlier
+    def __init__(
+        self, streams: Mapping[StreamName, LiveStream], repeats: Mapping[str, float], earlier: Earlier
+    ) -> None:
+        self._streams, self._repeats, self._earlier = streams, repeats, earlier
         self._results: list[KeptResult] = []
         self._alarms: list[tuple[int, Alarm]] = []
         self._set_aside: list[tuple[str, SetAside]] = []
@@ -162,7 +166,9 @@ class _Work:
             self._tallies[DUPLICATE] += 1
             return
         stream = self._streams.get(result.stream)
-        if stream is not None and not reason and stream.is_late(result.time):
+        if not reason and result.patient:
+            reason = self._repeat(result)
+        if not reason and stream is not None and stream.is_late(result.time):
             reason = LATE
         self._results.append(KeptResult(result, reason, edition))
         if reason:
@@ -182,9 +188,17 @@ class _Work:
         runs = self._earlier.runs.setdefault((result.stream, result.specimen), {})
         if measured in runs:
             return DUPLICATE
-        rerun = any(first and abs(result.time - time) <= _RERUN for (time, _, _), first in runs.items())
+        rerun = any(first and abs(result.time - time) <= RERUN_HOURS * _HOUR for (time, _, _), first in runs.items())
         runs[measured] = not rerun
         return RERUN if rerun else ""
+
+    def _repeat(self, result: Result) -> str:
+        counted = self._earlier.visits.setdefault((result.stream, result.patient), [])
+        within = self._repeats.get(result.stream.analyte, 0.0) * _HOUR
+        if any(abs(result.time - time) <= within for time in counted):
+            return REPEAT
+        counted.append(result.time)
+        return ""
 
     def batch(self) -> Batch:
         return Batch(

@@ -8,6 +8,7 @@ as its first passage: only the order of arrival counts, and either reading is th
 import math
 from datetime import datetime, timedelta
 from functools import lru_cache
+from hashlib import blake2b
 from typing import Literal
 
 from pbm.records.as_written import EARLIEST, LATEST, read_time, read_value
@@ -41,6 +42,8 @@ class Reader:
         How the feed writes numbers and times; without a format, times are in ISO 8601.
     units_given, kinds_given
         Whether every reading of the feed says its unit, and its kind.
+    patient_key
+        Key of the tokens that stand for patients.
     """
 
     def __init__(
@@ -51,6 +54,7 @@ class Reader:
         *,
         units_given: bool = True,
         kinds_given: bool = False,
+        patient_key: bytes = b"",
     ) -> None:
         self._zone = lab.laboratory.zone
         self._extract = lab.extract
@@ -59,6 +63,9 @@ class Reader:
         self._time_format = time_format
         self._units_given, self._kinds_given = units_given, kinds_given
         self._streams: dict[tuple[str, str], StreamName] = {}
+        self._token = lru_cache(_KNOWN_TEXTS)(
+            lambda text: blake2b(text.encode(), digest_size=8, key=patient_key).hexdigest()
+        )
         self._value = lru_cache(_KNOWN_TEXTS)(lambda text: read_value(text, decimal))
 
     def read(self, reading: Reading) -> Result | SetAside:
@@ -87,7 +94,8 @@ class Reader:
         self._check_unit(reading.unit, key, analyte)
         time = self._time(reading.time)
         self._check_plausible(value, analyte)
-        return Result(time, stream, value, censor, reading.specimen, reading.ward)
+        patient = self._token(reading.patient) if reading.patient and analyte.repeat_hours else ""
+        return Result(time, stream, value, censor, reading.specimen, reading.ward, patient)
 
     def _check_it_is_data(self, reading: Reading) -> None:
         if not (reading.time or reading.analyte or reading.value):

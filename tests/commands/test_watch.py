@@ -12,7 +12,7 @@ import tempfile
 import time
 from collections.abc import Sequence
 from contextlib import redirect_stderr, redirect_stdout
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
@@ -31,6 +31,7 @@ from pbm.stages.live import Live
 from tests.live_laboratory import (
     CSV_HEADER,
     SODIUM,
+    TSH,
     csv_lines,
     every_line,
     ewma,
@@ -198,6 +199,18 @@ def test_no_sign_of_a_feed_steers_the_terminal(folder: Path) -> None:
     line = ndjson(FEED[:1]).replace('"sodium"', '"\\u001b[2Jboo"')
     done = pbm("watch", "--from", "-", "--lab", folder, stdin=line)
     assert "\x1b" not in done.stderr and "unknown test (?[2Jboo)" in done.stderr
+
+
+def test_repeats_of_a_patient_are_left_out_and_nobody_can_be_found_in_what_is_kept(folder: Path) -> None:
+    some = [replace(one, patient=f"name-of-{n % 3}") for n, one in enumerate(results([1.5] * 9, TSH))]
+    (folder / "live.csv").write_text(csv(some[:6]))
+    pbm("watch", "--from", folder / "live.csv", "--lab", folder, "--once")
+    (folder / "live.csv").write_text(csv(some))
+    done = pbm("watch", "--from", folder / "live.csv", "--lab", folder, "--once")
+    assert "Taken: 0 results. Left out: 3 same patient again." in done.stderr
+    assert [row[-1] for row in kept(folder)["results"]] == [""] * 3 + ["same patient again"] * 6
+    assert all(b"name-of" not in file.read_bytes() for file in folder.glob("watch.*"))
+    assert (folder / "watch.key").stat().st_mode & 0o077 == 0
 
 
 def test_an_open_alarm_is_told_again_at_the_next_start(folder: Path) -> None:

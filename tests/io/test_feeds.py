@@ -98,7 +98,8 @@ def test_a_signal_ends_the_run_after_the_batch_in_hand(number: signal.Signals) -
 
 
 def test_a_growing_file_is_followed_until_a_signal(tmp_path: Path) -> None:
-    path, taken = tmp_path / "live.csv", []
+    path = tmp_path / "live.csv"
+    taken: list[object] = []
     lines = csv_lines(results([140, 141, 142]))
     path.write_text(f"{CSV_HEADER}\n{lines[0]}\n")
 
@@ -117,7 +118,8 @@ def test_a_growing_file_is_followed_until_a_signal(tmp_path: Path) -> None:
 
 
 def test_once_ends_where_the_file_ends(tmp_path: Path) -> None:
-    path, taken = tmp_path / "live.csv", []
+    path = tmp_path / "live.csv"
+    taken: list[Chunk] = []
     path.write_text("\n".join([CSV_HEADER, *csv_lines(results([140] * 1200))]) + "\n")
     run([FileFeed(FollowedFile(path, COLUMNS), once=True)], taken.extend)
     assert sum(len(chunk.items) for chunk in taken) == 1200

@@ -20,7 +20,7 @@ from pbm.io.store import Store
 from pbm.io.store_reader import StoreReader
 from pbm.records.alarm import Alarm, OnsetEstimate
 from pbm.records.reading import SetAside
-from pbm.records.snapshot import RERUN, Batch, Edition, KeptResult, Snapshot
+from pbm.records.snapshot import LATE, REPEAT, RERUN, Batch, Edition, KeptResult, Snapshot
 from tests.live_laboratory import SODIUM, SODIUM_2, results
 
 FEED = Edition("live.csv", 1)
@@ -143,7 +143,25 @@ def test_results_without_a_specimen_are_found_by_their_time_with_their_editions(
     assert not found.runs
 
 
-@pytest.mark.parametrize("question", ["specimen <> '' AND specimen IN ('a', 'b')", "specimen = '' AND time IN (1, 2)"])
+def test_earlier_visits_of_a_patient_are_found_but_not_those_that_do_not_count(path: Path) -> None:
+    some = [replace(one, patient="token") for one in results([140, 141, 142])]
+    kept = [KeptResult(one, left_out, FEED) for one, left_out in zip(some, ("", REPEAT, LATE), strict=True)]
+    with begun(path) as store:
+        store.keep(batch(results=kept, alarms=[]))
+        found = store.earlier(
+            [replace(some[0], specimen="31-new"), replace(some[1], specimen="31-other", patient="another")]
+        )
+    assert found.visits == {(SODIUM, "token"): [some[0].time, some[2].time]}
+
+
+@pytest.mark.parametrize(
+    "question",
+    [
+        "specimen <> '' AND specimen IN ('a', 'b')",
+        "specimen = '' AND time IN (1, 2)",
+        "patient <> '' AND patient IN ('a', 'b')",
+    ],
+)
 def test_looking_for_earlier_results_never_reads_the_whole_table(path: Path, question: str) -> None:
     with begun(path) as store:
         store.keep(batch())

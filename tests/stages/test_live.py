@@ -169,3 +169,20 @@ def test_a_monitor_whose_settings_changed_begins_afresh_and_the_others_go_on() -
     assert [one.index for one in going_on] == [1]
     assert [one.taken for one in after.monitors] == [0, 50]
     assert after.streams[SODIUM].newest == [START + n * MINUTE for n in range(45, 50)]
+
+
+def test_where_repeats_are_limited_a_patient_counts_once_in_so_many_hours() -> None:
+    watch = Live(LAB, plan(tsh_line_1=[ewma(1.0, 0.5)]), "sha")
+    some = [replace(one, patient="token") for one in results([1, 2, 3, 4], TSH)]
+    hours = (0, 11, 12, 25)
+    visits = [replace(one, time=START + hour * HOUR + (hour == 25)) for one, hour in zip(some, hours, strict=True)]
+    other = replace(visits[1], patient="another", specimen="31-9")
+    batch = take(watch, [*visits, other])
+    assert [kept.left_out for kept in batch.results] == ["", "same patient again", "same patient again", "", ""]
+    known = Earlier(visits={(TSH, "token"): [START]})
+    assert take(watch, visits[1:2], earlier=known).tallies == {"same patient again": 1}
+
+
+def test_where_repeats_are_not_limited_every_result_of_a_patient_counts() -> None:
+    batch = take(live(), [replace(one, patient="") for one in results([140, 141])])
+    assert [kept.left_out for kept in batch.results] == ["", ""]

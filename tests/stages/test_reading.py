@@ -144,3 +144,15 @@ def test_no_text_makes_the_reader_fail(reading: Reading) -> None:
 def test_no_time_makes_the_reader_fail(time: str) -> None:
     found = read(time=time)
     assert isinstance(found, SetAside) or found.time + START > 0
+
+
+def test_a_patient_becomes_a_keyed_token_and_only_where_repeats_are_limited() -> None:
+    reading = Reading(**(GIVEN | {"analyte": "tsh", "unit": "mIU/L", "patient": "123-456"}))
+    tokens = []
+    for key in (b"one key", b"one key", b"another"):
+        found = Reader(LAB, patient_key=key).read(reading)
+        assert isinstance(found, Result)
+        tokens.append(found.patient)
+    assert tokens[0] == tokens[1] != tokens[2]
+    assert "123" not in tokens[0] and len(tokens[0]) == 16
+    assert result(patient="123-456").patient == ""
