@@ -11,6 +11,7 @@ from types import TracebackType
 from typing import Any
 
 from sqlalchemy import (
+    URL,
     Connection,
     Engine,
     Table,
@@ -302,8 +303,9 @@ _UPDATE_STREAM = update(streams).where(streams.c.id == bindparam("of"))
 
 
 def _engine(path: Path) -> Engine:
+    place = URL.create("sqlite", database=str(path))
     engine = create_engine(
-        f"sqlite:///{path}", poolclass=StaticPool, connect_args={"timeout": _LOCK_SECONDS, "check_same_thread": False}
+        place, poolclass=StaticPool, connect_args={"timeout": _LOCK_SECONDS, "check_same_thread": False}
     )
 
     @event.listens_for(engine, "connect")

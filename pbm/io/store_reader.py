@@ -1,5 +1,6 @@
 """The store as its readers see it: opened read-only, no transaction held between two questions (a held one makes the log grow)."""
 
+import sqlite3
 from pathlib import Path
 from urllib.parse import quote
 
@@ -30,9 +31,8 @@ class StoreReader:
         if not path.is_file():
             raise InputError(f"There is no store {path}. `pbm watch` makes it.")
         self.path = path
-        self._engine = create_engine(
-            f"sqlite:///file:{quote(str(path.absolute()))}?mode=ro&uri=true", poolclass=NullPool
-        )
+        place = f"file:{quote(str(path.absolute()))}?mode=ro"
+        self._engine = create_engine("sqlite://", creator=lambda: sqlite3.connect(place, uri=True), poolclass=NullPool)
         with told(path), self._engine.connect() as connection:
             store_rows.check_version(connection, path)
 

@@ -14,6 +14,7 @@ from zoneinfo import ZoneInfo
 from pbm.methods.statistics import STATISTICS
 from pbm.records.alarm import Alarm, OnsetEstimate
 from pbm.records.laboratory import Analyte
+from pbm.stages.estimate import WINDOW
 
 _MOST_DECIMALS = 12
 
@@ -56,9 +57,15 @@ def _estimated(estimate: OnsetEstimate, decimals: int, unit: str, today: date, z
     expected = f"{estimate.expected_unreliable:.0f}"
     return [
         f"about {estimate.size:+.{decimals}f} {unit} ({abs(estimate.size_in_tea):.1f} TEa)",
-        f"since ~{_clock(estimate.onset, today, zone)} ({estimate.results} result{'s' * (estimate.results != 1)})",
+        f"since ~{_clock(estimate.onset, today, zone)} ({_counted(estimate.results)})",
         f"expect {expected if expected != '0' else '<1'} unreliable",
     ]
+
+
+def _counted(results: int) -> str:
+    if results >= WINDOW:
+        return f"{results} results or more"
+    return f"{results} result{'s' * (results != 1)}"
 
 
 def _clock(time: int, today: date, zone: ZoneInfo) -> str:

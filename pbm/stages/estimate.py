@@ -18,6 +18,7 @@ from pbm.methods.unreliable import ErrorModel, chance_unreliable
 from pbm.records.alarm import OnsetEstimate
 from pbm.records.result import Result
 
+WINDOW = 1_000  # results offered, the most from which an onset is estimated
 # Statistics that leave their limits on the side to which results have moved; an SD or a share outside does not tell it.
 TELL_THE_SIDE = ("mean", "median", "ewma", "cusum", "batch")
 

@@ -20,7 +20,8 @@ from pbm.records.reading import Chunk, Reading, SetAside
 from pbm.records.result import Result
 from pbm.records.snapshot import DUPLICATE, LATE, REPEAT, RERUN, Batch, Earlier, Edition, KeptResult, Snapshot
 from pbm.records.stream import RERUN_HOURS, StreamName
-from pbm.stages.monitor import WINDOW, StreamMonitor
+from pbm.stages.estimate import WINDOW
+from pbm.stages.monitor import StreamMonitor
 from pbm.stages.reading import Reader
 
 SLACK = 90 * 60_000_000  # microseconds; more than the hour that clocks are put back

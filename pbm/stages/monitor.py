@@ -22,15 +22,14 @@ from pbm.records.plan import MonitorPlan
 from pbm.records.result import Result
 from pbm.records.snapshot import Snapshot
 from pbm.records.stream import StreamName
-from pbm.stages.estimate import TELL_THE_SIDE, Estimator, Offered
+from pbm.stages.estimate import TELL_THE_SIDE, WINDOW, Estimator, Offered
 from pbm.stages.from_plan import error_model, in_control, limits, preparation, tracker
 
-WINDOW = 1_000  # results offered, the most from which an onset is estimated
 STATE_VERSION = 1
 # Version, episode, number of floats in the statistic's state, admitted, dropped, value of the statistic; then those floats.
 _HEAD = struct.Struct("<HbIQQd")
 # Settings that only tell where the others came from, or what an alarm is worth, do not interrupt a state.
-_ONLY_TOLD = {"watches", "limits_interval", "budget_per_day", "slope", "inflation", "train", "held_out"}
+_ONLY_TOLD = {"watches", "limits_interval", "budget_per_day", "slope", "inflation", "wander", "train", "held_out"}
 
 
 class StreamMonitor:

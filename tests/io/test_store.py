@@ -223,6 +223,16 @@ def test_readers_see_what_is_kept_while_the_writer_goes_on(path: Path) -> None:
     assert StoreReader(path).alarms() == [ALARM]
 
 
+@pytest.mark.parametrize("name", ["two words", "50 % of #1", "why?", "Übersee", "a&b=c"])
+def test_a_folder_may_have_any_name(tmp_path: Path, name: str) -> None:
+    path = tmp_path / name / "watch.sqlite"
+    path.parent.mkdir()
+    with begun(path) as store:
+        store.keep(batch())
+    assert StoreReader(path).alarms() == [ALARM]
+    assert {file.name.removeprefix("watch.sqlite") for file in path.parent.iterdir()} <= {"", ".lock", "-wal", "-shm"}
+
+
 def test_a_reader_cannot_write(path: Path) -> None:
     begun(path).close()
     reader = StoreReader(path)

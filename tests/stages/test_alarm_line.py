@@ -8,6 +8,7 @@ import pytest
 from pbm.records.alarm import Alarm, OnsetEstimate
 from pbm.records.laboratory import Analyte
 from pbm.stages.alarm_line import alarm_line
+from pbm.stages.estimate import WINDOW
 from tests.live_laboratory import SODIUM_2, laboratory
 
 LAB = laboratory()
@@ -68,6 +69,11 @@ def test_expected_unreliable_results_are_told_in_whole_numbers(expected: float, 
 
 def test_one_result_is_one_result() -> None:
     assert "(1 result)" in line(replace(ALARM, estimate=replace(ALARM.estimate, results=1)))  # type: ignore[type-var]
+
+
+def test_beyond_the_results_that_are_looked_at_there_may_be_more() -> None:
+    given = replace(ALARM.estimate, results=WINDOW)  # type: ignore[type-var]
+    assert f"({WINDOW} results or more)" in line(replace(ALARM, estimate=given))
 
 
 def test_digits_follow_the_step_in_which_results_are_reported() -> None:

@@ -1,6 +1,7 @@
 """Which results count on the live feed, and in which order."""
 
 import itertools
+from collections.abc import Sequence
 from dataclasses import replace
 
 import pytest
@@ -35,11 +36,11 @@ def live() -> Live:
     return Live(LAB, plan(sodium_line_1=[ewma()]), "sha")
 
 
-def chunk(items: list[Result | SetAside], source: str = "feed", edition: int = 1) -> Chunk:
+def chunk(items: Sequence[Result | SetAside], source: str = "feed", edition: int = 1) -> Chunk:
     return Chunk(source, edition, items, "position")
 
 
-def take(watch: Live, *chunks: list[Result | SetAside], earlier: Earlier | None = None) -> Batch:
+def take(watch: Live, *chunks: Sequence[Result | SetAside], earlier: Earlier | None = None) -> Batch:
     return watch.take([chunk(items) for items in chunks], earlier or Earlier())
 
 

@@ -9,7 +9,8 @@ from pbm.errors import FeedError
 from pbm.records.alarm import Alarm, OnsetEstimate
 from pbm.records.plan import MonitorPlan
 from pbm.records.result import Result
-from pbm.stages.monitor import WINDOW, StreamMonitor, settings_hash
+from pbm.stages.estimate import WINDOW
+from pbm.stages.monitor import StreamMonitor, settings_hash
 from tests.live_laboratory import LAB_TOML, MINUTE, SODIUM, START, TSH, ewma, laboratory, results, shifted_values
 
 LAB = laboratory()
