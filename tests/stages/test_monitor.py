@@ -116,7 +116,7 @@ def test_where_controls_go_by_counts_the_last_one_is_not_known() -> None:
 
 def test_only_what_decides_the_course_of_a_monitor_makes_its_settings() -> None:
     base = settings_hash(ewma())
-    for told in ({"slope": 0.7}, {"inflation": 2.0}, {"budget_per_day": 1.0}):
+    for told in ({"slope": 0.7}, {"inflation": 2.0}, {"budget_per_day": 1.0}, {"watches": "imprecision"}):
         assert settings_hash(ewma(**told)) == base
     for decides in (
         {"weight": 0.2},
