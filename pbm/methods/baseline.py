@@ -2,7 +2,7 @@
 
     z = y - b(ward, hour of week),   b = effect of the ward + effect of the hour
 
-The additive effects are fitted on the means of all ward-hour cells, weighted by their counts, and shrunk towards 0 where a ward or an
+The additive effects are fitted by least squares, and shrunk towards 0 where a ward or an
 hour is thin: an effect with sampling variance s^2 / n among effects with variance t^2 is multiplied by t^2 / (t^2 + s^2 / n). A ward
 never seen in training has effect 0. The table is part of the plan and is never refitted silently.
 
@@ -19,6 +19,7 @@ from pbm.methods.jit import Floats, Integers
 
 HOURS = 168
 SIGNIFICANT = 4
+RIDGE = 1e-9
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,40 +80,38 @@ def fit_baseline(y: Floats, mix: Mix) -> Baseline:
     """
     taken = ~np.isnan(y)
     y, mix = y[taken], mix.rows(taken)
-    shape = (len(mix.wards), HOURS)
-    count = np.bincount(mix.ward * HOURS + mix.hour, minlength=shape[0] * HOURS)
-    used = np.flatnonzero(count)
-    mean = np.bincount(mix.ward * HOURS + mix.hour, weights=y, minlength=len(count))[used] / count[used]
-    ward, hour = _effects(mean - y.mean(), count[used], used // HOURS, used % HOURS, shape)
-    counts = count.reshape(shape)
-    ward, hour = _centred(ward, counts.sum(axis=1)), _centred(hour, counts.sum(axis=0))
-    noise = float((y - y.mean() - ward[mix.ward] - hour[mix.hour]).var())
-    wards = _shrunk(ward, counts.sum(axis=1), noise)
-    hours = _shrunk(hour, counts.sum(axis=0), noise)
+    level, shape = y.mean(), (len(mix.wards), HOURS)
+    cell = mix.ward * HOURS + mix.hour
+    count = np.bincount(cell, weights=np.ones(len(y)), minlength=shape[0] * HOURS).reshape(shape)
+    total = np.bincount(cell, weights=y - level, minlength=shape[0] * HOURS).reshape(shape)
+    ward, hour = _effects(total, count)
+    ward, hour = _centred(ward, count.sum(axis=1)), _centred(hour, count.sum(axis=0))
+    noise = float((y - level - ward[mix.ward] - hour[mix.hour]).var())
+    wards = _shrunk(ward, count.sum(axis=1), noise)
+    hours = _shrunk(hour, count.sum(axis=0), noise)
     return Baseline(tuple(zip(mix.wards, wards, strict=True)), tuple(hours))
 
 
-def _effects(
-    mean: Floats, count: Integers, ward: Integers, hour: Integers, shape: tuple[int, int]
-) -> tuple[Floats, Floats]:
-    """Additive effects of wards and hours on cell means, by weighted least squares.
+def _effects(total: Floats, count: Floats) -> tuple[Floats, Floats]:
+    """Additive effects of wards and hours by least squares, from the total and count of each ward and hour.
 
-    The normal equations of all effects are singular by one (a constant may move between wards and hours), or by more where wards never
-    share an hour; their smallest solution is taken.
+    The normal equations are singular: a constant may move between wards and hours, and more where wards never share an hour. A ridge too
+    small to be seen in the effects picks their smallest solution.
     """
-    design = np.hstack([np.eye(shape[0])[ward], np.eye(shape[1])[hour]])
-    weighted = design * count[:, None]
-    found: Floats = np.linalg.lstsq(design.T @ weighted, weighted.T @ mean, rcond=1e-10)[0].astype(np.float64)
-    return found[: shape[0]], found[shape[0] :]
+    wards, hours = count.sum(axis=1), count.sum(axis=0)
+    normal = np.block([[np.diag(wards), count], [count.T, np.diag(hours)]])
+    normal += RIDGE * count.sum() * np.eye(len(normal))
+    found = np.linalg.solve(normal, np.concatenate([total.sum(axis=1), total.sum(axis=0)])).astype(np.float64)
+    return found[: len(wards)], found[len(wards) :]
 
 
-def _centred(effects: Floats, counts: Integers) -> Floats:
+def _centred(effects: Floats, counts: Floats) -> Floats:
     """Effects with mean 0 over the results, and 0 where there is none (the level itself belongs to the centre)."""
     centred: Floats = np.where(counts > 0, effects - np.average(effects, weights=counts), 0.0)
     return centred
 
 
-def _shrunk(effects: Floats, counts: Integers, noise: float) -> list[float]:
+def _shrunk(effects: Floats, counts: Floats, noise: float) -> list[float]:
     """Shrunk towards 0 by the share of sampling variance, and rounded as the plan stores them."""
     seen = counts > 0
     sampling = noise / np.maximum(counts, 1)

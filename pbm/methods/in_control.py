@@ -2,10 +2,13 @@
 
     slope      d(mean of admitted values) / d(true shift), both on the statistic's scale
     inflation  variance of a mean of successive values over what independence would give
+    wander     SD of the slow wandering of the level: of means over a day beyond what values that hang together briefly would give
 
 For fixed truncation limits on normal values the slope is Var(admitted) / Var(all); here it is measured on the results themselves, with
 rounding and censoring, at half a TEa to either side.
 """
+
+import math
 
 import numpy as np
 
@@ -25,6 +28,17 @@ def inflation(z: Floats, batch: int = BATCH) -> float:
     if len(whole) < 2 or (variance := float(admitted.var())) == 0:
         return 1.0
     return max(1.0, batch * float(whole.mean(axis=1).var(ddof=1)) / variance)
+
+
+def wander(z: Floats, a_day: int) -> float:
+    """SD of the in-control level from day to day; z (n,) holds not a number where dropped, `a_day` is the number of values a day."""
+    admitted = z[~np.isnan(z)]
+    batch = max(a_day, BATCH)
+    whole = admitted[: len(admitted) // batch * batch].reshape(-1, batch)
+    if len(whole) < 2:
+        return 0.0
+    brief = float(admitted.var()) * inflation(z) / batch
+    return math.sqrt(max(float(whole.mean(axis=1).var(ddof=1)) - brief, 0.0))
 
 
 def slope(stretch: Stretch, preparation: Preparation) -> float:

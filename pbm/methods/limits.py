@@ -28,7 +28,7 @@ from pbm.methods.jit import Floats, Integers
 from pbm.methods.lattice import lattice_of
 
 TAIL_EPISODES = 30
-TAIL_SEARCH = 12
+TAIL_SEARCH = 9
 ROUNDING = 1e-9  # of the centre: a path that stays so near to it shows rounding errors and no tail
 
 

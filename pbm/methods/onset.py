@@ -1,9 +1,11 @@
 """Where an error began and how large it is, judged from the results before an alarm.
 
 For a step at admitted value k of the last n, with in-control centre c and variance v of the values and an inflation factor f for their
-autocorrelation, the mean of the n - k + 1 values since has
+autocorrelation and a slow wandering of the level of variance t^2, the mean of the n - k + 1 values since has
 
-    log likelihood gain  g(k) = (n - k + 1) (mean - c)^2 / (2 v f),   size on the statistic's scale = mean - c
+    log likelihood gain  g(k) = (mean - c)^2 / (2 (v f / (n - k + 1) + t^2)),   size on the statistic's scale = mean - c
+
+Without the wandering a long, small offset, such as the patient mix of a day brings, would be preferred to a short, large error.
 
 The steps are weighed by exp(g(k)) times the chance that the control events since would all have passed under that size. The size is read
 off with the slope of the admitted mean (truncation lets a truncated mean move by only Var(admitted) / Var(all) of a true shift).
@@ -30,12 +32,15 @@ class InControl:
         Variance of a mean of many values over what independence would give (1 or more).
     slope
         Movement of the admitted mean for a unit of true shift.
+    wander
+        SD of the slow wandering of the level.
     """
 
     centre: float
     spread: float
     inflation: float = 1.0
     slope: float = 1.0
+    wander: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -83,7 +88,8 @@ def find_onset(z: Floats, in_control: InControl, side: int, log_chance_passed: F
     deviation = side * (z - in_control.centre)
     since = np.arange(len(z), 0, -1)
     mean = np.cumsum(deviation[::-1])[::-1] / since
-    gain = since * np.maximum(mean, 0.0) ** 2 / (2 * in_control.spread**2 * in_control.inflation)
+    variance = in_control.spread**2 * in_control.inflation / since + in_control.wander**2
+    gain = np.maximum(mean, 0.0) ** 2 / (2 * variance)
     if log_chance_passed is not None:
         gain = gain + log_chance_passed
     weight = np.exp(gain - gain.max())

@@ -233,6 +233,8 @@ class MonitorPlan(Written):
         Movement of the mean of admitted values for a unit of true shift.
     inflation
         Variance of a mean of successive values over what independence would give.
+    wander
+        SD of the slow wandering of the values' level from day to day.
     train
         Alarms on the training days.
     held_out
@@ -259,6 +261,7 @@ class MonitorPlan(Written):
     spread: Positive
     slope: Positive = 1.0
     inflation: Positive = 1.0
+    wander: NotNegative = 0.0
     train: Training | None = None
     held_out: HeldOut | None = None
 

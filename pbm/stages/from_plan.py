@@ -88,4 +88,4 @@ def limits(monitor: MonitorPlan) -> Limits:
 def in_control(monitor: MonitorPlan) -> InControl:
     """In-control behaviour of a monitor's admitted values, for the estimate of an onset."""
     level = monitor.centre if monitor.level is None else monitor.level
-    return InControl(level, monitor.spread, monitor.inflation, monitor.slope)
+    return InControl(level, monitor.spread, monitor.inflation, monitor.slope, monitor.wander)

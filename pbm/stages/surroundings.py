@@ -74,12 +74,9 @@ class Surroundings:
         events = control_events(int(time[0]), int(time[-1]), self.controls.times, zone, self.controls.on_weekdays())
         return np.searchsorted(time, events, side="left").astype(np.int64)
 
-    def onsets(self, time: Integers, first: int, last: int, count: int) -> Onsets:
-        """Onsets among results first ... last - 1, each followed to the horizon or to `last`.
-
-        The horizon is seven days, or half of a shorter stretch.
-        """
-        horizon = self.horizon_days(time, first, last) * MICROSECONDS_PER_DAY
+    def onsets(self, time: Integers, first: int, last: int, count: int, horizon_days: float = HORIZON_DAYS) -> Onsets:
+        """Onsets among results first ... last - 1, each followed to the horizon (at most half of the stretch) or to `last`."""
+        horizon = min(horizon_days, self.horizon_days(time, first, last)) * MICROSECONDS_PER_DAY
         latest = int(np.searchsorted(time, time[last - 1] - horizon, side="right"))
         at = draw_onsets(first, max(latest, first + 1), count, self.random("onsets", count))
         end = np.minimum(np.searchsorted(time, time[at] + horizon, side="right"), last)

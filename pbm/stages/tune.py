@@ -18,7 +18,7 @@ from pbm.methods.chain import Preparation, Tracker
 from pbm.methods.clock_time import local_days
 from pbm.methods.expected import Onsets, follow
 from pbm.methods.faults import Fault
-from pbm.methods.in_control import inflation, slope
+from pbm.methods.in_control import inflation, slope, wander
 from pbm.methods.intervals import poisson_interval
 from pbm.methods.jit import Integers
 from pbm.methods.limits import CalibratedLimits, calibrated_limits
@@ -39,11 +39,12 @@ from pbm.records.plan import (
 )
 from pbm.records.stream import StreamHistory
 from pbm.stages.from_plan import faults_of, planned_parameters
-from pbm.stages.surroundings import Surroundings
+from pbm.stages.surroundings import HORIZON_DAYS, Surroundings
 
 FEWEST_DAYS = 20
 FEWEST_RESULTS = 1_000
-FIRST_ONSETS, ONSETS, FINALISTS = 40, 250, 12
+FIRST_ONSETS, FIRST_HORIZON_DAYS = 40, 2.0
+ONSETS, FINALISTS = 250, 12
 WINDOWS = 50  # a window is no longer than this part of the training results
 NEEDED_AT_MOST = 5_000
 WORTHWHILE, SOME_GAIN = 0.1, 0.02
@@ -163,10 +164,10 @@ class _Tuning:
         """Episodes that the budget allows in the training days."""
         return self.around.lab.budget_of(self.around.name.analyte).per_day * self.split.training_days
 
-    def trials(self, training: Stretch, count: int) -> list[tuple[Trial, float]]:
+    def trials(self, training: Stretch, count: int, horizon_days: float = HORIZON_DAYS) -> list[tuple[Trial, float]]:
         """Every fault at the same onsets among the training results after the first day."""
         first = int(np.searchsorted(self.split.days[: self.split.at], self.split.days[0], side="right"))
-        onsets = self.around.onsets(training.time, first, len(training), count)
+        onsets = self.around.onsets(training.time, first, len(training), count, horizon_days)
         return [
             (trial(training, fault, onsets, self.around.chance_of_passing(fault, onsets).passed), weight)
             for fault, weight in faults_of(self.around.analyte)
@@ -186,7 +187,8 @@ class _Tuning:
         runners = limited(training, given, self.expected)
         if not runners:
             return None
-        score = scores(training, runners, self.trials(training, FIRST_ONSETS), self.stopper(training))
+        first = self.trials(training, FIRST_ONSETS, FIRST_HORIZON_DAYS)
+        score = scores(training, runners, first, self.stopper(training))
         finalists = best_of(runners, score, FINALISTS)
         finalists += limited(training, _with_baseline([r.candidate for r in finalists], training), self.expected)
         score = scores(training, finalists, self.trials(training, ONSETS), self.stopper(training))
@@ -248,6 +250,7 @@ class _Tuning:
             spread=float(np.nanstd(z)),
             slope=slope(training, preparation),
             inflation=inflation(z),
+            wander=wander(z, round(self.per_day)),
             train=Training(days=self.split.training_days, episodes=len(episodes(tracker.path(z), limits.limits))),
             held_out=self._held_out(preparation, tracker, limits.limits, budget),
         )
