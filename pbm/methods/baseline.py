@@ -80,16 +80,20 @@ def fit_baseline(y: Floats, mix: Mix) -> Baseline:
     """
     taken = ~np.isnan(y)
     y, mix = y[taken], mix.rows(taken)
-    level, shape = y.mean(), (len(mix.wards), HOURS)
-    cell = mix.ward * HOURS + mix.hour
-    count = np.bincount(cell, weights=np.ones(len(y)), minlength=shape[0] * HOURS).reshape(shape)
-    total = np.bincount(cell, weights=y - level, minlength=shape[0] * HOURS).reshape(shape)
+    level = y.mean()
+    count, total = _by_ward_and_hour(np.ones_like(y), mix), _by_ward_and_hour(y - level, mix)
     ward, hour = _effects(total, count)
     ward, hour = _centred(ward, count.sum(axis=1)), _centred(hour, count.sum(axis=0))
     noise = float((y - level - ward[mix.ward] - hour[mix.hour]).var())
     wards = _shrunk(ward, count.sum(axis=1), noise)
     hours = _shrunk(hour, count.sum(axis=0), noise)
     return Baseline(tuple(zip(mix.wards, wards, strict=True)), tuple(hours))
+
+
+def _by_ward_and_hour(amount: Floats, mix: Mix) -> Floats:
+    """Sum of an amount over the results of each ward and hour, shape (wards, 168)."""
+    cells = np.bincount(mix.ward * HOURS + mix.hour, weights=amount, minlength=len(mix.wards) * HOURS)
+    return cells.astype(np.float64).reshape(-1, HOURS)
 
 
 def _effects(total: Floats, count: Floats) -> tuple[Floats, Floats]:
