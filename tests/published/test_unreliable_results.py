@@ -44,7 +44,9 @@ def passing(first: float, later: float, events: int) -> np.ndarray:
         (100, 1.0, 1.0, 50.5, 0.0),
     ],
 )
-def test_schedule_alone_gives_the_closed_forms(spacing: int, first: float, later: float, total: float, final: float) -> None:
+def test_schedule_alone_gives_the_closed_forms(
+    spacing: int, first: float, later: float, total: float, final: float
+) -> None:
     events = int(np.ceil(np.log(1e-14) / np.log(1 - later))) if later < 1 else 2
     onsets = onsets_over_a_bracket(spacing, events)
     found = exposure(onsets, np.ones((events + 2) * spacing), passing(first, later, events))
@@ -107,7 +109,9 @@ def test_controls_and_an_ewma_monitor_together_give_the_published_gain() -> None
     onsets = onsets_over_a_bracket(100, events)
     found = exposure(onsets, np.ones((events + 2) * 100), passing(caught, caught, events))
     published("E(N), M=100, 1-3s N=2 alone", SOURCE, 292.802, float(found.unreliable(onsets.length).mean()), 5e-4)
-    published("E(N final), M=100, 1-3s N=2 alone", SOURCE, 207.263, float(found.unreliable_final(onsets.length).mean()), 5e-4)
+    published(
+        "E(N final), M=100, 1-3s N=2 alone", SOURCE, 207.263, float(found.unreliable_final(onsets.length).mean()), 5e-4
+    )
     runs = 400_000
     times = ewma_alarm_times(runs)
     place = np.random.default_rng(5).integers(0, 100, runs)
