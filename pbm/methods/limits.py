@@ -124,11 +124,23 @@ def quick_limits(path: Floats, centre: float, expected: float, upper: float = 0.
 
 @dataclass(frozen=True, slots=True)
 class CalibratedLimits:
-    """Limits with the 90 % intervals of the day-block bootstrap, each (low, high); None for a side without a limit."""
+    """Limits for a budget.
+
+    Attributes
+    ----------
+    limits
+        Predictive limits.
+    low_interval, high_interval
+        90 % interval (low, high) of each from the day-block bootstrap; None for a side without a limit.
+    episodes
+        Episodes of the training path at these limits. A statistic on a lattice may stay well below what the budget allows, since its
+        limits can only lie between lattice points.
+    """
 
     limits: Limits
     low_interval: tuple[float, float] | None
     high_interval: tuple[float, float] | None
+    episodes: int
 
 
 def _resampled_days(z: Floats, first: Integers, random: np.random.Generator) -> Floats:
@@ -197,7 +209,7 @@ def calibrated_limits(
     ends = {side: _side_limit(path, centre, side, found, allowed[side]) for side, found in drawn.items()}
     intervals = {side: _side_interval(centre, side, found, allowed[side]) for side, found in drawn.items()}
     limits = Limits(ends.get(-1, -math.inf), ends.get(1, math.inf), centre, REARM)
-    return CalibratedLimits(limits, intervals.get(-1), intervals.get(1))
+    return CalibratedLimits(limits, intervals.get(-1), intervals.get(1), count_episodes(path, limits))
 
 
 def _side_limit(path: Floats, centre: float, side: int, tails: list[Tail], expected: float) -> float:

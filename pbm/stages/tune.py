@@ -251,7 +251,7 @@ class _Tuning:
             slope=slope(training, preparation),
             inflation=inflation(z),
             wander=wander(z, round(self.per_day)),
-            train=Training(days=self.split.training_days, episodes=len(episodes(tracker.path(z), limits.limits))),
+            train=Training(days=self.split.training_days, episodes=limits.episodes),
             held_out=self._held_out(preparation, tracker, limits.limits, budget),
         )
 

@@ -2,7 +2,7 @@
 
 import math
 
-from pbm.methods.intervals import binomial_interval, poisson_interval
+from pbm.methods.intervals import binomial_interval, poisson_interval, rate_ratio, rates_differ
 from tests.published.record import published
 from tests.published.values import intervals as values
 from tests.published.values import lines
@@ -37,3 +37,12 @@ def test_exact_intervals_of_rates() -> None:
         found = (float(events), *poisson_interval(int(events), 0.95))
         for name, figure, got in zip(("rate", "low", "high"), (rate, low, high), found, strict=True):
             published(f"{events} events on {base}: {name}", source, figure, got / float(base), 0.0)
+
+
+def test_the_exact_comparison_of_two_rates() -> None:
+    """11 events on 800 against 21 on 3011. Call READ in the reference manual of the R base library (`poisson.test`), results REPRO."""
+    source = "R base library, poisson.test example (READ), REPRO"
+    found = rate_ratio(11, 800, 21, 3011, 0.95)
+    for name, printed, ours in zip(("ratio", "low", "high"), ("1.971488", ".858426", "4.277266"), found, strict=True):
+        published(f"two rates, {name}", source, printed, ours, 5e-7)
+    published("two rates, p", source, ".0796686", rates_differ(11, 800, 21, 3011), 5e-8)
