@@ -42,16 +42,22 @@ def wander(z: Floats, a_day: int) -> float:
 
 
 def slope(stretch: Stretch, preparation: Preparation) -> float:
-    """Movement of the admitted mean for a unit of true shift at the median result."""
-    return max(float(np.mean([_moved(stretch, preparation, sign) for sign in (-1, 1)])), SMALLEST_SLOPE)
+    """Movement of the admitted mean for a unit of true shift at the median result; 1 where neither side can be told.
+
+    A side cannot be told where the shift takes the median result to where it has no transform, or leaves no result to admit.
+    """
+    moved = [_moved(stretch, preparation, sign) for sign in (-1, 1)]
+    told = [movement for movement in moved if math.isfinite(movement)]
+    return max(float(np.mean(told)), SMALLEST_SLOPE) if told else 1.0
 
 
 def _moved(stretch: Stretch, preparation: Preparation, sign: int) -> float:
     fault = Fault("shift", 0.5, "TEa", sign)
     typical = np.median(stretch.value, keepdims=True)
-    true = preparation.scale(float((typical + fault.bias(typical, stretch.error))[0])) - preparation.scale(
-        float(typical[0])
-    )
+    there = float((typical + fault.bias(typical, stretch.error))[0])
+    true = preparation.scale(there) - preparation.scale(float(typical[0]))
     values, censor = inflict(stretch.value, stretch.censor, fault, stretch.error, stretch.reporting, stretch.chance)
     shifted, base = preparation.all(values, censor, stretch.mix), stretch.prepared(preparation)
+    if true == 0 or not np.isfinite(shifted).any():
+        return math.nan
     return float(np.nanmean(shifted) - np.nanmean(base)) / true
