@@ -7,8 +7,9 @@ autocorrelation and a slow wandering of the level of variance t^2, the mean of t
 
 Without the wandering a long, small offset, such as the patient mix of a day brings, would be preferred to a short, large error.
 
-The steps are weighed by exp(g(k)) times the chance that the control events since would all have passed under that size. The size is read
-off with the slope of the admitted mean (truncation lets a truncated mean move by only Var(admitted) / Var(all) of a true shift).
+The steps are weighed by exp(g(k)) times the chance that the control events since would all have passed under that size. The size is the
+weighted mean of theirs: that of the heaviest step alone would be the largest that chance allows. It is read off with the slope of the
+admitted mean (truncation lets a truncated mean move by only Var(admitted) / Var(all) of a true shift).
 
 Source of the likelihood: "Inference about the change-point in a sequence of random variables", Biometrika 1970;57:1-17.
 """
@@ -45,14 +46,14 @@ class InControl:
 
 @dataclass(frozen=True, slots=True)
 class Onset:
-    """Most likely step before an alarm.
+    """The step before an alarm.
 
     Attributes
     ----------
     start, earliest, latest
-        Index of the first affected value and the ends of its 90 % set.
+        Index of the most likely first affected value and the ends of its 90 % set.
     shift
-        True shift on the statistic's scale.
+        True shift on the statistic's scale, averaged over where the step may lie.
     weight : (n,)
         Posterior weight of a step at each value; sums to 1.
     """
@@ -87,16 +88,16 @@ def find_onset(z: Floats, in_control: InControl, side: int, log_chance_passed: F
         raise ValueError("an onset needs at least one value")
     deviation = side * (z - in_control.centre)
     since = np.arange(len(z), 0, -1)
-    mean = np.cumsum(deviation[::-1])[::-1] / since
+    mean = np.maximum(np.cumsum(deviation[::-1])[::-1] / since, 0.0)
     variance = in_control.spread**2 * in_control.inflation / since + in_control.wander**2
-    gain = np.maximum(mean, 0.0) ** 2 / (2 * variance)
+    gain = mean**2 / (2 * variance)
     if log_chance_passed is not None:
         gain = gain + log_chance_passed
     weight = np.exp(gain - gain.max())
     weight /= weight.sum()
     start = int(np.argmax(weight))
     likely = np.flatnonzero(weight >= _density_cut(weight, 0.9))
-    return Onset(start, int(likely[0]), int(likely[-1]), side * float(mean[start]) / in_control.slope, weight)
+    return Onset(start, int(likely[0]), int(likely[-1]), side * float(weight @ mean) / in_control.slope, weight)
 
 
 def _density_cut(weight: Floats, level: float) -> float:
