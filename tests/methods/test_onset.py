@@ -86,16 +86,26 @@ def test_what_must_hold_whatever_the_values(z: Floats, side: int, inflation: flo
     assert mirrored.shift == -found.shift and (mirrored.weight == found.weight).all()
 
 
-@given(VALUES, SIDE)
-def test_the_weights_are_the_likelihoods_written_out(z: Floats, side: int) -> None:
+@given(VALUES, SIDE, st.sampled_from([0.0, 0.7, 5.0]))
+def test_the_weights_are_the_likelihoods_written_out(z: Floats, side: int, wander: float) -> None:
+    in_control = InControl(0.0, 2.0, 1.5, wander=wander)
     gains = []
     for k in range(len(z)):
         mean = math.fsum(z[k:]) / (len(z) - k)
-        gains.append((len(z) - k) * max(side * mean, 0) ** 2 / (2 * 2.0**2 * 1.5))
+        gains.append(max(side * mean, 0) ** 2 / (2 * (2.0**2 * 1.5 / (len(z) - k) + wander**2)))
     weight = np.exp(np.array(gains) - max(gains))
-    np.testing.assert_allclose(
-        find_onset(z, InControl(0.0, 2.0, 1.5), side).weight, weight / weight.sum(), rtol=1e-6, atol=1e-12
-    )
+    np.testing.assert_allclose(find_onset(z, in_control, side).weight, weight / weight.sum(), rtol=1e-6, atol=1e-12)
+
+
+def test_a_level_that_wanders_is_not_taken_for_a_long_small_error() -> None:
+    """300 values a little high, as a day's patients may be, then 10 far off."""
+    z = np.concatenate([np.zeros(200), np.full(300, 0.45), np.full(10, 2.5)]) + 0.1 * child(
+        9, "wander"
+    ).standard_normal(510)
+    assert find_onset(z, STANDARD, 1).start == pytest.approx(200, abs=5)
+    wary = find_onset(z, replace(STANDARD, wander=0.3), 1)
+    assert wary.start == pytest.approx(500, abs=3)
+    assert wary.shift > 1.5
 
 
 @given(VALUES, SIDE, st.floats(0.05, 1.0))
