@@ -4,6 +4,7 @@ import sys
 import time
 from collections.abc import Sequence
 from dataclasses import dataclass, field
+from functools import partial
 from pathlib import Path
 
 import typer
@@ -58,7 +59,7 @@ def watch_feed(folder: LabFolder, source: str, *, json: bool, once: bool, speed:
         work.say(what_is_watched(lab, plan, live, source), *[begun] * changed)
         work.say(*(f"Open: {work.line(one)}" for one in store.open_alarms()))
         try:
-            run([opened.feed], work.take)
+            run([opened.feed], partial(read_chunk, reader=opened.reader), work.take)
         finally:
             work.end()
 
@@ -120,16 +121,15 @@ class _Work:
     json: bool
     account: Account = field(init=False)
     _next_tick: float = 0.0
-    _ticked: bool = False
+    _ticked: int = 0
 
     def __post_init__(self) -> None:
         self.account = Account(self.live)
 
     def take(self, chunks: Sequence[Chunk]) -> None:
         """Take a batch: what is printed is kept."""
-        read = [read_chunk(chunk, self.opened.reader) for chunk in chunks]
-        earlier = self.store.earlier(item for chunk in read for item in chunk.items if isinstance(item, Result))
-        batch = self.live.take(read, earlier)
+        earlier = self.store.earlier(item for chunk in chunks for item in chunk.items if isinstance(item, Result))
+        batch = self.live.take(chunks, earlier)
         self.store.keep(batch)
         self.say(*self.opened.notices(), *self.account.add(batch))
         for _, alarm in batch.alarms:
@@ -163,10 +163,11 @@ class _Work:
         """On a terminal, show that results come in."""
         if sys.stderr.isatty() and time.monotonic() >= self._next_tick:
             self._next_tick = time.monotonic() + _TICK
-            self._ticked = True
+            self._ticked = len(self.account.brief)
             typer.echo(f"\r{self.account.brief}", err=True, nl=False)
 
     def _clear_tick(self) -> None:
         if self._ticked:
-            self._ticked = False
-            typer.echo("\r\033[K", err=True, nl=False)
+            # Written over with blanks: not every terminal knows how to erase a line.
+            typer.echo(f"\r{' ' * self._ticked}\r", err=True, nl=False)
+            self._ticked = 0

@@ -23,6 +23,7 @@ POLL = 0.15  # seconds
 _READ = 2**16
 _MICROSECONDS = 1e6
 
+Prepare = Callable[[Chunk], Chunk]
 Take = Callable[[Sequence[Chunk]], None]
 
 
@@ -126,22 +127,24 @@ def _lines(descriptor: int) -> Iterator[list[bytes]]:
         yield [held]
 
 
-def run(feeds: Sequence[Feed], take: Take) -> None:
+def run(feeds: Sequence[Feed], prepare: Prepare, take: Take) -> None:
     """Read feeds until all have ended or a signal stops them.
 
     Parameters
     ----------
     feeds
         Where results come from.
+    prepare
+        Called with each chunk as it comes, while the batch before is being kept.
     take
-        Called in a thread of its own, one call at a time, with the chunks that queued meanwhile; its errors end the run.
+        Called in a thread of its own, one call at a time, with the prepared chunks that queued meanwhile; its errors end the run.
     """
-    asyncio.run(_run(feeds, take))
+    asyncio.run(_run(feeds, prepare, take))
 
 
-async def _run(feeds: Sequence[Feed], take: Take) -> None:
+async def _run(feeds: Sequence[Feed], prepare: Prepare, take: Take) -> None:
     queue = asyncio.Queue[Chunk | None](QUEUE)
-    reading = asyncio.create_task(_read_until_stopped(feeds, queue))
+    reading = asyncio.create_task(_read_until_stopped(feeds, prepare, queue))
     loop = asyncio.get_running_loop()
     with ThreadPoolExecutor(1) as worker:
         try:
@@ -168,13 +171,13 @@ async def _queued(queue: asyncio.Queue[Chunk | None]) -> list[Chunk]:
     return batch
 
 
-async def _read_until_stopped(feeds: Sequence[Feed], queue: asyncio.Queue[Chunk | None]) -> None:
+async def _read_until_stopped(feeds: Sequence[Feed], prepare: Prepare, queue: asyncio.Queue[Chunk | None]) -> None:
     """Fill the queue until every feed has ended, one has failed, or a signal came; then mark its end."""
     stopped = asyncio.Event()
     for number in (signal.SIGINT, signal.SIGTERM):
         asyncio.get_running_loop().add_signal_handler(number, stopped.set)
     stop = asyncio.create_task(stopped.wait())
-    readers: asyncio.Future[list[None]] = asyncio.gather(*(_fill(feed, queue) for feed in feeds))
+    readers: asyncio.Future[list[None]] = asyncio.gather(*(_fill(feed, prepare, queue) for feed in feeds))
     try:
         ended, _ = await asyncio.wait((stop, readers), return_when=asyncio.FIRST_COMPLETED)
     finally:
@@ -186,6 +189,6 @@ async def _read_until_stopped(feeds: Sequence[Feed], queue: asyncio.Queue[Chunk 
         readers.result()  # raises what a feed raised
 
 
-async def _fill(feed: Feed, queue: asyncio.Queue[Chunk | None]) -> None:
+async def _fill(feed: Feed, prepare: Prepare, queue: asyncio.Queue[Chunk | None]) -> None:
     async for chunk in feed.chunks():
-        await queue.put(chunk)
+        await queue.put(prepare(chunk))

@@ -5,6 +5,7 @@ import signal
 import threading
 import time
 from collections.abc import AsyncIterator, Sequence
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -21,6 +22,10 @@ COLUMNS = laboratory().extract
 
 def chunks(count: int) -> list[Chunk]:
     return [Chunk("a feed", 1, results([n]), str(n)) for n in range(count)]
+
+
+def as_it_is(chunk: Chunk) -> Chunk:
+    return chunk
 
 
 class Listed:
@@ -42,7 +47,7 @@ class Listed:
 
 def test_every_chunk_is_handed_over_once_and_in_order() -> None:
     taken: list[Chunk] = []
-    run([Listed(chunks(50))], taken.extend)
+    run([Listed(chunks(50))], as_it_is, taken.extend)
     assert taken == chunks(50)
 
 
@@ -53,27 +58,34 @@ def test_what_queued_while_a_batch_was_kept_goes_into_the_next() -> None:
         sizes.append(len(batch))
         time.sleep(0.02)
 
-    run([Listed(chunks(30))], slow)
+    run([Listed(chunks(30))], as_it_is, slow)
     assert sum(sizes) == 30
     assert max(sizes) == QUEUE
 
 
+def test_each_chunk_is_prepared_before_it_is_handed_over() -> None:
+    taken: list[Chunk] = []
+    run([Listed(chunks(9))], lambda chunk: replace(chunk, items=[]), taken.extend)
+    assert [chunk.position for chunk in taken] == [chunk.position for chunk in chunks(9)]
+    assert not any(chunk.items for chunk in taken)
+
+
 def test_several_feeds_end_when_all_have_ended() -> None:
     taken: list[Chunk] = []
-    run([Listed(chunks(5)), Listed([]), Listed(chunks(7))], taken.extend)
+    run([Listed(chunks(5)), Listed([]), Listed(chunks(7))], as_it_is, taken.extend)
     assert len(taken) == 12
 
 
 def test_an_error_of_a_feed_comes_out_after_what_was_read_before_it() -> None:
     taken: list[Chunk] = []
     with pytest.raises(InputError, match="broken off"):
-        run([Listed([*chunks(3), InputError("broken off")])], taken.extend)
+        run([Listed([*chunks(3), InputError("broken off")])], as_it_is, taken.extend)
     assert taken == chunks(3)
 
 
 def test_a_defect_of_a_feed_does_not_hang_the_run() -> None:
     with pytest.raises(ZeroDivisionError):
-        run([Listed([*chunks(2), ZeroDivisionError()]), Listed([], threading.Event())], lambda batch: None)
+        run([Listed([*chunks(2), ZeroDivisionError()]), Listed([], threading.Event())], as_it_is, lambda batch: None)
 
 
 def test_an_error_while_keeping_ends_the_run() -> None:
@@ -81,7 +93,7 @@ def test_an_error_while_keeping_ends_the_run() -> None:
         raise FeedError("the disk is full")
 
     with pytest.raises(FeedError, match="the disk is full"):
-        run([Listed(chunks(30), threading.Event())], full)
+        run([Listed(chunks(30), threading.Event())], as_it_is, full)
 
 
 @pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
@@ -93,7 +105,7 @@ def test_a_signal_ends_the_run_after_the_batch_in_hand(number: signal.Signals) -
         time.sleep(0.05)
         taken.extend(batch)
 
-    run([Listed(chunks(2), threading.Event())], stop)
+    run([Listed(chunks(2), threading.Event())], as_it_is, stop)
     assert taken == chunks(2)
 
 
@@ -111,7 +123,7 @@ def test_a_growing_file_is_followed_until_a_signal(tmp_path: Path) -> None:
         else:
             os.kill(os.getpid(), signal.SIGINT)
 
-    run([FileFeed(FollowedFile(path, COLUMNS), once=False)], take)
+    run([FileFeed(FollowedFile(path, COLUMNS), once=False)], as_it_is, take)
     assert [item.specimen for item in taken if isinstance(item, Reading)] == [
         one.specimen for one in results([1, 2, 3])
     ]
@@ -121,7 +133,7 @@ def test_once_ends_where_the_file_ends(tmp_path: Path) -> None:
     path = tmp_path / "live.csv"
     taken: list[Chunk] = []
     path.write_text("\n".join([CSV_HEADER, *csv_lines(results([140] * 1200))]) + "\n")
-    run([FileFeed(FollowedFile(path, COLUMNS), once=True)], taken.extend)
+    run([FileFeed(FollowedFile(path, COLUMNS), once=True)], as_it_is, taken.extend)
     assert sum(len(chunk.items) for chunk in taken) == 1200
 
 
@@ -138,7 +150,7 @@ def piped(*pieces: bytes) -> list[Chunk]:
 
     writer = threading.Thread(target=write)
     writer.start()
-    run([LineFeed("standard input", reading, "4")], taken.extend)
+    run([LineFeed("standard input", reading, "4")], as_it_is, taken.extend)
     writer.join()
     os.close(reading)
     return taken
@@ -172,6 +184,6 @@ def test_a_replay_keeps_the_pace_of_its_times() -> None:
     some = [Chunk("history", 1, [one], "") for one in results([1, 2, 3])]
     begun = time.monotonic()
     taken: list[Chunk] = []
-    run([PacedFeed(some, 60.0 / 0.05)], taken.extend)
+    run([PacedFeed(some, 60.0 / 0.05)], as_it_is, taken.extend)
     assert len(taken) == 3
     assert time.monotonic() - begun >= 2 * MINUTE / 1e6 / (60.0 / 0.05)
