@@ -6,7 +6,7 @@ import sys
 import typer
 
 from pbm import __version__
-from pbm.commands import appraise, demo, intake, tune, watch
+from pbm.commands import appraise, demo, intake, survey, tune, watch
 from pbm.errors import PbmError
 
 app = typer.Typer(
@@ -21,6 +21,7 @@ app = typer.Typer(
 )
 app.command("demo")(demo.demo)
 app.command("intake")(intake.intake)
+app.command("survey")(survey.survey)
 app.command("tune")(tune.tune)
 app.command("appraise")(appraise.appraise)
 app.command("watch")(watch.watch)

@@ -104,7 +104,12 @@ def _drawn_group(album: Album, group: FaultGroup, horizon_days: float) -> DrawnG
 
 @cache
 def _template() -> Template:
-    environment = Environment(
+    return environment().get_template("template.html")
+
+
+def environment() -> Environment:
+    """Where a page's template finds its files and how it writes text: escaped, printable, a missing name an error."""
+    made = Environment(
         loader=FileSystemLoader(_HERE),
         autoescape=True,
         undefined=StrictUndefined,
@@ -112,8 +117,8 @@ def _template() -> Template:
         lstrip_blocks=True,
         finalize=_printable,
     )
-    environment.globals.update({"words": words, "fleet": fleet})
-    return environment.get_template("template.html")
+    made.globals.update({"words": words, "fleet": fleet})
+    return made
 
 
 def _printable(value: Any) -> Any:
