@@ -1,7 +1,7 @@
 """The store as its one writer sees it: results, alarms, states of monitors and positions of feeds, in one transaction a batch.
 
 SQLite in WAL mode with synchronous=FULL: what was kept survives a kill and a power cut. Every transaction begins IMMEDIATE. The statements
-are SQLAlchemy Core, and only `_engine` knows which database it is.
+are SQLAlchemy Core; store_engine.py knows which database it is.
 """
 
 import json
@@ -11,23 +11,18 @@ from types import TracebackType
 from typing import Any
 
 from sqlalchemy import (
-    URL,
-    Connection,
-    Engine,
     Table,
     bindparam,
-    create_engine,
     delete,
-    event,
     func,
     insert,
     inspect,
     select,
     update,
 )
-from sqlalchemy.pool import StaticPool
 
 from pbm.io import store_rows
+from pbm.io.store_engine import writing_engine
 from pbm.io.store_errors import told
 from pbm.io.store_schema import (
     NAMED,
@@ -51,8 +46,6 @@ from pbm.records.result import Result
 from pbm.records.snapshot import LATE, RERUN, Batch, Earlier, Edition, Snapshot
 from pbm.records.stream import StreamName
 
-_LOCK_SECONDS = 10.0
-
 
 class Store:
     """The store of a laboratory, opened to write; a context manager.
@@ -68,7 +61,7 @@ class Store:
         self._lock = WriterLock(path)
         try:
             with told(path):
-                self._connection = _engine(path).connect()
+                self._connection = writing_engine(path).connect()
                 self._prepare()
         except BaseException:
             self._lock.release()
@@ -300,23 +293,3 @@ class Store:
 
 _UPDATE_MONITOR = update(monitors).where(monitors.c.stream == bindparam("of"), monitors.c.monitor == bindparam("nth"))
 _UPDATE_STREAM = update(streams).where(streams.c.id == bindparam("of"))
-
-
-def _engine(path: Path) -> Engine:
-    place = URL.create("sqlite", database=str(path))
-    engine = create_engine(
-        place, poolclass=StaticPool, connect_args={"timeout": _LOCK_SECONDS, "check_same_thread": False}
-    )
-
-    @event.listens_for(engine, "connect")
-    def set_up(connection: Any, _: Any) -> None:
-        # None: the driver opens no transaction of its own, so that BEGIN IMMEDIATE below is the only one.
-        connection.isolation_level = None
-        connection.execute("PRAGMA journal_mode = WAL")
-        connection.execute("PRAGMA synchronous = FULL")
-
-    @event.listens_for(engine, "begin")
-    def begin(connection: Connection) -> None:
-        connection.exec_driver_sql("BEGIN IMMEDIATE")
-
-    return engine

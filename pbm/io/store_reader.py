@@ -1,14 +1,10 @@
 """The store as its readers see it: opened read-only, no transaction held between two questions (a held one makes the log grow)."""
 
-import sqlite3
 from pathlib import Path
-from urllib.parse import quote
-
-from sqlalchemy import create_engine
-from sqlalchemy.pool import NullPool
 
 from pbm.errors import InputError
 from pbm.io import store_rows
+from pbm.io.store_engine import reading_engine
 from pbm.io.store_errors import told
 from pbm.records.alarm import Alarm
 from pbm.records.result import Result
@@ -31,8 +27,7 @@ class StoreReader:
         if not path.is_file():
             raise InputError(f"There is no store {path}. `pbm watch` makes it.")
         self.path = path
-        place = f"file:{quote(str(path.absolute()))}?mode=ro"
-        self._engine = create_engine("sqlite://", creator=lambda: sqlite3.connect(place, uri=True), poolclass=NullPool)
+        self._engine = reading_engine(path)
         with told(path), self._engine.connect() as connection:
             store_rows.check_version(connection, path)
 

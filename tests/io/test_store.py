@@ -305,7 +305,7 @@ def nobody_may_write(folder: Path) -> Iterator[None]:
 
 
 def test_a_store_locked_by_another_program_is_told(path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr("pbm.io.store._LOCK_SECONDS", 0.1)
+    monkeypatch.setattr("pbm.io.store_engine.LOCK_SECONDS", 0.1)
     with begun(path) as store, sqlite3.connect(path, isolation_level=None) as other:
         other.execute("begin immediate")
         with pytest.raises(FeedError, match="locked by another program for too long"):
