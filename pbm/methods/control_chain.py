@@ -85,7 +85,7 @@ class Chain:
     spread: float
     following: Integers
 
-    def chances(self, bias: Floats, multiple: float) -> Floats:
+    def chances(self, bias: Floats, multiple: float, share: float = 1.0) -> Floats:
         """Joint probability of the zones of an event's measurements, shape (zones ** w,).
 
         Parameters
@@ -94,21 +94,25 @@ class Chain:
             Shift of each level, in its SD.
         multiple
             Factor on the SD.
+        share
+            Chance that a measurement is shifted, each for itself.
         """
         mean = bias[self.level]
         if np.isinf(self.spread) or len(mean) == 1:
-            return _joint(np.diff(ndtr((self.edges - mean[:, None]) / multiple), axis=1)[:, None, :])
+            return _joint(np.diff(_below(self.edges, mean[:, None], multiple, share), axis=1)[:, None, :])
         total = np.zeros((len(self.edges) - 1) ** len(mean))
         for i in range(len(mean)):
-            total += self._with_smallest(i, mean, multiple)
+            total += share * self._with_smallest(i, float(mean[i]), mean, multiple, share)
+            if share < 1:
+                total += (1 - share) * self._with_smallest(i, 0.0, mean, multiple, share)
         return total
 
-    def _with_smallest(self, smallest: int, mean: Floats, multiple: float) -> Floats:
-        """Joint probability of the zones, of a range within the limit, and of one measurement being the smallest."""
-        x, weight = self._nodes(mean[smallest], multiple)
-        density = weight * np.exp(-(((x - mean[smallest]) / multiple) ** 2) / 2) / (multiple * np.sqrt(2 * np.pi))
+    def _with_smallest(self, smallest: int, about: float, mean: Floats, multiple: float, share: float) -> Floats:
+        """Joint probability of the zones, of a range within the limit, and of one measurement, with mean `about`, being the smallest."""
+        x, weight = self._nodes(about, multiple)
+        density = weight * np.exp(-(((x - about) / multiple) ** 2) / 2) / (multiple * np.sqrt(2 * np.pi))
         ends = np.clip(self.edges[None, :], x[:, None], x[:, None] + self.spread)
-        parts = np.stack([np.diff(ndtr((ends - m) / multiple), axis=1) for m in mean])
+        parts = np.stack([np.diff(_below(ends, m, multiple, share), axis=1) for m in mean])
         zone = np.clip(np.searchsorted(self.edges, x) - 1, 0, len(self.edges) - 2)
         parts[smallest] = 0.0
         parts[smallest, np.arange(len(x)), zone] = density
@@ -184,6 +188,12 @@ class Chain:
             if change < SETTLED:
                 return total + running / (1 - kept) if 1 - kept > SETTLED else np.inf
         return total
+
+
+def _below(ends: Floats, mean: Floats | float, multiple: float, share: float) -> Floats:
+    """Chance of a measurement below each end: about the mean with a chance of `share`, else about 0."""
+    shifted: Floats = ndtr((ends - mean) / multiple)
+    return shifted if share == 1 else share * shifted + (1 - share) * ndtr(ends / multiple)
 
 
 def _joint(parts: Floats) -> Floats:

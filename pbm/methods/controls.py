@@ -1,7 +1,7 @@
 """Chance that control events pass after the onset of a fault.
 
-At the k-th event after the onset each measurement of level i is, in that level's SD, normal with mean b_ki and SD m. With the rules of the
-control procedure
+At the k-th event after the onset each measurement of level i is, in that level's SD, normal with mean b_ki and SD m; under a sporadic fault
+with a chance of q, else with mean 0. With the rules of the control procedure
 
     S_k = P(no rejection at the first k events),   S_0 = 1
 
@@ -60,6 +60,7 @@ def survival(
     repeats: Integers,
     random: np.random.Generator | None = None,
     runs: int = RUNS,
+    share: float = 1.0,
 ) -> Survival:
     """Chance that the first k control events after an onset all pass.
 
@@ -78,6 +79,8 @@ def survival(
         bias, so that figures vary smoothly over sizes.
     runs
         Simulated runs, less those rejected in their in-control history.
+    share
+        Chance that a measurement is shifted at all, each for itself (a sporadic fault).
 
     Raises
     ------
@@ -92,9 +95,9 @@ def survival(
     """
     bias, repeats = _checked(bias, multiple, repeats)
     if (chain := chain_of(rules, tuple(repeats.tolist()))) is not None:
-        passed = _followed(chain, bias, multiple)
+        passed = _followed(chain, bias, multiple, share)
         return Survival(passed, np.zeros_like(passed))
-    return _Simulation.start(rules, repeats, random, runs, accepted=True).survival(bias, multiple)
+    return _Simulation.start(rules, repeats, random, runs, accepted=True).survival(bias, multiple, share)
 
 
 def rejection_probability(
@@ -174,12 +177,12 @@ def _checked(bias: Floats, multiple: float, repeats: Integers) -> tuple[Floats, 
     return bias, repeats
 
 
-def _followed(chain: Chain, bias: Floats, multiple: float) -> Floats:
+def _followed(chain: Chain, bias: Floats, multiple: float, share: float) -> Floats:
     state, chances = chain.accepted_history, np.empty(0)
     passed = np.ones(len(bias) + 1)
     for k, shift in enumerate(bias):
         if k == 0 or (shift != bias[k - 1]).any():
-            chances = chain.chances(shift, multiple)
+            chances = chain.chances(shift, multiple, share)
         state = chain.after(state, chances)
         passed[k + 1] = min(state.sum(), passed[k])
     return passed
@@ -235,21 +238,24 @@ class _Simulation:
             )
         return begun
 
-    def event(self, bias: Floats, multiple: float) -> None:
+    def event(self, bias: Floats, multiple: float, share: float = 1.0) -> None:
         """One control event; all runs draw, so that the deviates of a run do not depend on the fate of others."""
         z = self.random.standard_normal((len(self.states), self.judge.width))
         shift = bias[self.judge.level]
+        if share < 1:
+            z += np.where(self.random.random(z.shape) < share, shift, 0.0) / multiple
+            shift = np.zeros_like(shift)
         kept = _event_loop()(self.running, self.states, self.forget, z, shift, multiple, *self.judge.law)
         self.running = self.running[:kept]
 
-    def survival(self, bias: Floats, multiple: float) -> Survival:
+    def survival(self, bias: Floats, multiple: float, share: float) -> Survival:
         """Share of runs that pass each further event."""
         left = np.zeros(len(bias) + 1)
         left[0] = len(self.running)
         for k, shift in enumerate(bias):
             if len(self.running) == 0:
                 break
-            self.event(shift, multiple)
+            self.event(shift, multiple, share)
             left[k + 1] = len(self.running)
         cautious = (left + 1) / (left[0] + 2)
         error = np.sqrt(cautious * (1 - cautious) / left[0])

@@ -67,6 +67,11 @@ class Fault:
         """Factor on the analytic SD."""
         return self.size if self.kind == "noise" else 1.0
 
+    @property
+    def share_hit(self) -> float:
+        """Share of measurements that meet the fault: q if it is sporadic, else all."""
+        return self.share if self.kind == "sporadic" else 1.0
+
     def bias(self, x: Floats, error: ErrorModel) -> Floats:
         """Shift d(x) at full size, in the analyte's unit; 0 for noise."""
         if self.kind == "noise":
@@ -134,7 +139,6 @@ def inflict(
     if fault.kind == "noise":
         raw = raw + math.sqrt(fault.size**2 - 1) * error.sd(x) * chance.normal
     else:
-        hit = chance.uniform < fault.share if fault.kind == "sporadic" else 1.0
-        raw = raw + growth * hit * fault.bias(x, error)
+        raw = raw + growth * (chance.uniform < fault.share_hit) * fault.bias(x, error)
     value, beyond = reporting.report(raw)
     return np.where(censor == 0, value, x), np.where(censor == 0, beyond, censor)

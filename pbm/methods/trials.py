@@ -117,8 +117,7 @@ def trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats) -> Tri
 
 
 def _chance_unreliable(x: Floats, fault: Fault, error: ErrorModel, bias: Floats) -> Floats:
-    p = chance_unreliable(error.tea(x), bias, error.sd(x), fault.multiple)
-    return fault.share * p if fault.kind == "sporadic" else p
+    return fault.share_hit * chance_unreliable(error.tea(x), bias, error.sd(x), fault.multiple)
 
 
 def _drift_trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats) -> Trial:

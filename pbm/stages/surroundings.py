@@ -107,6 +107,7 @@ class Surroundings:
             fault.multiple,
             np.array([level.repeats for level in levels]),
             self.random("controls"),
+            share=fault.share_hit,
         )
 
     @staticmethod

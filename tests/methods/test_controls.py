@@ -205,3 +205,45 @@ def test_more_imprecision_without_a_shift_is_found_more_often(rules: list[str], 
         for m in (multiple, multiple + more)
     ]
     assert chances[1] >= chances[0] - 1e-12
+
+
+@pytest.mark.parametrize("rules", [("1-3s",), ("1-3s", "2-2s"), ("1-3s", "2-2s", "R-4s"), COMMON])
+@pytest.mark.parametrize("share", [0.1, 0.5])
+def test_a_sporadic_fault_is_met_by_each_control_measurement_for_itself(rules: tuple[str, ...], share: float) -> None:
+    """Against the naive twin, on runs whose in-control history passed."""
+    random, bias = child(8, "sporadic", share), np.array([3.0, 2.0])
+    exact = survival(Rules.parse(rules), np.tile(bias, (3, 1)), 1.0, ONE_EACH, share=share).passed
+    runs, still = 0, np.zeros(4)
+    while runs < 1200:
+        calm = random.standard_normal((10, 2))
+        faulty = random.standard_normal((3, 2)) + np.where(random.random((3, 2)) < share, bias, 0.0)
+        events = [[(0, a), (1, b)] for a, b in np.concatenate([calm, faulty])]
+        first = first_rejected(rules, events)
+        if first is None or first >= 10:
+            runs += 1
+            still[: 4 if first is None else first - 9] += 1
+    passed = still / runs
+    assert (np.abs(passed - exact) <= 3.9 * np.sqrt(exact * (1 - exact) / runs)).all()
+
+
+@pytest.mark.parametrize("repeats", [(1,), (1, 1), (2, 1)])
+def test_exact_and_simulated_chances_agree_under_a_sporadic_fault(
+    monkeypatch: pytest.MonkeyPatch, repeats: tuple[int, ...]
+) -> None:
+    bias = np.full((6, len(repeats)), 2.5)
+    rules = Rules.parse(("1-3s", "2-2s", "R-4s", "4-1s"))
+    exact = survival(rules, bias, 1.0, np.array(repeats), share=0.3)
+    simulated(monkeypatch)
+    runs = survival(rules, bias, 1.0, np.array(repeats), child(9, "sporadic"), 60_000, share=0.3)
+    assert (exact.error == 0).all() and (runs.error[1:] > 0).all()
+    assert (np.abs(exact.passed - runs.passed)[1:] <= 3.9 * runs.error[1:]).all()
+
+
+def test_a_fault_met_always_is_the_shift_and_one_met_hardly_ever_is_none() -> None:
+    rules, bias = Rules.parse(COMMON), np.full((4, 2), 2.0)
+    plain = survival(rules, bias, 1.0, ONE_EACH).passed
+    assert (survival(rules, bias, 1.0, ONE_EACH, share=1.0).passed == plain).all()
+    assert survival(rules, bias, 1.0, ONE_EACH, share=1 - 1e-9).passed == pytest.approx(plain, abs=1e-7)
+    assert survival(rules, bias, 1.0, ONE_EACH, share=1e-9).passed == pytest.approx(
+        survival(rules, 0 * bias, 1.0, ONE_EACH).passed, abs=1e-7
+    )
