@@ -123,7 +123,7 @@ class _Appraising:
         running = _Running.of(monitor, stretch, trials[0].trial.onsets)
         faults = tuple(_appraise_fault(t, running, self.around, stretch, averages) for t in trials)
         held_out = running.path[self.split.at :]
-        back = running.preparation.back
+        back = running.preparation.back if running.tracker.law.begins == "level" else float
         return MonitorAppraisal(
             words=monitor_in_words(monitor, self.around.analyte.unit),
             brief=monitor_in_brief(monitor),

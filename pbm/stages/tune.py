@@ -1,7 +1,8 @@
 """Tune: choose each stream's monitor on training days, confirm its limits on held-out days, and say where a monitor is not useful.
 
 The first two thirds of the days train, the last third is held out. Candidates are scored by expected unreliable results with the control
-schedule present (methods/search.py); the winner's limits come from the day-block bootstrap (methods/limits.py).
+schedule present (methods/search.py), the finalists on the last third of the training days, which fitted no baseline; the winner's limits
+come from the day-block bootstrap over all training days (methods/limits.py).
 """
 
 from collections.abc import Sequence
@@ -16,7 +17,7 @@ from pbm.methods.baseline import Baseline, fit_baseline
 from pbm.methods.candidates import Candidate, candidates, preparations
 from pbm.methods.chain import Preparation, Tracker
 from pbm.methods.clock_time import local_days
-from pbm.methods.expected import Onsets, follow
+from pbm.methods.expected import follow
 from pbm.methods.faults import Fault
 from pbm.methods.in_control import inflation, slope, wander
 from pbm.methods.intervals import poisson_interval
@@ -24,7 +25,7 @@ from pbm.methods.jit import Integers
 from pbm.methods.limits import CalibratedLimits, calibrated_limits
 from pbm.methods.search import Runner, best_of, limited, scores, simplest_near_best
 from pbm.methods.split import Split, first_held_out_day, split_at
-from pbm.methods.trials import Stretch, Trial, alarm_and_stop, trial
+from pbm.methods.trials import Stretch, Trial, alarm_and_stop, draw_onsets, trial
 from pbm.records.laboratory import Lab
 from pbm.records.plan import (
     Admit,
@@ -164,9 +165,16 @@ class _Tuning:
         """Episodes that the budget allows in the training days."""
         return self.around.lab.budget_of(self.around.name.analyte).per_day * self.split.training_days
 
-    def trials(self, training: Stretch, count: int, horizon_days: float = HORIZON_DAYS) -> list[tuple[Trial, float]]:
-        """Every fault at the same onsets among the training results after the first day."""
-        first = int(np.searchsorted(self.split.days[: self.split.at], self.split.days[0], side="right"))
+    @property
+    def choose_at(self) -> int:
+        """Index of the first result of the last third of the training days: finalists are compared there, baselines fitted before."""
+        training = self.split.days[: self.split.at]
+        return split_at(training, first_held_out_day(training)).at
+
+    def trials(
+        self, training: Stretch, first: int, count: int, horizon_days: float = HORIZON_DAYS
+    ) -> list[tuple[Trial, float]]:
+        """Every fault at the same onsets among the training results from `first` on."""
         onsets = self.around.onsets(training.time, first, len(training), count, horizon_days)
         return [
             (trial(training, fault, onsets, self.around.chance_of_passing(fault, onsets).passed), weight)
@@ -181,30 +189,41 @@ class _Tuning:
         )
 
     def _search(self, training: Stretch) -> Runner | None:
-        """Successive halving; the finalists are tried with and without a patient-mix baseline."""
+        """Successive halving; the finalists are tried with and without a patient-mix baseline, on days that did not fit it."""
         choices = preparations(training.value, self.around.analyte.step, self.around.random("transform"))
         given = list(candidates(choices, longest=len(training) // WINDOWS))
         runners = limited(training, given, self.expected)
         if not runners:
             return None
-        first = self.trials(training, FIRST_ONSETS, FIRST_HORIZON_DAYS)
-        score = scores(training, runners, first, self.stopper(training))
-        finalists = best_of(runners, score, FINALISTS)
-        finalists += limited(training, _with_baseline([r.candidate for r in finalists], training), self.expected)
-        score = scores(training, finalists, self.trials(training, ONSETS), self.stopper(training))
-        return finalists[simplest_near_best(finalists, score)]
+        second_day = int(np.searchsorted(self.split.days, self.split.days[0], side="right"))
+        first = self.trials(training, second_day, FIRST_ONSETS, FIRST_HORIZON_DAYS)
+        finalists = best_of(runners, scores(training, runners, first, self.stopper(training)), FINALISTS)
+        plain = [runner.candidate for runner in finalists]
+        finalists += limited(training, _with_baseline(plain, training, self.choose_at), self.expected)
+        last = self.trials(training, self.choose_at, ONSETS)
+        chosen = finalists[simplest_near_best(finalists, scores(training, finalists, last, self.stopper(training)))]
+        return self._refitted(training, chosen)
+
+    def _refitted(self, training: Stretch, chosen: Runner) -> Runner | None:
+        """The chosen candidate with its baseline fitted on all training days."""
+        plain = replace(chosen.candidate, preparation=replace(chosen.candidate.preparation, baseline=None))
+        if chosen.candidate == plain:
+            return chosen
+        again = limited(training, _with_baseline([plain], training, len(training)), self.expected)
+        return again[0] if again else None
 
     def _judge(self, training: Stretch, runner: Runner) -> Judgement:
-        trials = self.trials(training, ONSETS)
+        trials = self.trials(training, self.choose_at, ONSETS)
         score = float(scores(training, [runner], trials, self.stopper(training)).mean())
         total = sum(weight for _, weight in trials)
         alone = sum(weight / total * float(t.exposure.unreliable(t.onsets.length).mean()) for t, weight in trials)
-        needed = self._results_needed(training, runner, trials[0][0].onsets)
+        needed = self._results_needed(training, runner)
         return judge_usefulness(needed, self.per_day, 1 - score / alone if alone > 0 else 0.0)
 
-    def _results_needed(self, training: Stretch, runner: Runner, onsets: Onsets) -> float:
+    def _results_needed(self, training: Stretch, runner: Runner) -> float:
         """Median of the results until a shift of 1 TEa is found, to either side, followed for up to `NEEDED_AT_MOST` results."""
-        at = onsets.at[onsets.at < max(len(training) - NEEDED_AT_MOST, len(training) // 2)]
+        last = max(len(training) - NEEDED_AT_MOST, len(training) // 2)
+        at = draw_onsets(len(training) // WINDOWS, last, ONSETS, self.around.random("results needed"))
         far = follow(at, np.minimum(at + NEEDED_AT_MOST, len(training)), np.zeros(0, dtype=np.int64), 1)
         z = training.prepared(runner.candidate.preparation)
         standing = runner.tracker.standing(z, runner.limits, at)
@@ -265,10 +284,11 @@ class _Tuning:
         )
 
 
-def _with_baseline(given: Sequence[Candidate], training: Stretch) -> list[Candidate]:
-    """The same candidates with a patient-mix baseline, fitted once for each preparation."""
+def _with_baseline(given: Sequence[Candidate], training: Stretch, until: int) -> list[Candidate]:
+    """The same candidates with a patient-mix baseline, fitted once for each preparation, on the first `until` results."""
+    mix = training.mix.rows(slice(0, until))
     fitted = {
-        plain: fit_baseline(plain.transformed(training.value, training.censor), training.mix)
+        plain: fit_baseline(plain.transformed(training.value[:until], training.censor[:until]), mix)
         for plain in {candidate.preparation for candidate in given}
     }
     return [replace(c, preparation=replace(c.preparation, baseline=fitted[c.preparation])) for c in given]
