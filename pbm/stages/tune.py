@@ -13,7 +13,7 @@ from functools import partial
 import numpy as np
 
 from pbm.methods.alarm import Limits, episodes
-from pbm.methods.baseline import Baseline, fit_baseline
+from pbm.methods.baseline import fit_baseline
 from pbm.methods.candidates import Candidate, candidates, preparations
 from pbm.methods.chain import Preparation, Tracker
 from pbm.methods.clock_time import local_days
@@ -28,19 +28,16 @@ from pbm.methods.split import Split, first_held_out_day, split_at
 from pbm.methods.trials import Stretch, Trial, alarm_and_stop, draw_onsets, trial
 from pbm.records.laboratory import Lab
 from pbm.records.plan import (
-    Admit,
-    BaselinePlan,
-    ControlLimits,
     HeldOut,
-    LimitsInterval,
     MonitorPlan,
     StreamPlan,
     Training,
-    Verdict,
 )
 from pbm.records.stream import StreamHistory
-from pbm.stages.from_plan import faults_of, planned_parameters
+from pbm.stages.from_plan import faults_of
 from pbm.stages.surroundings import HORIZON_DAYS, Surroundings
+from pbm.stages.to_plan import chain_in_plan, limits_in_plan
+from pbm.stages.usefulness import Judgement, judge_usefulness
 
 FEWEST_DAYS = 20
 FEWEST_RESULTS = 1_000
@@ -48,7 +45,6 @@ FIRST_ONSETS, FIRST_HORIZON_DAYS = 40, 2.0
 ONSETS, FINALISTS = 250, 12
 WINDOWS = 50  # a window is no longer than this part of the training results
 NEEDED_AT_MOST = 5_000
-WORTHWHILE, SOME_GAIN = 0.1, 0.02
 
 
 def tune_stream(history: StreamHistory, lab: Lab, seed: int) -> StreamPlan:
@@ -86,45 +82,6 @@ def _no_monitor(around: Surroundings, days: Integers, reason: str) -> StreamPlan
     return StreamPlan(
         unit=around.analyte.unit, verdict="not useful here", reason=reason, results_per_day=round(per_day, 1)
     )
-
-
-@dataclass(frozen=True, slots=True)
-class Judgement:
-    """The verdict on a stream and the reason in words."""
-
-    word: Verdict
-    reason: str
-
-
-def judge_usefulness(needed: float, per_day: float, gain: float) -> Judgement:
-    """Whether a monitor pays on a stream.
-
-    Parameters
-    ----------
-    needed
-        Median number of results until a shift of 1 TEa is found; infinite where more than half are not.
-    per_day
-        Results a day.
-    gain
-        Share by which the monitor lowers the expected unreliable results of the schedule alone, averaged over the faults.
-
-    Notes
-    -----
-    Useful: found within an average day's run (common practice) and a gain of at least a tenth. Marginal: one of the two, and
-    at least some gain.
-    """
-    sees = f"needs about {needed:.0f} results to see" if np.isfinite(needed) else "does not see"
-    gained = f"{max(gain, 0):.0%} fewer unreliable results expected than with the controls alone"
-    reason = f"{sees} a shift of 1 TEa; the line makes {per_day:.0f} a day; {gained}"
-    same_day, gains = needed <= per_day, gain >= WORTHWHILE
-    word: Verdict = (
-        "useful"
-        if same_day and gains
-        else "marginal"
-        if gain >= SOME_GAIN and (same_day or gains)
-        else "not useful here"
-    )
-    return Judgement(word, reason)
 
 
 @dataclass(frozen=True)
@@ -250,23 +207,10 @@ class _Tuning:
         preparation, tracker = runner.candidate.preparation, runner.tracker
         z = training.prepared(preparation)
         budget = self.around.lab.budget_of(self.around.name.analyte).per_day
-        low, high = limits.limits.low, limits.limits.high
         return MonitorPlan(
-            admit=Admit(
-                low=preparation.low if np.isfinite(preparation.low) else None,
-                high=preparation.high if np.isfinite(preparation.high) else None,
-                mode="winsorize" if preparation.winsorize else "truncate",
-            ),
-            transform=preparation.transform,
-            transform_lambda=preparation.transform_lambda if preparation.transform == "boxcox" else None,
-            baseline=_in_plan(preparation.baseline),
-            statistic=tracker.statistic,
-            **planned_parameters(tracker, float(np.nanmean(z))),
-            centre=tracker.centre,
-            limits=ControlLimits(low=low, high=high),
-            limits_interval=LimitsInterval(low=limits.low_interval, high=limits.high_interval),
+            **chain_in_plan(preparation, tracker, z),
+            **limits_in_plan(limits),
             budget_per_day=budget,
-            spread=float(np.nanstd(z)),
             slope=slope(training, preparation),
             inflation=inflation(z),
             wander=wander(z, round(self.per_day)),
@@ -292,7 +236,3 @@ def _with_baseline(given: Sequence[Candidate], training: Stretch, until: int) ->
         for plain in {candidate.preparation for candidate in given}
     }
     return [replace(c, preparation=replace(c.preparation, baseline=fitted[c.preparation])) for c in given]
-
-
-def _in_plan(baseline: Baseline | None) -> BaselinePlan | None:
-    return None if baseline is None else BaselinePlan(wards=dict(baseline.wards), hours=baseline.hours)

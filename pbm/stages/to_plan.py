@@ -1,0 +1,38 @@
+"""How the numbers that methods chose become the words of plan.toml; the way back from stages/from_plan.py."""
+
+from typing import Any
+
+import numpy as np
+
+from pbm.methods.chain import Preparation, Tracker
+from pbm.methods.jit import Floats
+from pbm.methods.limits import CalibratedLimits
+from pbm.records.plan import Admit, BaselinePlan, ControlLimits, LimitsInterval
+from pbm.stages.from_plan import planned_parameters
+
+
+def chain_in_plan(preparation: Preparation, tracker: Tracker, z: Floats) -> dict[str, Any]:
+    """Truncation, transform, baseline, statistic, centre and spread by the keys of a monitor; z (n,) are its in-control values."""
+    baseline = preparation.baseline
+    return {
+        "admit": Admit(
+            low=preparation.low if np.isfinite(preparation.low) else None,
+            high=preparation.high if np.isfinite(preparation.high) else None,
+            mode="winsorize" if preparation.winsorize else "truncate",
+        ),
+        "transform": preparation.transform,
+        "transform_lambda": preparation.transform_lambda if preparation.transform == "boxcox" else None,
+        "baseline": None if baseline is None else BaselinePlan(wards=dict(baseline.wards), hours=baseline.hours),
+        "statistic": tracker.statistic,
+        **planned_parameters(tracker, float(np.nanmean(z))),
+        "centre": tracker.centre,
+        "spread": float(np.nanstd(z)),
+    }
+
+
+def limits_in_plan(found: CalibratedLimits) -> dict[str, Any]:
+    """Limits and their intervals by the keys of a monitor."""
+    return {
+        "limits": ControlLimits(low=found.limits.low, high=found.limits.high),
+        "limits_interval": LimitsInterval(low=found.low_interval, high=found.high_interval),
+    }
