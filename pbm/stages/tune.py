@@ -5,24 +5,25 @@ schedule present (methods/search.py), the finalists on the last third of the tra
 come from the day-block bootstrap over all training days (methods/limits.py).
 """
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from datetime import date, timedelta
 from functools import partial
 
 import numpy as np
 
+from pbm.errors import PlanError
 from pbm.methods.alarm import Limits, episodes
 from pbm.methods.baseline import fit_baseline
-from pbm.methods.candidates import Candidate, candidates, preparations
-from pbm.methods.chain import Preparation, Tracker
+from pbm.methods.candidates import Candidate, preparations
+from pbm.methods.chain import Preparation, Tracker, tracker_for
 from pbm.methods.clock_time import local_days
 from pbm.methods.expected import follow
 from pbm.methods.faults import Fault
 from pbm.methods.in_control import inflation, slope, wander
 from pbm.methods.intervals import poisson_interval
 from pbm.methods.jit import Integers
-from pbm.methods.limits import CalibratedLimits, calibrated_limits
+from pbm.methods.limits import CalibratedLimits, calibrated_limits, quick_limits
 from pbm.methods.search import Runner, best_of, limited, scores, simplest_near_best
 from pbm.methods.split import Split, first_held_out_day, split_at
 from pbm.methods.trials import Stretch, Trial, alarm_and_stop, draw_onsets, trial
@@ -34,7 +35,8 @@ from pbm.records.plan import (
     Training,
 )
 from pbm.records.stream import StreamHistory
-from pbm.stages.from_plan import faults_of
+from pbm.stages.by_hand import NOTHING_BY_HAND, ByHand
+from pbm.stages.from_plan import faults_of, preparation, tracker
 from pbm.stages.surroundings import HORIZON_DAYS, Surroundings
 from pbm.stages.to_plan import chain_in_plan, limits_in_plan
 from pbm.stages.usefulness import Judgement, judge_usefulness
@@ -47,7 +49,13 @@ WINDOWS = 50  # a window is no longer than this part of the training results
 NEEDED_AT_MOST = 5_000
 
 
-def tune_stream(history: StreamHistory, lab: Lab, seed: int) -> StreamPlan:
+def tune_stream(
+    history: StreamHistory,
+    lab: Lab,
+    seed: int,
+    by_hand: ByHand = NOTHING_BY_HAND,
+    kept: Mapping[str, StreamPlan] | None = None,
+) -> StreamPlan:
     """Choose the monitor of one stream, or say why it has none.
 
     Parameters
@@ -58,13 +66,34 @@ def tune_stream(history: StreamHistory, lab: Lab, seed: int) -> StreamPlan:
         The laboratory: analyte, budget, schedule, faults.
     seed
         Master seed; the same seed gives the same plan.
+    by_hand
+        What a person sets; the rest is chosen.
+    kept
+        Plans of streams by name: the stream's monitor is kept as it is there, and only centre and limits are learned anew.
+
+    Raises
+    ------
+    InputError
+        If what is set by hand does not fit the results.
+    PlanError
+        If the monitor to be kept is not in the plan.
     """
     around = Surroundings.of(history.name, lab, seed)
     days = local_days(history.time, lab.laboratory.zone)
     refusal = _too_little(days)
     if refusal:
         return _no_monitor(around, days, refusal)
-    return _Tuning(around, history, split_at(days, first_held_out_day(days))).plan()
+    work = _Tuning(around, history, split_at(days, first_held_out_day(days)), by_hand)
+    return work.plan() if kept is None else work.relimited(_one_monitor(kept, str(history.name)))
+
+
+def _one_monitor(kept: Mapping[str, StreamPlan], name: str) -> MonitorPlan:
+    monitors = kept[name].monitors if name in kept else ()
+    if len(monitors) != 1:
+        raise PlanError(
+            f"plan.toml has {len(monitors)} monitors for {name}, and --keep takes new limits for one. Run `pbm tune {name}`."
+        )
+    return monitors[0]
 
 
 def _too_little(days: Integers) -> str | None:
@@ -91,11 +120,27 @@ class _Tuning:
     around: Surroundings
     history: StreamHistory
     split: Split
+    by_hand: ByHand
 
     def plan(self) -> StreamPlan:
+        """Search, limit, judge and confirm."""
+        training = self._training()
+        return self._decided(training, self._search(training))
+
+    def relimited(self, monitor: MonitorPlan) -> StreamPlan:
+        """The same for a monitor that is kept: no search, and the baseline stays as it is."""
+        training = self._training()
+        z = training.prepared(preparation(monitor))
+        learned = tracker_for(z, monitor.statistic, tracker(monitor).parameter, **_fixed(tracker(monitor)))
+        chosen = Candidate(preparation(monitor), monitor.statistic, learned.parameter)
+        limits = quick_limits(learned.path(z), learned.centre, self.expected)
+        return self._decided(training, Runner(chosen, learned, limits) if limits else None)
+
+    def _training(self) -> Stretch:
+        return self.around.stretch(self.history.rows(slice(0, self.split.at)))
+
+    def _decided(self, training: Stretch, runner: Runner | None) -> StreamPlan:
         days = self.split.days
-        training = self.around.stretch(self.history.rows(slice(0, self.split.at)))
-        runner = self._search(training)
         limits = self._limits(training, runner) if runner else None
         if runner is None or limits is None:
             return _no_monitor(
@@ -148,18 +193,27 @@ class _Tuning:
     def _search(self, training: Stretch) -> Runner | None:
         """Successive halving; the finalists are tried with and without a patient-mix baseline, on days that did not fit it."""
         choices = preparations(training.value, self.around.analyte.step, self.around.random("transform"))
-        given = list(candidates(choices, longest=len(training) // WINDOWS))
+        given = self.by_hand.candidates(self.by_hand.preparations(choices), longest=len(training) // WINDOWS)
         runners = limited(training, given, self.expected)
         if not runners:
             return None
         second_day = int(np.searchsorted(self.split.days, self.split.days[0], side="right"))
         first = self.trials(training, second_day, FIRST_ONSETS, FIRST_HORIZON_DAYS)
         finalists = best_of(runners, scores(training, runners, first, self.stopper(training)), FINALISTS)
-        plain = [runner.candidate for runner in finalists]
-        finalists += limited(training, _with_baseline(plain, training, self.choose_at), self.expected)
+        finalists = self._with_and_without_baseline(training, finalists)
+        if not finalists:
+            return None
         last = self.trials(training, self.choose_at, ONSETS)
         chosen = finalists[simplest_near_best(finalists, scores(training, finalists, last, self.stopper(training)))]
         return self._refitted(training, chosen)
+
+    def _with_and_without_baseline(self, training: Stretch, plain: list[Runner]) -> list[Runner]:
+        """The finalists as they are, and adjusted for patient mix, unless one of the two is wanted."""
+        if self.by_hand.baseline is False:
+            return plain
+        given = _with_baseline([runner.candidate for runner in plain], training, self.choose_at)
+        adjusted = limited(training, given, self.expected)
+        return adjusted if self.by_hand.baseline else plain + adjusted
 
     def _refitted(self, training: Stretch, chosen: Runner) -> Runner | None:
         """The chosen candidate with its baseline fitted on all training days."""
@@ -204,28 +258,33 @@ class _Tuning:
         )
 
     def _monitor(self, training: Stretch, runner: Runner, limits: CalibratedLimits) -> MonitorPlan:
-        preparation, tracker = runner.candidate.preparation, runner.tracker
-        z = training.prepared(preparation)
+        prepared, tracked = runner.candidate.preparation, runner.tracker
+        z = training.prepared(prepared)
         budget = self.around.lab.budget_of(self.around.name.analyte).per_day
         return MonitorPlan(
-            **chain_in_plan(preparation, tracker, z),
+            **chain_in_plan(prepared, tracked, z),
             **limits_in_plan(limits),
             budget_per_day=budget,
-            slope=slope(training, preparation),
+            slope=slope(training, prepared),
             inflation=inflation(z),
             wander=wander(z, round(self.per_day)),
             train=Training(days=self.split.training_days, episodes=limits.episodes),
-            held_out=self._held_out(preparation, tracker, limits.limits, budget),
+            held_out=self._held_out(prepared, tracked, limits.limits, budget),
         )
 
-    def _held_out(self, preparation: Preparation, tracker: Tracker, limits: Limits, budget: float) -> HeldOut:
-        z = self.around.stretch(self.history).prepared(preparation)
-        count = int((episodes(tracker.path(z), limits).at >= self.split.at).sum())
+    def _held_out(self, prepared: Preparation, tracked: Tracker, limits: Limits, budget: float) -> HeldOut:
+        z = self.around.stretch(self.history).prepared(prepared)
+        count = int((episodes(tracked.path(z), limits).at >= self.split.at).sum())
         interval = poisson_interval(count)
         allowed = budget * self.split.held_out_days
         return HeldOut(
             days=self.split.held_out_days, episodes=count, interval=interval, kept=bool(interval[0] <= allowed)
         )
+
+
+def _fixed(given: Tracker) -> dict[str, float]:
+    """The parameters of a statistic that are not learned from in-control values."""
+    return {name: x for name, x in given.named.items() if name in ("low", "high", "exponent")}
 
 
 def _with_baseline(given: Sequence[Candidate], training: Stretch, until: int) -> list[Candidate]:
