@@ -1,6 +1,7 @@
 """The commands as their functions declare them: usage, help, example, arguments and options. Nothing is asked of the terminal."""
 
 import inspect
+import re
 from collections.abc import Iterator
 from dataclasses import dataclass
 from types import UnionType
@@ -41,7 +42,8 @@ class Command:
     @property
     def options(self) -> tuple[str, ...]:
         """Names of its options."""
-        return tuple(one.written for one in self.parameters if one.written.startswith("-"))
+        written = (one.written for one in self.parameters if one.written.startswith("-"))
+        return tuple(name for names in written for name in re.split(r"/|, ", names))
 
     @property
     def usage(self) -> str:
