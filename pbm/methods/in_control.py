@@ -1,9 +1,10 @@
 """In-control behaviour of the values that a statistic takes: how far they move under a true shift, how much they hang together.
 
     slope      d(mean of admitted values) / d(true shift), both on the statistic's scale
-    inflation  variance of a mean of successive values over what independence would give
-    wander     SD of the slow wandering of the level: of means over a day beyond what values that hang together briefly would give
+    inflation  f, variance of a mean of successive values over what independence would give
+    wander     t, SD of the slow wandering of their level from day to day
 
+The mean of n successive values with variance v has variance v f / n + t^2: two lengths, 50 values and a day, tell f and t apart.
 For fixed truncation limits on normal values the slope is Var(admitted) / Var(all); here it is measured on the results themselves, with
 rounding and censoring, at half a TEa to either side.
 """
@@ -17,28 +18,31 @@ from pbm.methods.faults import Fault, inflict
 from pbm.methods.jit import Floats
 from pbm.methods.trials import Stretch
 
-BATCH = 50
+BATCH, LEAST_A_DAY = 50, 200
 SMALLEST_SLOPE = 0.01
 
 
-def inflation(z: Floats, batch: int = BATCH) -> float:
-    """Variance inflation of the mean of `batch` successive admitted values, at least 1; z (n,) holds not a number where dropped."""
+def inflation(z: Floats, wandering: float = 0.0) -> float:
+    """f of the values, at least 1, where their level wanders by so much; z (n,) holds not a number where dropped."""
     admitted = z[~np.isnan(z)]
-    whole = admitted[: len(admitted) // batch * batch].reshape(-1, batch)
-    if len(whole) < 2 or (variance := float(admitted.var())) == 0:
+    if len(admitted) < 2 * BATCH or (variance := float(admitted.var())) == 0:
         return 1.0
-    return max(1.0, batch * float(whole.mean(axis=1).var(ddof=1)) / variance)
+    return max(1.0, BATCH * (_variance_of_means(admitted, BATCH) - wandering**2) / variance)
 
 
 def wander(z: Floats, a_day: int) -> float:
-    """SD of the in-control level from day to day; z (n,) holds not a number where dropped, `a_day` is the number of values a day."""
+    """t of the values, from means of 50 and of as many as come in a day (200 at least); z (n,) holds not a number where dropped."""
     admitted = z[~np.isnan(z)]
-    batch = max(a_day, BATCH)
-    whole = admitted[: len(admitted) // batch * batch].reshape(-1, batch)
-    if len(whole) < 2:
+    day = max(a_day, LEAST_A_DAY)
+    if len(admitted) < 2 * day:
         return 0.0
-    brief = float(admitted.var()) * inflation(z) / batch
-    return math.sqrt(max(float(whole.mean(axis=1).var(ddof=1)) - brief, 0.0))
+    short, long = BATCH * _variance_of_means(admitted, BATCH), day * _variance_of_means(admitted, day)
+    return math.sqrt(max((long - short) / (day - BATCH), 0.0))
+
+
+def _variance_of_means(admitted: Floats, batch: int) -> float:
+    """Variance of the means of successive batches."""
+    return float(admitted[: len(admitted) // batch * batch].reshape(-1, batch).mean(axis=1).var(ddof=1))
 
 
 def slope(stretch: Stretch, preparation: Preparation) -> float:

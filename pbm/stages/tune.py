@@ -260,14 +260,15 @@ class _Tuning:
     def _monitor(self, training: Stretch, runner: Runner, limits: CalibratedLimits) -> MonitorPlan:
         prepared, tracked = runner.candidate.preparation, runner.tracker
         z = training.prepared(prepared)
+        wandering = wander(z, round(self.per_day))
         budget = self.around.lab.budget_of(self.around.name.analyte).per_day
         return MonitorPlan(
             **chain_in_plan(prepared, tracked, z),
             **limits_in_plan(limits),
             budget_per_day=budget,
             slope=slope(training, prepared),
-            inflation=inflation(z),
-            wander=wander(z, round(self.per_day)),
+            inflation=inflation(z, wandering),
+            wander=wandering,
             train=Training(days=self.split.training_days, episodes=limits.episodes),
             held_out=self._held_out(prepared, tracked, limits.limits, budget),
         )

@@ -12,7 +12,7 @@ from scipy.stats import norm
 from pbm.methods.baseline import Mix
 from pbm.methods.chain import Preparation
 from pbm.methods.faults import Chance, Reporting
-from pbm.methods.in_control import inflation, slope
+from pbm.methods.in_control import inflation, slope, wander
 from pbm.methods.jit import Floats
 from pbm.methods.seeds import child
 from pbm.methods.trials import Stretch
@@ -99,3 +99,22 @@ def test_a_tea_of_nothing_at_the_typical_result_leaves_the_slope_at_one() -> Non
     """TEa in percent, and results around zero such as a base excess."""
     around_zero = stretch(np.round(normals(0, 3)), 4.0)
     assert slope(replace(around_zero, error=ErrorModel(0.0, 10.0, 0.3, 0.0)), Preparation()) == 1.0
+
+
+@pytest.mark.parametrize("sd", [0.0, 0.1, 0.4])
+def test_the_wandering_of_the_level_is_found_beyond_what_chance_gives_a_days_mean(sd: float) -> None:
+    days, a_day = 300, 200
+    random = child(7, "wander", sd)
+    z = random.standard_normal(days * a_day) + np.repeat(sd * random.standard_normal(days), a_day)
+    assert wander(z, a_day) == pytest.approx(sd, abs=0.035)
+    assert inflation(z, wander(z, a_day)) == pytest.approx(1.0, abs=0.15), "what wanders is not counted twice"
+
+
+def test_values_that_hang_together_briefly_do_not_wander() -> None:
+    z = lfilter([1], [1, -0.6], child(8, "wander").standard_normal(MANY))
+    assert wander(z, 300) < 0.1 * z.std()
+
+
+@pytest.mark.parametrize("z", [np.zeros(5000), np.full(500, np.nan), np.zeros(0), np.arange(60.0)])
+def test_values_from_which_no_wandering_can_be_told_have_none(z: Floats) -> None:
+    assert wander(z, 100) == 0.0
