@@ -56,10 +56,10 @@ class Detection:
 
 
 def by_schedule(onsets: Onsets, passed: Floats) -> Detection:
-    """Detection by the control schedule; `passed` (k + 1,) is the chance of passing the first i events."""
+    """Detection by the control schedule; `passed` (k + 1,) or (r, k + 1) is the chance of passing the first i events."""
     inside = onsets.edges < onsets.end[:, None]
     return Detection(
-        onsets.edges - onsets.at[:, None], np.where(inside, (passed[:-1] - passed[1:])[None, :], 0.0), onsets.length
+        onsets.edges - onsets.at[:, None], np.where(inside, passed[..., :-1] - passed[..., 1:], 0.0), onsets.length
     )
 
 

@@ -93,12 +93,12 @@ def _accumulate(
         for j in range(end[r] - at[r]):
             closed = 0.0
             while bracket < edges.shape[1] and edges[r, bracket] <= at[r] + j and edges[r, bracket] < end[r]:
-                closed += passed[bracket + 1] * inside
+                closed += passed[r, bracket + 1] * inside
                 inside = 0.0
                 bracket += 1
             chance = p[r, j] if by_onset else p[0, at[r] + j]
             inside += chance
-            reported[r, j + 1] = reported[r, j] + passed[bracket] * chance
+            reported[r, j + 1] = reported[r, j] + passed[r, bracket] * chance
             final[r, j + 1] = final[r, j] + closed
         for j in range(end[r] - at[r] + 1, reported.shape[1]):
             reported[r, j] = reported[r, j - 1]
@@ -113,8 +113,8 @@ class Exposure:
     ----------
     onsets
         The onsets.
-    passed : (k + 1,)
-        S_0 ... S_k.
+    passed : (k + 1,) or (r, k + 1)
+        S_0 ... S_k, the same for all onsets or of each.
     reported, final : (r, h + 1)
         N_u if reporting stops after j affected results, and N_uf if the alarm comes with the j-th.
     """
@@ -142,11 +142,12 @@ def exposure(onsets: Onsets, p: Floats, passed: Floats) -> Exposure:
         With k events each.
     p : (n,) or (r, h)
         Chance that each result is unreliable: per result of the history, or per onset and affected result (a drift).
-    passed : (k + 1,)
-        Chance that the first i events all pass.
+    passed : (k + 1,) or (r, k + 1)
+        Chance that the first i events all pass: the same for all onsets, or of each (a drift).
     """
     width = int(onsets.length.max()) + 1 if len(onsets.at) else 1
     reported = np.empty((len(onsets.at), width))
     final = np.empty_like(reported)
-    _accumulate(onsets.at, onsets.end, onsets.edges, np.atleast_2d(p), p.ndim == 2, passed, reported, final)
+    each = np.array(np.broadcast_to(passed, (len(onsets.at), passed.shape[-1])))
+    _accumulate(onsets.at, onsets.end, onsets.edges, np.atleast_2d(p), p.ndim == 2, each, reported, final)
     return Exposure(onsets, passed, reported, final)

@@ -107,7 +107,7 @@ class Trial:
 
 
 def trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats) -> Trial:
-    """Try a fault at the given onsets; `passed` (k + 1,) is the schedule's chance of passing the first i events under it."""
+    """Try a fault at the given onsets; `passed`, (k + 1,) or (r, k + 1), is the schedule's chance of passing the first i events."""
     if fault.kind == "drift":
         return _drift_trial(stretch, fault, onsets, passed)
     error = stretch.error

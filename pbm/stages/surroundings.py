@@ -20,6 +20,7 @@ from pbm.records.stream import StreamHistory, StreamName
 from pbm.stages.from_plan import error_model, reporting
 
 HORIZON_DAYS = 7.0
+DRIFT_GROUPS = 10
 
 
 @dataclass(frozen=True, slots=True)
@@ -93,25 +94,35 @@ class Surroundings:
         return int(inside.max(initial=0)) + 1
 
     def chance_of_passing(self, fault: Fault, onsets: Onsets) -> Survival:
-        """Chance that the first i control events after the onset of a fault all pass, i = 0 ... k."""
-        events, levels = onsets.edges.shape[1], self.controls.levels
-        if not levels or not self.controls.rules:
-            return Survival(np.ones(events + 1), np.zeros(events + 1))
-        means = np.array([level.mean for level in levels])
-        spread = np.array([level.sd for level in levels])
+        """Chance that the first i control events after the onset of a fault all pass, i = 0 ... k.
+
+        A drift has grown the further by the first event, the earlier in its bracket it began, and costs the less after it. So it is
+        followed by groups of onsets that began alike, and the chances have shape (r, k + 1).
+        """
+        if not self.controls.levels or not self.controls.rules:
+            return Survival(np.ones(onsets.edges.shape[1] + 1), np.zeros(onsets.edges.shape[1] + 1))
+        if fault.kind != "drift":
+            return self._survival(fault, np.ones(onsets.edges.shape[1]))
+        passed = np.ones((len(onsets.at), onsets.edges.shape[1] + 1))
+        error = np.zeros_like(passed)
+        for alike in np.array_split(
+            np.argsort(onsets.to_first_event, kind="stable"), min(DRIFT_GROUPS, len(onsets.at))
+        ):
+            ages = (onsets.edges[alike] - onsets.at[alike, None]).mean(axis=0)
+            found = self._survival(fault, fault.growth(ages))
+            passed[alike], error[alike] = found.passed, found.error
+        return Survival(passed, error)
+
+    def _survival(self, fault: Fault, growth: Floats) -> Survival:
+        """Chance of passing the first events, at each of which the fault has grown to such a share of its size, shape (k,)."""
+        levels = self.controls.levels
+        means, spread = np.array([level.mean for level in levels]), np.array([level.sd for level in levels])
         bias = fault.bias(means, error_model(self.analyte)) / spread
-        growth = fault.growth(self._ages_at_events(onsets))
         return survival(
-            Rules.parse(self.controls.rules),
+            Rules.parse(self.controls.rules or ()),
             growth[:, None] * bias[None, :],
             fault.multiple,
             np.array([level.repeats for level in levels]),
             self.random("controls"),
             share=fault.share_hit,
         )
-
-    @staticmethod
-    def _ages_at_events(onsets: Onsets) -> Floats:
-        """Affected results before each event, averaged over the onsets."""
-        ages: Floats = (onsets.edges - onsets.at[:, None]).mean(axis=0)
-        return ages
