@@ -35,6 +35,21 @@ def reported_step(x: Floats) -> float | None:
     return None
 
 
+def quantiles_within_steps(x: Floats, step: float, q: Floats) -> Floats:
+    """Quantiles of results x (n,) spread evenly over the cell of values that round to each.
+
+    Examples
+    --------
+    >>> quantiles_within_steps(np.array([1.0, 1.0, 2.0, 3.0]), 1.0, np.array([0.25, 0.5, 0.75])).tolist()
+    [1.0, 1.5, 2.5]
+    """
+    values, counts = np.unique(x, return_counts=True)
+    so_far = np.cumsum(counts) / len(x)
+    share = np.column_stack([so_far - counts / len(x), so_far]).ravel()
+    edges = np.column_stack([values - step / 2, values + step / 2]).ravel()
+    return np.asarray(np.interp(q, share, edges), dtype=np.float64)
+
+
 def _is_multiple(values: Floats, step: float) -> np.ndarray[tuple[int], np.dtype[np.bool_]]:
     ratio = values / step
     fits: np.ndarray[tuple[int], np.dtype[np.bool_]] = np.abs(ratio - np.rint(ratio)) < _ROUNDING + 1e-12 * np.abs(

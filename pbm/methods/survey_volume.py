@@ -1,8 +1,8 @@
 """Volume by hour of the week, and gaps: stretches without results that the hour's own history makes unlikely.
 
-The rate of an hour of the week is its mean count over the days that have results at all. Over a stretch without results the rates sum to
-L expected results; independent arrivals leave it empty with probability exp(-L). A gap is told where less than a hundredth of such a
-stretch was to be expected by chance among all the stretches between two results.
+The rate of an hour of the week is its mean count over the hours outside gaps. Over a stretch without results the rates sum to L expected
+results; independent arrivals leave it empty with probability exp(-L). A gap is told where less than a hundredth of such a stretch was to
+be expected by chance among all the stretches between two results. What is a gap and what the rates are is settled in a few rounds.
 """
 
 import math
@@ -10,21 +10,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from pbm.methods.clock_time import HOURS_A_WEEK, HOURS_FROM_MONDAY, MICROSECONDS_PER_DAY, MICROSECONDS_PER_HOUR
+from pbm.methods.clock_time import HOURS_A_WEEK, HOURS_FROM_MONDAY, MICROSECONDS_PER_HOUR
 from pbm.methods.jit import Floats, Integers
 
 BY_CHANCE = 0.01
 SHORTEST_HOURS = 1.0
-
-
-def hourly_rates(local: Integers) -> Floats:
-    """Mean results in each hour of the week over the days that have results, shape (168,); `local` (n,) in wall-clock microseconds."""
-    hour = (local // MICROSECONDS_PER_HOUR + HOURS_FROM_MONDAY) % HOURS_A_WEEK
-    days = np.unique(local // MICROSECONDS_PER_DAY)
-    days_of_each = np.bincount((days + HOURS_FROM_MONDAY // 24) % 7, minlength=7)
-    count = np.bincount(hour, minlength=HOURS_A_WEEK)
-    rates: Floats = count / np.maximum(np.repeat(days_of_each, 24), 1)
-    return rates
+ROUNDS = 4
 
 
 @dataclass(frozen=True, slots=True)
@@ -46,19 +37,35 @@ class Gap:
     expected: float
 
 
-def find_gaps(local: Integers) -> list[Gap]:
-    """The gaps of a stream in order of time.
+def rates_and_gaps(local: Integers) -> tuple[Floats, list[Gap]]:
+    """Mean results in each hour of the week outside gaps, shape (168,), and the gaps in order of time.
 
     Parameters
     ----------
     local : (n,)
-        Wall-clock microseconds of the results, at least two, in order of time.
+        Wall-clock microseconds of the results, at least one, in order of time.
     """
     first = int(local.min()) // MICROSECONDS_PER_HOUR
-    hours = np.arange(first, int(local.max()) // MICROSECONDS_PER_HOUR + 2)
-    rates = hourly_rates(local)
-    so_far = np.concatenate([[0.0], np.cumsum(rates[(hours[:-1] + HOURS_FROM_MONDAY) % HOURS_A_WEEK])])
-    expected = np.diff(np.interp(local, hours * MICROSECONDS_PER_HOUR, so_far))
+    hours = np.arange(first, int(local.max()) // MICROSECONDS_PER_HOUR + 1)
+    of_week = (hours + HOURS_FROM_MONDAY) % HOURS_A_WEEK
+    count = np.bincount(of_week[local // MICROSECONDS_PER_HOUR - first], minlength=HOURS_A_WEEK)
+    gaps: list[Gap] = []
+    for _ in range(ROUNDS):
+        outside = np.ones(len(hours), dtype=bool)
+        for gap in gaps:
+            begin, end = (int(t) // MICROSECONDS_PER_HOUR - first for t in local[gap.before : gap.before + 2])
+            outside[begin + 1 : end] = False
+        rates = count / np.maximum(np.bincount(of_week[outside], minlength=HOURS_A_WEEK), 1)
+        before, gaps = gaps, _gaps(local, hours * MICROSECONDS_PER_HOUR, rates[of_week])
+        if [gap.before for gap in gaps] == [gap.before for gap in before]:
+            break
+    return rates, gaps
+
+
+def _gaps(local: Integers, edges: Integers, rates: Floats) -> list[Gap]:
+    """Gaps, given where each hour begins and its rate."""
+    edges = np.append(edges, edges[-1] + MICROSECONDS_PER_HOUR)
+    expected = np.diff(np.interp(local, edges, np.concatenate([[0.0], np.cumsum(rates)])))
     length = np.diff(local) / MICROSECONDS_PER_HOUR
     unlikely = math.log(max(len(local) - 1, 1) / BY_CHANCE)
     found = np.flatnonzero((expected > unlikely) & (length >= SHORTEST_HOURS))

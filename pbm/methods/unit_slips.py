@@ -35,7 +35,8 @@ CONVERSIONS = {
 LEVEL_DAYS = 7
 FEWEST_DAYS = 3
 NEAR = 0.06  # of the logarithm of the ratio
-FAR_OUTSIDE = 5.0  # SD of the usual day-to-day change
+WITHIN, FAR_OUTSIDE = 3.0, 5.0  # SD of the usual day-to-day change
+SAME_LEVEL = 0.25  # of the logarithm
 
 
 @dataclass(frozen=True, slots=True)
@@ -58,8 +59,9 @@ def find_unit_slips(medians: Floats) -> list[UnitSlip]:
             continue
         if len(level) >= FEWEST_DAYS or (slips and level):
             before = float(np.median(level[-LEVEL_DAYS:]))
-            if (factor := _near_factor(math.log(median / before), usual)) is not None:
-                slips.append(UnitSlip(day, before, median, factor))
+            if _is_conversion(math.log(median / before), usual):
+                after = _level_from(medians, day)
+                slips.append(UnitSlip(day, before, after, _nearest(math.log(after / before))))
                 level = []
         level.append(median)
     return slips
@@ -73,7 +75,18 @@ def _usual_change(medians: Floats) -> float:
     return float(np.subtract(*np.quantile(np.diff(logs), [0.75, 0.25]))) / 1.349
 
 
-def _near_factor(log_ratio: float, usual: float) -> float | None:
-    known = min(CONVERSIONS, key=lambda factor: abs(abs(log_ratio) - math.log(factor)))
+def _is_conversion(log_ratio: float, usual: float) -> bool:
+    known = _nearest(log_ratio)
     off = abs(abs(log_ratio) - math.log(known))
-    return known if off < max(NEAR, usual) and math.log(known) > FAR_OUTSIDE * usual else None
+    return off < max(NEAR, WITHIN * usual) and math.log(known) > FAR_OUTSIDE * usual
+
+
+def _nearest(log_ratio: float) -> float:
+    return min(CONVERSIONS, key=lambda factor: abs(abs(log_ratio) - math.log(factor)))
+
+
+def _level_from(medians: Floats, day: int) -> float:
+    """The level from a day on: the median of the next days that stay near it."""
+    following = medians[day : day + LEVEL_DAYS]
+    following = following[following > 0]
+    return float(np.median(following[np.abs(np.log(following / medians[day])) < SAME_LEVEL]))

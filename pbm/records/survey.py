@@ -25,9 +25,9 @@ class Volume(Found):
     per_day
         Results a calendar day.
     by_hour_of_week
-        Mean results in each of the 168 hours from Monday 00:00, over the days that have results.
+        Mean results in each of the 168 hours from Monday 00:00, outside gaps.
     by_weekday
-        Mean results a day from Monday to Sunday, over the days that have results.
+        Mean results a day from Monday to Sunday, outside gaps.
     """
 
     results: int

@@ -13,7 +13,15 @@ from pbm.methods.chain import Preparation
 from pbm.methods.clock_time import HOURS_A_WEEK
 from pbm.methods.jit import Floats, Integers
 from pbm.methods.split import first_held_out_day
-from pbm.methods.survey_judgement import FEWEST_ADMITTED, Choice, best_choice, choices, later_alarms, with_baseline
+from pbm.methods.survey_judgement import (
+    FEWEST_ADMITTED,
+    NEAR_BEST,
+    Choice,
+    best_choice,
+    choices,
+    later_alarms,
+    with_baseline,
+)
 from pbm.methods.survey_pattern import group_means, share_of_variance
 from pbm.methods.trials import Stretch
 from pbm.records.laboratory import Lab
@@ -132,9 +140,9 @@ class _Survey:
     def _needed(self) -> Needed | None:
         if self._suggested is None or self._with_baseline is None:
             return None
-        best = min(self._suggested, self._with_baseline, key=lambda choice: choice.needed())
-        sizes = {"half": best.needed(0.5), "one": best.needed(), "two": best.needed(2.0)}
-        return Needed(**sizes, baseline=best is self._with_baseline)
+        pays = NEAR_BEST * self._with_baseline.needed() < self._suggested.needed()
+        best = self._with_baseline if pays else self._suggested
+        return Needed(half=best.needed(0.5), one=best.needed(), two=best.needed(2.0), baseline=pays)
 
     def _pattern(self) -> Pattern | None:
         if self._suggested is None:

@@ -4,6 +4,7 @@ import math
 from collections.abc import Iterator
 from dataclasses import dataclass
 from datetime import date, datetime, timedelta
+from functools import cached_property
 from zoneinfo import ZoneInfo
 
 import numpy as np
@@ -13,8 +14,9 @@ from pbm.methods.clock_time import MICROSECONDS_PER_DAY, local_microseconds
 from pbm.methods.jit import Floats, Integers
 from pbm.methods.repeats import count_repeats
 from pbm.methods.steady_runs import find_steady_runs
-from pbm.methods.steps import reported_step
-from pbm.methods.survey_volume import find_gaps, hourly_rates
+from pbm.methods.steps import quantiles_within_steps, reported_step
+from pbm.methods.survey_volume import Gap as FoundGap
+from pbm.methods.survey_volume import rates_and_gaps
 from pbm.methods.unit_slips import CONVERSIONS, find_unit_slips
 from pbm.records.laboratory import Analyte
 from pbm.records.stream import StreamHistory
@@ -43,7 +45,7 @@ def iso_day(day: int) -> str:
     return (EPOCH + timedelta(day)).isoformat()
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True)
 class Observed:
     """A stream's results with its clock.
 
@@ -69,9 +71,14 @@ class Observed:
         """Local time of a result."""
         return datetime.fromtimestamp(int(self.history.time[index]) / 1e6, self.zone).strftime("%Y-%m-%d %H:%M")
 
+    @cached_property
+    def hours(self) -> tuple[Floats, list[FoundGap]]:
+        """Mean results in each hour of the week, and the gaps."""
+        return rates_and_gaps(self.local)
+
     def volume(self) -> Volume:
         """How many results, and when."""
-        first, last, rates = int(self.days.min()), int(self.days.max()), hourly_rates(self.local)
+        first, last, (rates, _) = int(self.days.min()), int(self.days.max()), self.hours
         return Volume(
             results=len(self.days),
             first_day=iso_day(first),
@@ -85,7 +92,7 @@ class Observed:
 
     def gaps(self) -> Iterator[Gap]:
         """Stretches without results."""
-        for gap in find_gaps(self.local) if len(self.local) > 1 else []:
+        for gap in self.hours[1]:
             yield Gap(begin=self.at(gap.before), hours=gap.hours, expected=gap.expected)
 
     def distribution(self) -> Distribution:
@@ -112,7 +119,10 @@ class Observed:
         x, error = self.history.value, error_model(self.analyte)
         typical = np.array(np.median(x))
         tea, sd = float(error.tea(typical)), float(error.sd(typical))
-        spread = float(np.subtract(*np.quantile(x, [0.75, 0.25]))) / NORMAL_MIDDLE_HALF
+        spread = (
+            float(np.subtract(*quantiles_within_steps(x, self.analyte.step, np.array([0.75, 0.25]))))
+            / NORMAL_MIDDLE_HALF
+        )
         return Performance(
             allowable_error=tea,
             analytic_sd=sd,

@@ -80,7 +80,7 @@ def _sections(album: Album, survey: Survey) -> Iterator[Section]:
         yield Section(
             f"stream-{place}",
             stream,
-            survey_figures.volume_plot(album, stream.volume),
+            survey_figures.volume_plot(stream.volume),
             survey_figures.distribution_plot(
                 album, stream.distribution, (chosen.low, chosen.high) if chosen else (None, None), unit
             ),
