@@ -5,14 +5,14 @@ candidates meet the same faults at the same onsets. Among those within one stand
 simplest wins.
 """
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
 from pbm.methods.alarm import Limits
 from pbm.methods.candidates import Candidate
-from pbm.methods.chain import Preparation, Tracker, tracker_for
+from pbm.methods.chain import Preparation, Standing, Tracker, tracker_for
 from pbm.methods.expected import Onsets
 from pbm.methods.jit import Floats, Integers
 from pbm.methods.limits import quick_limits
@@ -49,7 +49,7 @@ def _by_preparation(given: Sequence[Candidate]) -> dict[Preparation, list[Candid
     return groups
 
 
-def scores(stretch: Stretch, runners: Sequence[Runner], trials: Sequence[tuple[Trial, float]], stop: Stopper) -> Floats:
+def scores(stretch: Stretch, runners: Sequence[Runner], trials: Iterable[tuple[Trial, float]], stop: Stopper) -> Floats:
     """Expected unreliable results of each candidate at each onset, averaged over faults.
 
     Parameters
@@ -59,7 +59,7 @@ def scores(stretch: Stretch, runners: Sequence[Runner], trials: Sequence[tuple[T
     runners
         The candidates, c of them.
     trials
-        Faults at the same r onsets, each with its weight.
+        Faults at the same r onsets, each with its weight; one at a time is held in memory.
     stop
         From results until the alarm to (alarm, stop), as `trials.alarm_and_stop` does.
 
@@ -67,19 +67,31 @@ def scores(stretch: Stretch, runners: Sequence[Runner], trials: Sequence[tuple[T
     -------
     (c, r)
     """
-    total = sum(weight for _, weight in trials)
-    out = np.zeros((len(runners), len(trials[0][0].onsets.at)))
-    for preparation, group in _grouped(runners).items():
-        z = stretch.prepared(preparation)
-        at = trials[0][0].onsets.at
-        standing = {i: runners[i].tracker.standing(z, runners[i].limits, at) for i in group}
-        for trial, weight in trials:
-            faulted = trial.prepared(preparation)
+    groups = _grouped(runners)
+    standing: list[Standing] = []
+    weights, sums = 0.0, np.zeros((len(runners), 0))
+    for tried, weight in trials:
+        if not standing:
+            standing = _standing(stretch, runners, groups, tried.onsets.at)
+            sums = np.zeros((len(runners), len(tried.onsets.at)))
+        weights += weight
+        for preparation, group in groups.items():
+            faulted = tried.prepared(preparation)
             for i in group:
-                runner = runners[i]
-                found = trial.results_to_alarm(faulted, runner.tracker, runner.limits, standing[i])
-                out[i] += weight / total * trial.exposure.unreliable(stop(found, trial.onsets)[1])
-    return out
+                found = tried.results_to_alarm(faulted, runners[i].tracker, runners[i].limits, standing[i])
+                sums[i] += weight * tried.exposure.unreliable(stop(found, tried.onsets)[1])
+    return sums / weights
+
+
+def _standing(
+    stretch: Stretch, runners: Sequence[Runner], groups: dict[Preparation, list[int]], at: Integers
+) -> list[Standing]:
+    """Each candidate's monitor before each onset."""
+    found: dict[int, Standing] = {}
+    for preparation, group in groups.items():
+        z = stretch.prepared(preparation)
+        found |= {i: runners[i].tracker.standing(z, runners[i].limits, at) for i in group}
+    return [found[i] for i in range(len(runners))]
 
 
 def _grouped(runners: Sequence[Runner]) -> dict[Preparation, list[int]]:

@@ -5,8 +5,8 @@ schedule present (methods/search.py), the finalists on the last third of the tra
 come from the day-block bootstrap over all training days (methods/limits.py).
 """
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, field, replace
 from datetime import date, timedelta
 from functools import partial
 
@@ -18,11 +18,11 @@ from pbm.methods.baseline import fit_baseline
 from pbm.methods.candidates import Candidate, preparations
 from pbm.methods.chain import Preparation, Tracker, tracker_for
 from pbm.methods.clock_time import local_days
-from pbm.methods.expected import follow
+from pbm.methods.expected import Onsets, follow
 from pbm.methods.faults import Fault
 from pbm.methods.in_control import inflation, slope, wander
 from pbm.methods.intervals import poisson_interval
-from pbm.methods.jit import Integers
+from pbm.methods.jit import Floats, Integers
 from pbm.methods.limits import CalibratedLimits, calibrated_limits, quick_limits
 from pbm.methods.search import Runner, best_of, limited, scores, simplest_near_best
 from pbm.methods.split import Split, first_held_out_day, split_at
@@ -37,7 +37,7 @@ from pbm.records.plan import (
 from pbm.records.stream import StreamHistory
 from pbm.stages.by_hand import NOTHING_BY_HAND, ByHand
 from pbm.stages.from_plan import faults_of, preparation, tracker
-from pbm.stages.surroundings import HORIZON_DAYS, Surroundings
+from pbm.stages.surroundings import Surroundings
 from pbm.stages.to_plan import chain_in_plan, limits_in_plan
 from pbm.stages.usefulness import Judgement, judge_usefulness
 
@@ -121,6 +121,7 @@ class _Tuning:
     history: StreamHistory
     split: Split
     by_hand: ByHand
+    _chances: dict[Fault, Floats] = field(default_factory=dict)
 
     def plan(self) -> StreamPlan:
         """Search, limit, judge and confirm."""
@@ -173,15 +174,17 @@ class _Tuning:
         training = self.split.days[: self.split.at]
         return split_at(training, first_held_out_day(training)).at
 
-    def trials(
-        self, training: Stretch, first: int, count: int, horizon_days: float = HORIZON_DAYS
-    ) -> list[tuple[Trial, float]]:
-        """Every fault at the same onsets among the training results from `first` on."""
-        onsets = self.around.onsets(training.time, first, len(training), count, horizon_days)
-        return [
-            (trial(training, fault, onsets, self.around.chance_of_passing(fault, onsets).passed), weight)
-            for fault, weight in faults_of(self.around.analyte)
-        ]
+    def trials(self, training: Stretch, onsets: Onsets) -> Iterator[tuple[Trial, float]]:
+        """Every fault at the same onsets, with its weight."""
+        for fault, weight in faults_of(self.around.analyte):
+            yield trial(training, fault, onsets, self._passed(fault, onsets)), weight
+
+    def _passed(self, fault: Fault, onsets: Onsets) -> Floats:
+        """Chance of passing the first control events; worked out once for each fault, for the longest horizon."""
+        events = onsets.edges.shape[1]
+        if fault not in self._chances or len(self._chances[fault]) <= events:
+            self._chances[fault] = self.around.chance_of_passing(fault, onsets).passed
+        return self._chances[fault][: events + 1]
 
     def stopper(self, training: Stretch) -> partial[tuple[Integers, Integers]]:
         """From results until the alarm to (alarm, stop), with the laboratory's response lag."""
@@ -197,15 +200,21 @@ class _Tuning:
         runners = limited(training, given, self.expected)
         if not runners:
             return None
+        last = self._last_onsets(training)
+        for fault, _ in faults_of(self.around.analyte):
+            self._passed(fault, last)
         second_day = int(np.searchsorted(self.split.days, self.split.days[0], side="right"))
-        first = self.trials(training, second_day, FIRST_ONSETS, FIRST_HORIZON_DAYS)
-        finalists = best_of(runners, scores(training, runners, first, self.stopper(training)), FINALISTS)
+        first = self.around.onsets(training.time, second_day, len(training), FIRST_ONSETS, FIRST_HORIZON_DAYS)
+        score = scores(training, runners, self.trials(training, first), self.stopper(training))
+        finalists = best_of(runners, score, FINALISTS)
         finalists = self._with_and_without_baseline(training, finalists)
         if not finalists:
             return None
-        last = self.trials(training, self.choose_at, ONSETS)
-        chosen = finalists[simplest_near_best(finalists, scores(training, finalists, last, self.stopper(training)))]
-        return self._refitted(training, chosen)
+        score = scores(training, finalists, self.trials(training, last), self.stopper(training))
+        return self._refitted(training, finalists[simplest_near_best(finalists, score)])
+
+    def _last_onsets(self, training: Stretch) -> Onsets:
+        return self.around.onsets(training.time, self.choose_at, len(training), ONSETS)
 
     def _with_and_without_baseline(self, training: Stretch, plain: list[Runner]) -> list[Runner]:
         """The finalists as they are, and adjusted for patient mix, unless one of the two is wanted."""
@@ -224,12 +233,17 @@ class _Tuning:
         return again[0] if again else None
 
     def _judge(self, training: Stretch, runner: Runner) -> Judgement:
-        trials = self.trials(training, self.choose_at, ONSETS)
-        score = float(scores(training, [runner], trials, self.stopper(training)).mean())
-        total = sum(weight for _, weight in trials)
-        alone = sum(weight / total * float(t.exposure.unreliable(t.onsets.length).mean()) for t, weight in trials)
+        alone: list[tuple[float, float]] = []
+
+        def trials() -> Iterator[tuple[Trial, float]]:
+            for tried, weight in self.trials(training, self._last_onsets(training)):
+                alone.append((float(tried.exposure.unreliable(tried.onsets.length).mean()), weight))
+                yield tried, weight
+
+        score = float(scores(training, [runner], trials(), self.stopper(training)).mean())
+        schedule = sum(count * weight for count, weight in alone) / sum(weight for _, weight in alone)
         needed = self._results_needed(training, runner)
-        return judge_usefulness(needed, self.per_day, 1 - score / alone if alone > 0 else 0.0)
+        return judge_usefulness(needed, self.per_day, 1 - score / schedule if schedule > 0 else 0.0)
 
     def _results_needed(self, training: Stretch, runner: Runner) -> float:
         """Median of the results until a shift of 1 TEa is found, to either side, followed for up to `NEEDED_AT_MOST` results."""
