@@ -1,4 +1,4 @@
-"""Write docs/reference/ from the code: commands, keys of lab.toml and plan.toml, appraisal.json, tables of the store.
+"""Write docs/reference/ from the code: commands, keys of lab.toml and plan.toml, survey.json, appraisal.json, tables of the store.
 
 Run as `python -m tests.house.reference` at the top of the tree. Nothing here depends on the terminal or on the day.
 """
@@ -17,6 +17,7 @@ from pbm.io.store_schema import SCHEMA_VERSION, metadata
 from pbm.records.appraisal import Appraisal
 from pbm.records.laboratory import Lab
 from pbm.records.plan import PARAMETER_KEYS, Plan
+from pbm.records.survey import Survey
 from tests.house.commands import Command, Parameter, commands
 from tests.house.keys import Record, default_in_words, meanings, sections, type_in_words
 
@@ -31,6 +32,7 @@ def pages() -> dict[str, str]:
         "commands.md": _commands_page(),
         "lab-toml.md": _file_page("lab.toml", Lab, _LAB),
         "plan-toml.md": _file_page("plan.toml", Plan, _PLAN),
+        "survey-json.md": _written_page("reports/survey.json", Survey, _SURVEY),
         "appraisal-json.md": _written_page("reports/appraisal.json", Appraisal, _APPRAISAL),
         "store.md": _store_page(),
     }
@@ -49,6 +51,7 @@ _PLAN = (
     "",
     *(f"- `{name}`: {', '.join(f'`{key}`' for key in keys)}" for name, keys in PARAMETER_KEYS.items()),
 )
+_SURVEY = ("Written by `pbm survey`. The same survey gives the same bytes; numbers are written with all their digits.",)
 _APPRAISAL = (
     "Written by `pbm appraise`. The same appraisal gives the same bytes; numbers are written with all their digits.",
 )

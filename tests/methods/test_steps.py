@@ -32,4 +32,6 @@ def test_results_that_are_not_rounded_have_no_step():
 def test_quartiles_of_coarsely_rounded_results_are_those_before_rounding():
     x = np.random.default_rng(1).normal(139.3, 1.2, 100_000)
     q = np.array([0.25, 0.5, 0.75])
-    assert quantiles_within_steps(np.rint(x), 1.0, q) == pytest.approx(np.quantile(x, q), abs=0.1)  # a tenth of the step
+    assert quantiles_within_steps(np.rint(x), 1.0, q) == pytest.approx(
+        np.quantile(x, q), abs=0.1
+    )  # a tenth of the step

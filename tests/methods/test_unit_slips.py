@@ -51,3 +51,9 @@ def test_no_medians_and_medians_at_or_below_0_have_none():
     assert find_unit_slips(-medians(30, 0.1)) == []
     assert find_unit_slips(np.zeros(0)) == []
     assert all(factor > 1 for factor in CONVERSIONS)
+
+
+@pytest.mark.parametrize("seed", range(5))
+def test_medians_of_six_coarsely_rounded_results_have_none(seed: int):
+    x = np.random.default_rng(seed).lognormal(0.05, 0.3, (360, 6)).round(1)
+    assert find_unit_slips(np.median(x, axis=1)) == []

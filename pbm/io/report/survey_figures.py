@@ -42,7 +42,7 @@ def _field(place: int, rate: float, share: float) -> Markup:
     rect = Markup('<rect x="{}" y="{}" width="{}" height="{}" fill-opacity="{}"/>').format(
         x, y, _WIDE, _TOP, f"{0.9 * share:.2f}"
     )
-    return rect + _text(x + _WIDE // 2, y + 13, _short(rate), "middle", "over" if share > 0.55 else "")
+    return rect + _text(x + _WIDE // 2, y + 13, _short(rate), "middle", "over" if share > 0.8 else "")
 
 
 def _text(x: int, y: int, text: str, anchor: str, name: str = "") -> Markup:
