@@ -47,13 +47,16 @@ class ErrorModel:
 def chance_beyond(tea: Floats, bias: Floats, sd: Floats) -> Floats:
     """P(|bias + sd Z| > tea), elementwise; all three in the same unit.
 
+    Without an analytic SD (a result of 0, whose SD is a percentage) the error is the bias alone.
+
     Examples
     --------
     >>> round(float(chance_beyond(np.array(3.0), np.array(1.0), np.array(1.0))), 6)
     0.022782
     """
     with np.errstate(divide="ignore", invalid="ignore"):
-        return ndtr((-tea - bias) / sd) + ndtr((bias - tea) / sd)
+        beyond: Floats = np.where(sd > 0, ndtr((-tea - bias) / sd) + ndtr((bias - tea) / sd), np.abs(bias) > tea)
+    return beyond
 
 
 def chance_unreliable(tea: Floats, bias: Floats, sd: Floats, multiple: float = 1.0) -> Floats:

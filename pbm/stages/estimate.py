@@ -74,6 +74,4 @@ class Estimator:
     def _expected(self, x: np.ndarray[tuple[int], np.dtype[np.float64]], size_in_tea: float) -> float:
         x = x[np.isfinite(x)]
         tea = self.error.tea(x)
-        # A result of 0 whose TEa and SD are percentages has neither; it cannot be unreliable.
-        with np.errstate(invalid="ignore"):
-            return float(np.nansum(chance_unreliable(tea, size_in_tea * tea, self.error.sd(x))))
+        return float(chance_unreliable(tea, size_in_tea * tea, self.error.sd(x)).sum())

@@ -66,11 +66,18 @@ def test_without_a_fault_no_result_counts_as_unreliable(tea: float, sd: float) -
 
 
 def test_without_analytic_error_a_result_is_unreliable_if_the_bias_exceeds_tea() -> None:
-    """A coefficient of variation gives no SD at a result of 0."""
-    bias = np.array([-4.1, -3.9, 0.0, 3.9, 4.1])
-    zero = np.zeros(5)
-    assert chance_beyond(zero + 4.0, bias, zero).tolist() == [1, 0, 0, 0, 1]
-    assert chance_unreliable(zero + 4.0, bias, zero).tolist() == [1, 0, 0, 0, 1]
+    bias = np.array([-4.1, -4.0, -3.9, 0.0, 3.9, 4.0, 4.1])
+    zero = np.zeros(7)
+    assert chance_beyond(zero + 4.0, bias, zero).tolist() == [1, 0, 0, 0, 0, 0, 1]
+    assert chance_unreliable(zero + 4.0, bias, zero).tolist() == [1, 0, 0, 0, 0, 0, 1]
+
+
+def test_a_result_of_zero_whose_limits_are_percentages_is_reliable_as_it_is() -> None:
+    """Neither TEa nor SD nor a proportional bias: nothing divided by nothing would spoil every sum it enters."""
+    percentages = ErrorModel(0.0, 10.0, 0.0, 2.0)
+    x = np.array([0.0, 5.0])
+    chances = chance_unreliable(percentages.tea(x), 0.2 * x, percentages.sd(x))
+    assert chances.tolist() == [0.0, pytest.approx(1.0, abs=1e-6)]
 
 
 @given(st.floats(0.01, 50), st.floats(0.1, 40), st.floats(0, 1000))

@@ -1,0 +1,224 @@
+"""Tune: the same plan for the same seed, every kind of history decided in words, and what the plan says is so."""
+
+import math
+from dataclasses import replace
+from datetime import date, timedelta
+from functools import cache
+from typing import Any
+
+import numpy as np
+import pytest
+
+from pbm.methods.alarm import episodes
+from pbm.methods.clock_time import local_days
+from pbm.methods.intervals import poisson_interval
+from pbm.records.plan import MonitorPlan, StreamPlan
+from pbm.records.stream import StreamHistory, StreamName
+from pbm.stages.from_plan import limits, preparation, tracker
+from pbm.stages.surroundings import Surroundings
+from pbm.stages.tune import tune_stream
+from tests.stages.offline import DAY, SODIUM, START, history, laboratory, sodium, times
+
+DAYS, PER_DAY = 30, 60
+N = DAYS * PER_DAY
+TIME = times(DAYS, PER_DAY)
+RANDOM = np.random.default_rng(5)
+NORMAL = np.rint(RANDOM.normal(139, 3, N))
+LOGNORMAL = np.round(np.exp(RANDOM.normal(0.3, 0.6, N)), 2).clip(0.01)
+
+
+@cache
+def plan_of_sodium(seed: int = 1) -> StreamPlan:
+    return tune_stream(sodium(), laboratory(), seed)
+
+
+def monitor_of(plan: StreamPlan) -> MonitorPlan:
+    (monitor,) = plan.monitors
+    return monitor
+
+
+def test_the_same_seed_gives_the_same_plan() -> None:
+    assert tune_stream(sodium(), laboratory(), 1) == plan_of_sodium()
+
+
+def test_another_seed_draws_other_onsets_and_other_days() -> None:
+    assert plan_of_sodium(2) != plan_of_sodium()
+
+
+def test_a_plan_does_not_depend_on_what_was_tuned_before() -> None:
+    other = sodium(seed=9, name=StreamName("sodium", "line-2"))
+    before = tune_stream(other, laboratory(), 1)
+    assert tune_stream(sodium(), laboratory(), 1) == plan_of_sodium()
+    assert tune_stream(other, laboratory(), 1) == before
+
+
+def test_a_stream_of_the_same_results_has_draws_of_its_own() -> None:
+    plan = tune_stream(sodium(name=StreamName("sodium", "line-2")), laboratory(), 1)
+    assert monitor_of(plan).limits_interval != monitor_of(plan_of_sodium()).limits_interval
+
+
+def test_held_out_days_do_not_touch_the_monitor() -> None:
+    given = sodium()
+    first = plan_of_sodium().held_out_from
+    assert first is not None
+    later = local_days(given.time, laboratory().laboratory.zone) >= (first - date(1970, 1, 1)).days
+    worse = replace(given, value=np.where(later, given.value + 20, given.value))
+    changed = tune_stream(worse, laboratory(), 1)
+    assert monitor_of(changed).model_copy(update={"held_out": None}) == monitor_of(plan_of_sodium()).model_copy(
+        update={"held_out": None}
+    )
+    assert changed.reason == plan_of_sodium().reason
+    assert monitor_of(changed).held_out != monitor_of(plan_of_sodium()).held_out
+
+
+def test_what_the_plan_says_of_its_days_and_alarms_is_so() -> None:
+    given, plan = sodium(), plan_of_sodium()
+    monitor = monitor_of(plan)
+    days = local_days(given.time, laboratory().laboratory.zone)
+    assert plan.held_out_from == date(1970, 1, 1) + timedelta(int(days[0]) + 30)
+    assert plan.results_per_day == 120.0
+    stretch = Surroundings.of(SODIUM, laboratory(), 1).stretch(given)
+    z = stretch.prepared(preparation(monitor))
+    split = int(np.searchsorted(days, days[0] + 30))
+    alarms = episodes(tracker(monitor).path(z), limits(monitor)).at
+    assert monitor.train is not None and monitor.held_out is not None
+    assert (monitor.train.days, monitor.train.episodes) == (30, int((alarms < split).sum()))
+    assert (monitor.held_out.days, monitor.held_out.episodes) == (15, int((alarms >= split).sum()))
+    assert monitor.held_out.interval == poisson_interval(monitor.held_out.episodes)
+    assert monitor.held_out.kept == (monitor.held_out.interval[0] <= 15 / 30)
+    assert monitor.spread == pytest.approx(np.nanstd(z[:split]))
+    assert plan.verdict == "useful"
+    assert "60" not in plan.reason.split(";")[0] and "120 a day" in plan.reason
+
+
+def heavily_censored(share: float) -> dict[str, Any]:
+    value = np.where(RANDOM.random(N) < share, 5.0, np.rint(RANDOM.normal(9, 2, N)).clip(5))
+    return {"value": value, "censor": np.where(value <= 5, -1, 0)}
+
+
+def with_gaps() -> dict[str, Any]:
+    time = TIME.copy()
+    time[N // 3 :] += 21 * DAY
+    time[2 * N // 3 :] += 35 * DAY
+    return {"value": NORMAL, "time": time}
+
+
+def most_on_the_first_day() -> dict[str, Any]:
+    later = times(29, 25) + DAY
+    first = START + np.sort(RANDOM.integers(0, DAY, 3000))
+    return {"value": np.rint(RANDOM.normal(139, 3, 3000 + len(later))), "time": np.concatenate([first, later])}
+
+
+HISTORIES: dict[str, tuple[dict[str, Any], dict[str, Any]]] = {
+    "constant": ({"value": np.full(N, 139.0)}, {}),
+    "constant in tenths": ({"value": np.full(N, 0.3)}, {"step": 0.1}),
+    "two values": ({"value": np.where(RANDOM.random(N) < 0.5, 139.0, 140.0)}, {}),
+    "one value and a rare other": ({"value": np.where(RANDOM.random(N) < 0.001, 140.0, 139.0)}, {}),
+    "all censored": ({"value": np.full(N, 5.0), "censor": np.full(N, -1)}, {"reportable": {"low": 5}}),
+    "nine tenths censored": (heavily_censored(0.9), {"reportable": {"low": 5}}),
+    "weeks without results": (with_gaps(), {}),
+    "most on the first day": (most_on_the_first_day(), {}),
+    "about zero, TEa in percent": (
+        {"value": np.round(RANDOM.normal(0, 3, N), 1)},
+        {"step": 0.1, "allowable_error": {"percent": 10}, "analytic_sd": {"cv_percent": 2}},
+    ),
+    "negative and skewed": ({"value": np.round(-np.exp(RANDOM.normal(0, 1, N)), 1)}, {"step": 0.1}),
+    "far below TEa, skewed": (
+        {"value": np.round(np.exp(RANDOM.normal(1, 1, N))).clip(1)},
+        {"allowable_error": {"absolute": 100.0}},
+    ),
+    "without a mean": ({"value": np.round(RANDOM.standard_cauchy(N) * 10 + 100)}, {}),
+    "up to billions": ({"value": np.round(np.exp(RANDOM.normal(20, 2, N)))}, {}),
+    "TEa too small to see": ({"value": NORMAL}, {"allowable_error": {"absolute": 0.001}}),
+    "a trend": ({"value": np.rint(NORMAL + np.linspace(0, 20, N))}, {}),
+    "like thyrotropin": (
+        {"value": LOGNORMAL},
+        {"step": 0.01, "allowable_error": {"absolute": 0.2, "percent": 20}, "analytic_sd": {"cv_percent": 3}},
+    ),
+}
+
+
+def decided(name: str) -> tuple[StreamHistory, StreamPlan]:
+    columns, analyte = HISTORIES[name]
+    given = history(
+        columns["value"], columns.get("time", TIME), censor=columns.get("censor", np.zeros(len(columns["value"])))
+    )
+    return given, tune_stream(given, laboratory(**analyte), 1)
+
+
+@pytest.mark.parametrize("name", HISTORIES)
+def test_every_kind_of_history_is_decided_in_words_and_numbers(name: str) -> None:
+    """A warning would be an error here, and so would any figure that is not finite: the records take none."""
+    _, plan = decided(name)
+    assert plan.reason
+    assert (plan.verdict == "not useful here") == (plan.monitors == ())
+    for monitor in plan.monitors:
+        assert monitor.limits.low is None or monitor.limits.low < monitor.centre
+        assert monitor.limits.high is None or monitor.centre < monitor.limits.high
+        assert math.isfinite(monitor.slope) and monitor.slope > 0
+        assert monitor.train is not None and monitor.train.episodes <= 4 * (1 + monitor.train.days / 30)
+
+
+@pytest.mark.parametrize("name", ["constant", "constant in tenths", "all censored"])
+def test_results_that_never_vary_have_no_tail_and_no_monitor(name: str) -> None:
+    _, plan = decided(name)
+    assert plan.verdict == "not useful here"
+    assert "tail" in plan.reason
+    assert plan.results_per_day == PER_DAY
+
+
+@pytest.mark.parametrize("name", ["TEa too small to see", "without a mean", "a trend"])
+def test_where_no_error_of_one_tea_is_seen_the_stream_is_not_useful(name: str) -> None:
+    _, plan = decided(name)
+    assert plan.verdict == "not useful here"
+    assert "1 TEa" in plan.reason
+
+
+@pytest.mark.parametrize(("days", "per_day"), [(19, 200), (40, 20), (1, 5000), (5, 1)])
+def test_too_little_data_is_refused_with_what_there_is_and_what_is_needed(days: int, per_day: int) -> None:
+    plan = tune_stream(sodium(days, per_day), laboratory(), 1)
+    assert plan.verdict == "not useful here" and plan.monitors == ()
+    assert f"{days * per_day} results on {days} days" in plan.reason
+    assert "at least 1000 results on 20 days" in plan.reason
+
+
+@pytest.mark.parametrize(
+    "faults",
+    [
+        [{"kind": "shift", "sizes": [5], "unit": "percent", "signs": "up"}],
+        [{"kind": "drift", "sizes": [2], "unit": "TEa", "over": "100 results"}],
+        [{"kind": "noise", "sizes": [2, 3]}],
+        [{"kind": "sporadic", "sizes": [3], "unit": "SD", "share": 0.2}],
+    ],
+    ids=lambda f: f[0]["kind"],
+)
+def test_faults_of_every_kind_can_be_guarded_against(faults: list[dict[str, Any]]) -> None:
+    assert tune_stream(sodium(30, 60), laboratory(faults=faults), 1).reason
+
+
+@pytest.mark.parametrize(
+    "controls",
+    [
+        {},
+        {"every": "30 results", "rules": ["1-3s"]},
+        {"times": ["00:30"], "rules": ["1-3s", "2-2s", "R-4s", "4-1s", "10x"]},
+        {"times": ["07:00"], "weekdays": ["Mon"], "rules": ["1-3s"]},
+    ],
+    ids=["no schedule", "by count", "every rule", "Mondays"],
+)
+def test_any_schedule_will_do(controls: dict[str, Any]) -> None:
+    plan = tune_stream(sodium(30, 60), laboratory(controls, zone="Atlantic/Azores"), 1)
+    assert plan.verdict in {"useful", "marginal"}
+
+
+def test_a_monitor_gains_more_where_controls_are_rarer() -> None:
+    gains = [
+        int(tune_stream(sodium(30, 60), laboratory(controls), 1).reason.split("; ")[2].partition("%")[0])
+        for controls in ({"every": "10 results", "rules": ["1-3s"]}, {"every": "200 results", "rules": ["1-3s"]}, {})
+    ]
+    assert gains == sorted(gains) and gains[0] < gains[2]
+
+
+def test_a_lag_in_minutes_is_taken() -> None:
+    slow, quick = (tune_stream(sodium(30, 60), laboratory({}, lag=lag), 1).reason for lag in ("600 min", "1 min"))
+    assert int(slow.split("; ")[2].partition("%")[0]) < int(quick.split("; ")[2].partition("%")[0])
