@@ -230,6 +230,12 @@ class FaultList(Written):
     share: Annotated[float, Field(gt=0, le=1)] | None = None
     weight: Positive = 1.0
 
+    @model_validator(mode="after")
+    def _noise_adds(self) -> "FaultList":
+        if self.kind == "noise" and min(self.sizes) <= 1:
+            raise ValueError("expected sizes above 1 for noise: they are factors on the analytic SD")
+        return self
+
 
 DEFAULT_FAULTS = (FaultList(sizes=(0.25, 0.5, 0.75, 1.0, 1.5, 2.0)),)
 

@@ -66,12 +66,11 @@ def _lag(given: Any) -> Any:
 
 
 def _every(given: Any) -> Any:
-    if isinstance(given, int) and not isinstance(given, bool):
-        return given
     found = _COUNT.match(given) if isinstance(given, str) else None
-    if not found or int(found[1]) < 1:
+    count = int(found[1]) if found else given
+    if not isinstance(count, int) or isinstance(count, bool) or count < 1:
         raise ValueError('expected a count of results such as "200 results"')
-    return int(found[1])
+    return count
 
 
 def _clock(given: str) -> str:
