@@ -4,9 +4,11 @@ The monitor runs over the whole history, as it would have been running; onsets a
 interval of a bootstrap over the days of the onsets, except the exact Poisson interval of the false alarms.
 """
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from datetime import date, timedelta
+from functools import partial
 
 import numpy as np
 
@@ -123,7 +125,7 @@ class _Appraising:
         running = _Running.of(monitor, stretch, trials[0].trial.onsets)
         faults = tuple(_appraise_fault(t, running, self.around, stretch, averages) for t in trials)
         held_out = running.path[self.split.at :]
-        back = running.preparation.back if running.tracker.law.begins == "level" else float
+        back = partial(_in_unit, running, float(stretch.value.max()))
         return MonitorAppraisal(
             words=monitor_in_words(monitor, self.around.analyte.unit),
             brief=monitor_in_brief(monitor),
@@ -188,6 +190,12 @@ class _Running:
 
     def results_to_alarm(self, tried: Trial) -> Integers:
         return tried.results_to_alarm(tried.prepared(self.preparation), self.tracker, self.limits, self.standing)
+
+
+def _in_unit(running: _Running, largest: float, s: float) -> float:
+    """A value of the statistic in the result's unit; the largest result seen where no finite one is transformed to it."""
+    level = running.preparation.back(s) if running.tracker.law.begins == "level" else s
+    return level if math.isfinite(level) else largest
 
 
 @dataclass(frozen=True, slots=True)
