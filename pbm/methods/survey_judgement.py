@@ -43,7 +43,7 @@ class Choice:
     spread, inflation
         SD of the admitted values on the statistic's scale; variance inflation of their means.
     moved
-        Movement of their mean under a shift of 1 TEa, mean of both signs.
+        Movement of their mean under a shift of 1 TEa, mean of both signs; 0 where a shift leaves no result to admit.
     in_control
         Admitted results between two false alarms of the budget.
     """
@@ -57,7 +57,7 @@ class Choice:
 
     def needed(self, size: float = 1.0) -> float:
         """Results offered until a shift of `size` TEa is seen; infinite where it moves nothing."""
-        if self.spread == 0 or self.moved <= 0:
+        if self.moved <= 0:
             return math.inf
         return results_needed(size * self.moved / self.spread, self.in_control, self.inflation) / self.admitted
 
@@ -93,12 +93,13 @@ def _weighed(
 ) -> Choice | None:
     z = stretch.prepared(preparation)
     taken = z[~np.isnan(z)]
-    if len(taken) < FEWEST_ADMITTED or np.ptp(taken) == 0:
+    if len(taken) < FEWEST_ADMITTED or (spread := float(taken.std())) == 0:
         return None
     means = [_mean(preparation.all(x, censor, stretch.mix)) for x, censor in shifted]
     share = len(taken) / len(z)
     moved = abs(means[1] - means[0]) / 2
-    return Choice(preparation, share, float(taken.std()), inflation(z), moved, share * in_control)
+    moved = moved if math.isfinite(moved) else 0.0
+    return Choice(preparation, share, spread, inflation(z), moved, share * in_control)
 
 
 def _mean(z: Floats) -> float:

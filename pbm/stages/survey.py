@@ -31,6 +31,8 @@ from pbm.stages.surroundings import Surroundings
 from pbm.stages.survey_parts import Observed, iso_day
 from pbm.stages.survey_words import first_judgement, oddities
 
+LARGEST = 1e60  # its fourth power is still a number
+
 
 def survey_stream(history: StreamHistory, patient: Integers, lab: Lab, seed: int) -> StreamSurvey:
     """Look at one stream.
@@ -49,11 +51,16 @@ def survey_stream(history: StreamHistory, patient: Integers, lab: Lab, seed: int
     Raises
     ------
     InputError
-        If the laboratory does not know the analyte.
+        If the laboratory does not know the analyte, or a result is too large to reckon with.
     """
     if history.name.analyte not in lab.analytes:
         raise InputError(
             f"lab.toml has no analyte {history.name.analyte}, of which the history holds results. Describe it there, or delete history/ "
+            "and take the extracts again with `pbm intake`."
+        )
+    if (highest := float(np.abs(history.value).max())) > LARGEST:
+        raise InputError(
+            f"A result of {history.name} is {highest:g}, which no method measures. Say in lab.toml what is `plausible`, delete history/ "
             "and take the extracts again with `pbm intake`."
         )
     around = Surroundings.of(history.name, lab, seed)

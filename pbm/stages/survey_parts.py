@@ -104,7 +104,7 @@ class Observed:
             **dict(zip(names, quantiles, strict=True)),
             mean=float(x.mean()),
             spread=float(x.std()),
-            skewness=float(skew(x)) if np.ptp(x) > 0 else None,
+            skewness=_skewness(x),
             distinct=len(np.unique(x)),
             censored_below=float((censor < 0).mean()),
             censored_above=float((censor > 0).mean()),
@@ -184,6 +184,14 @@ class Observed:
                 mean=float(x.mean()),
                 spread=float(x.std(ddof=1)) if len(x) > 1 else None,
             )
+
+
+def _skewness(x: Floats) -> float | None:
+    """Skewness; none where the results do not vary, or by too little to tell it from rounding."""
+    if np.ptp(x) <= 1e-12 * np.abs(x).max():
+        return None
+    found = float(skew(x))
+    return found if math.isfinite(found) else None
 
 
 def histogram(x: Floats, step: float) -> Histogram:

@@ -208,3 +208,26 @@ def test_an_analyte_that_lab_toml_does_not_know_is_an_error_that_says_so():
 def test_the_same_seed_gives_the_same_survey():
     x = np.round(np.random.default_rng(1).lognormal(0.6, 0.8, 9000), 2)
     assert surveyed(x, analyte="tsh") == surveyed(x, analyte="tsh")
+
+
+def test_a_result_that_no_method_measures_is_an_error_that_says_so():
+    with pytest.raises(InputError, match="plausible"):
+        surveyed(np.append(sodium(2000), 1e200))
+
+
+@pytest.mark.parametrize(
+    "x",
+    [
+        np.where(np.arange(3000) % 3 == 0, 5.0, 6.0),
+        np.append(np.full(2999, 5.0), 99_999.0),
+        np.where(np.arange(3000) % 97 == 0, 7.0, 5.0),
+        np.linspace(1, 1000, 3000),
+        np.random.default_rng(1).lognormal(0, 6, 3000),
+        np.random.default_rng(1).lognormal(0, 1, 3000) * 1e-200,
+        np.zeros(3000),
+    ],
+)
+@pytest.mark.parametrize("days", [1e-6, 1, 2500])
+def test_strange_streams_are_surveyed(x: np.ndarray, days: float):
+    assert surveyed(x, days=days, analyte="tsh").volume.results == 3000
+    assert surveyed(x, days=days, censor=np.arange(3000) % 2).volume.results == 3000
