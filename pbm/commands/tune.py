@@ -53,6 +53,7 @@ def tune(
 
     Example:  pbm tune sodium@line-1 --admit 125:155 --statistic ewma --weight 0.05
     """
+    from pbm.commands.fleet import share_fleet_budget, told_shares
     from pbm.commands.lab import read_checked_lab
     from pbm.commands.work import chosen_streams, over_streams, report_failures
     from pbm.io.plan_file import read_plan, write_plan
@@ -66,11 +67,14 @@ def tune(
     task = partial(tune_stream, lab=laboratory, seed=seed, by_hand=by_hand, kept=kept)
     done = over_streams(folder.history, names, task, workers, "Tuning")
     tuned = {str(d.name): d.result for d in done if d.result is not None}
+    shares = {} if keep else share_fleet_budget(folder, laboratory, seed, workers, tuned)
     if tuned:
         plan = _merged(folder, tuned, seed, keep_others=bool(streams))
         write_plan(folder.plan, plan)
         told = {name: plan.streams[name] for name in tuned}
-        typer.echo(plan.model_dump_json(indent=2) if json else _told(folder.plan, told))
+        typer.echo(
+            plan.model_dump_json(indent=2) if json else _told(folder.plan, told) + told_shares(laboratory, shares)
+        )
     report_failures(done)
 
 

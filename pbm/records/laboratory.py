@@ -124,7 +124,7 @@ class Alarms(Written):
     budget
         False alarms of one stream.
     fleet_budget
-        False alarms of the whole laboratory together; nothing shares it out among the streams yet.
+        False alarms of the whole laboratory together, shared among the streams where they save most.
     response_lag
         What is still reported between an alarm and the stop.
     """

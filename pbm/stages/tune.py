@@ -20,6 +20,7 @@ from pbm.methods.chain import Preparation, Tracker, tracker_for
 from pbm.methods.clock_time import local_days
 from pbm.methods.expected import Onsets, follow
 from pbm.methods.faults import Fault
+from pbm.methods.fleet import TradeOff
 from pbm.methods.in_control import inflation, slope, wander
 from pbm.methods.intervals import poisson_interval
 from pbm.methods.jit import Floats, Integers
@@ -47,6 +48,7 @@ FIRST_ONSETS, FIRST_HORIZON_DAYS = 40, 2.0
 ONSETS, FINALISTS = 250, 12
 WINDOWS = 50  # a window is no longer than this part of the training results
 NEEDED_AT_MOST = 5_000
+TRADED_BUDGETS = tuple(1 / days for days in (240, 120, 60, 30, 15, 7, 3, 1))  # false alarms a day
 
 
 def tune_stream(
@@ -55,6 +57,7 @@ def tune_stream(
     seed: int,
     by_hand: ByHand = NOTHING_BY_HAND,
     kept: Mapping[str, StreamPlan] | None = None,
+    budgets: Mapping[str, float] | None = None,
 ) -> StreamPlan:
     """Choose the monitor of one stream, or say why it has none.
 
@@ -70,6 +73,8 @@ def tune_stream(
         What a person sets; the rest is chosen.
     kept
         Plans of streams by name: the stream's monitor is kept as it is there, and only centre and limits are learned anew.
+    budgets
+        False alarms a day by stream, where they are not those of `lab.toml`.
 
     Raises
     ------
@@ -83,8 +88,23 @@ def tune_stream(
     refusal = _too_little(days)
     if refusal:
         return _no_monitor(around, days, refusal)
-    work = _Tuning(around, history, split_at(days, first_held_out_day(days)), by_hand)
+    budget = (budgets or {}).get(str(history.name), lab.budget_of(history.name.analyte).per_day)
+    work = _Tuning(around, history, split_at(days, first_held_out_day(days)), budget, by_hand)
     return work.plan() if kept is None else work.relimited(_one_monitor(kept, str(history.name)))
+
+
+def trade_off(history: StreamHistory, lab: Lab, seed: int, plans: Mapping[str, StreamPlan]) -> TradeOff:
+    """What budgets of false alarms buy on a stream with the monitor that it has in a plan.
+
+    Raises
+    ------
+    PlanError
+        If the plan does not hold one monitor of the stream.
+    """
+    around = Surroundings.of(history.name, lab, seed)
+    days = local_days(history.time, lab.laboratory.zone)
+    work = _Tuning(around, history, split_at(days, first_held_out_day(days)), budget=TRADED_BUDGETS[0])
+    return work.trade_off(_one_monitor(plans, str(history.name)))
 
 
 def _one_monitor(kept: Mapping[str, StreamPlan], name: str) -> MonitorPlan:
@@ -120,7 +140,8 @@ class _Tuning:
     around: Surroundings
     history: StreamHistory
     split: Split
-    by_hand: ByHand
+    budget: float
+    by_hand: ByHand = NOTHING_BY_HAND
     _chances: dict[Fault, Floats] = field(default_factory=dict)
 
     def plan(self) -> StreamPlan:
@@ -131,11 +152,23 @@ class _Tuning:
     def relimited(self, monitor: MonitorPlan) -> StreamPlan:
         """The same for a monitor that is kept: no search, and the baseline stays as it is."""
         training = self._training()
+        return self._decided(training, self._kept(training, monitor, self.expected))
+
+    def trade_off(self, monitor: MonitorPlan) -> TradeOff:
+        """Expected unreliable results, averaged over the faults, at a range of budgets for a monitor that is kept."""
+        training = self._training()
+        runners = [self._kept(training, monitor, b * self.split.training_days) for b in TRADED_BUDGETS]
+        usable = [(b, runner) for b, runner in zip(TRADED_BUDGETS, runners, strict=True) if runner]
+        given = self.trials(training, self._last_onsets(training))
+        cost = scores(training, [runner for _, runner in usable], given, self.stopper(training)).mean(axis=1)
+        return TradeOff(np.array([b for b, _ in usable]), cost)
+
+    def _kept(self, training: Stretch, monitor: MonitorPlan, expected: float) -> Runner | None:
         z = training.prepared(preparation(monitor))
         learned = tracker_for(z, monitor.statistic, tracker(monitor).parameter, **_fixed(tracker(monitor)))
         chosen = Candidate(preparation(monitor), monitor.statistic, learned.parameter)
-        limits = quick_limits(learned.path(z), learned.centre, self.expected)
-        return self._decided(training, Runner(chosen, learned, limits) if limits else None)
+        limits = quick_limits(learned.path(z), learned.centre, expected)
+        return Runner(chosen, learned, limits) if limits else None
 
     def _training(self) -> Stretch:
         return self.around.stretch(self.history.rows(slice(0, self.split.at)))
@@ -166,7 +199,7 @@ class _Tuning:
     @property
     def expected(self) -> float:
         """Episodes that the budget allows in the training days."""
-        return self.around.lab.budget_of(self.around.name.analyte).per_day * self.split.training_days
+        return self.budget * self.split.training_days
 
     @property
     def choose_at(self) -> int:
@@ -275,23 +308,22 @@ class _Tuning:
         prepared, tracked = runner.candidate.preparation, runner.tracker
         z = training.prepared(prepared)
         wandering = wander(z, round(self.per_day))
-        budget = self.around.lab.budget_of(self.around.name.analyte).per_day
         return MonitorPlan(
             **chain_in_plan(prepared, tracked, z),
             **limits_in_plan(limits),
-            budget_per_day=budget,
+            budget_per_day=self.budget,
             slope=slope(training, prepared),
             inflation=inflation(z, wandering),
             wander=wandering,
             train=Training(days=self.split.training_days, episodes=limits.episodes),
-            held_out=self._held_out(prepared, tracked, limits.limits, budget),
+            held_out=self._held_out(prepared, tracked, limits.limits),
         )
 
-    def _held_out(self, prepared: Preparation, tracked: Tracker, limits: Limits, budget: float) -> HeldOut:
+    def _held_out(self, prepared: Preparation, tracked: Tracker, limits: Limits) -> HeldOut:
         z = self.around.stretch(self.history).prepared(prepared)
         count = int((episodes(tracked.path(z), limits).at >= self.split.at).sum())
         interval = poisson_interval(count)
-        allowed = budget * self.split.held_out_days
+        allowed = self.budget * self.split.held_out_days
         return HeldOut(
             days=self.split.held_out_days, episodes=count, interval=interval, kept=bool(interval[0] <= allowed)
         )

@@ -1,5 +1,6 @@
 """`pbm tune`: monitors set by hand, plans kept, and what is refused."""
 
+import shutil
 from pathlib import Path
 
 import numpy as np
@@ -102,3 +103,17 @@ def test_a_stream_that_fails_says_why_and_leaves_with_two(laboratory: Path) -> N
     assert result.exit_code == 2
     assert "sodium@line-1 failed: These results are not skewed" in result.stderr
     assert (laboratory / "plan.toml").read_bytes() == before
+
+
+def test_a_fleet_budget_is_shared_told_and_stands_in_the_plan(laboratory: Path, tmp_path: Path) -> None:
+    shutil.copytree(laboratory, tmp_path / "lab")
+    lab = tmp_path / "lab" / "lab.toml"
+    lab.write_text(lab.read_text() + '\n[alarms]\nfleet_budget = "1 per 100 days"\n')
+    by_hand = ("--statistic", "ewma", "--weight", "0.1", "--no-mix")
+    result = pbm(tmp_path / "lab", "tune", *by_hand)
+    assert result.exit_code == 0
+    assert "Fleet budget, 1 per 100 days, shared where it saves most" in result.stdout
+    shared = monitor(tmp_path / "lab")
+    assert shared.budget_per_day == pytest.approx(0.01)
+    assert pbm(laboratory, "tune", *by_hand).exit_code == 0
+    assert shared.limits.high > monitor(laboratory).limits.high
