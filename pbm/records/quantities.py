@@ -109,10 +109,11 @@ class AllowableError(Written):
             raise ValueError("expected { absolute = ... }, { percent = ... } or both")
         return self
 
-    def __str__(self) -> str:
-        absolute = "" if self.absolute is None else f"{self.absolute:g}"
+    def in_words(self, unit: str) -> str:
+        """As people read it, such as "15 % or 6 U/L, the greater"."""
         percent = "" if self.percent is None else f"{self.percent:g} %"
-        return f"{absolute} or {percent}, the greater" if absolute and percent else absolute or percent
+        absolute = "" if self.absolute is None else f"{self.absolute:g} {unit}"
+        return f"{percent} or {absolute}, the greater" if absolute and percent else absolute or percent
 
 
 class AnalyticSd(Written):

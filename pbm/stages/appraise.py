@@ -113,7 +113,7 @@ class _Appraising:
             held_out_results=len(self.history) - split.at,
             onsets=len(onsets.at),
             horizon_days=round(around.horizon_days(self.history.time, split.at, len(self.history)), 3),
-            allowable_error=f"{around.analyte.allowable_error} ({plan.unit})",
+            allowable_error=around.analyte.allowable_error.in_words(plan.unit),
             schedule=controls_in_words(around.controls),
             response_lag=str(around.lab.alarms.response_lag),
             monitors=tuple(self._monitor(m, stretch, trials, _Averages(weights)) for m in plan.monitors),
