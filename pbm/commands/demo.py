@@ -23,7 +23,9 @@ def demo(folder: FolderArgument = Path("tern-bay"), workers: WorkersOption = Non
     from synthetic_streams import write_laboratory
 
     if folder.exists() and any(folder.iterdir()):
-        raise InputError(f"{folder} is not empty, and the demo would write among its files. Name a new folder: pbm demo FOLDER.")
+        raise InputError(
+            f"{folder} is not empty, and the demo would write among its files. Name a new folder: pbm demo FOLDER."
+        )
     _step(f"1  An invented laboratory: history, controls, two live days with an error of known onset, in {folder}")
     write_laboratory(folder, seed=seed)
     _step("2  pbm intake: the history as the information system exports it")

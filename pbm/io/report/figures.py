@@ -27,7 +27,11 @@ _FRAME = (0.158, 0.165, 0.815, 0.8)
 _BAND, _INK, _MUTED = 0.16, "#1d1d1b", "#8a8a86"
 _DODGE = 0.011
 _STEPS = (1, 2, 2.5, 5, 10)
-_NAME_PLACES = (("right", 0.99, 0.8), ("left", 0.01, 0.2), ("center", 0.5, 0.5))  # alignment, anchor, middle of the name
+_NAME_PLACES = (
+    ("right", 0.99, 0.8),
+    ("left", 0.01, 0.2),
+    ("center", 0.5, 0.5),
+)  # alignment, anchor, middle of the name
 _LEAST, _STRIP = 0.9, 0.13
 
 
@@ -100,7 +104,9 @@ def _limit(axes: Axes, value: float, text: str, up: bool, place: tuple[str, floa
     )
 
 
-def _mark_beyond(axes: Axes, days: Points, low: Points, high: Points, limits: tuple[float, float]) -> tuple[Points, Points]:
+def _mark_beyond(
+    axes: Axes, days: Points, low: Points, high: Points, limits: tuple[float, float]
+) -> tuple[Points, Points]:
     """Mark where the statistic leaves its limits; the days below and the days above them."""
     below, above = low < limits[0], high > limits[1]
     for beyond, level, marker in ((below, low, "v"), (above, high, "^")):
@@ -150,7 +156,10 @@ def until_plot(album: Album, group: FaultGroup, horizon_days: float) -> Markup:
     scale = _UntilScale.over(untils)
     scale.prepare(axes, horizon_days)
     width = (group.sizes[-1] - group.sizes[0]) or 1
-    drawn = [_until_line(axes, group, look, which, (place - 1) * _DODGE * width, scale) for place, (look, which) in enumerate(ways)]
+    drawn = [
+        _until_line(axes, group, look, which, (place - 1) * _DODGE * width, scale)
+        for place, (look, which) in enumerate(ways)
+    ]
     _finish(axes, group, formatted=False)
     write_names(axes, [line for line, _ in drawn], [whiskers for _, whiskers in drawn])
     return album.inline(canvas, seen.until(group.faults, group.unit, horizon_days))
@@ -207,7 +216,9 @@ def _until_line(
     axes.vlines(xs, median, p95, color=look.colour, linewidth=1.0, alpha=0.8)
     axes.plot(xs, p95, linestyle="none", marker="_", markersize=5, color=look.colour)
     parts = _draw(axes, group, look, xs, median)
-    return Line(look.name, look.colour, parts), np.column_stack([np.tile(xs, 3), np.concatenate([p95, (median * p95) ** 0.5, median])])
+    return Line(look.name, look.colour, parts), np.column_stack(
+        [np.tile(xs, 3), np.concatenate([p95, (median * p95) ** 0.5, median])]
+    )
 
 
 def _figure_line(axes: Axes, group: FaultGroup, look: Look, which: Callable[[FaultAppraisal], Figure]) -> Line:

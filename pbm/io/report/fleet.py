@@ -82,7 +82,10 @@ def in_short(appraisal: Appraisal) -> list[str]:
     rows = [row for row in fleet_rows(appraisal) if row.monitor is not None]
     told = [_verdicts(appraisal.streams)]
     if not rows:
-        return [*told, "No stream has a monitor that could be judged: the controls alone stand, and this document says why."]
+        return [
+            *told,
+            "No stream has a monitor that could be judged: the controls alone stand, and this document says why.",
+        ]
     alarms = [row.monitor.false_alarms for row in rows if row.monitor]
     kept = sum(one.kept for one in alarms)
     month = words.expected(sum(a_month(one.episodes, one) for one in alarms))
@@ -126,8 +129,14 @@ def gaps(appraisal: Appraisal) -> list[Gaps]:
         Gaps("No monitor that is clearly useful", tuple(_verdict_and_reason(streams))),
         Gaps("Alarm budget not kept on held-out days", tuple(_budgets_not_kept(streams))),
         Gaps("Worst case lowered by less than a tenth", tuple(_worst_case_hardly_lower(streams))),
-        Gaps("Errors at which the monitor saves less than a tenth of the unreliable results", tuple(_errors(streams, little_helped))),
-        Gaps("Errors of which more than half are never found while followed, even with the monitor", tuple(_errors(streams, never_found))),
+        Gaps(
+            "Errors at which the monitor saves less than a tenth of the unreliable results",
+            tuple(_errors(streams, little_helped)),
+        ),
+        Gaps(
+            "Errors of which more than half are never found while followed, even with the monitor",
+            tuple(_errors(streams, never_found)),
+        ),
         Gaps("Kinds of error not tried in this appraisal", tuple(_not_tried([one for one in streams if one.monitors]))),
     ]
     return [one for one in found if one.places]
@@ -170,7 +179,11 @@ def _not_tried(judged: list[StreamAppraisal]) -> Iterator[tuple[str, str]]:
     """Kinds of error that no monitor of a stream was tried on, those missing in the same streams together."""
     missing: dict[tuple[str, ...], list[str]] = {}
     for kind, name in KINDS.items():
-        without = tuple(one.stream for one in judged if kind not in {fault.kind for monitor in one.monitors for fault in monitor.faults})
+        without = tuple(
+            one.stream
+            for one in judged
+            if kind not in {fault.kind for monitor in one.monitors for fault in monitor.faults}
+        )
         if without:
             missing.setdefault(without, []).append(name)
     for streams, kinds in missing.items():

@@ -10,7 +10,11 @@ from numpy.typing import NDArray
 Points = NDArray[np.float64]
 _SIZE = 8.0
 _FAR, _STEP, _TOUCH = 20.0, 3.0, 1.5
-_WIDTH, _HEIGHT, _AWAY = 0.58 * _SIZE, 1.25 * _SIZE, 5.0  # a letter's width, a line's height, distance from the line: points
+_WIDTH, _HEIGHT, _AWAY = (
+    0.58 * _SIZE,
+    1.25 * _SIZE,
+    5.0,
+)  # a letter's width, a line's height, distance from the line: points
 
 _SIDES = np.array([(0, 1), (0, -1), (1, 0), (-1, 0), (0.6, 1), (-0.6, 1), (0.6, -1), (-0.6, -1)])
 
@@ -72,6 +76,7 @@ def _room(boxes: Points, own: Points, others: Points, frame: Points) -> Points:
 def _distance(boxes: Points, points: Points) -> Points:
     """Distance of each point from each box, 0 inside; (b, n)."""
     beyond = [
-        np.maximum(np.maximum(boxes[:, None, i] - points[None, :, i], points[None, :, i] - boxes[:, None, i + 2]), 0) for i in (0, 1)
+        np.maximum(np.maximum(boxes[:, None, i] - points[None, :, i], points[None, :, i] - boxes[:, None, i + 2]), 0)
+        for i in (0, 1)
     ]
     return np.hypot(*beyond)

@@ -83,7 +83,9 @@ class Album:
         figure.savefig(written, format="svg", metadata=_NO_STAMP)
         self.figures += 1
         root = ElementTree.fromstring(written.getvalue())
-        shown = ElementTree.Element("svg", {"class": "plot", "viewBox": root.attrib["viewBox"], "role": "img", "aria-label": seen})
+        shown = ElementTree.Element(
+            "svg", {"class": "plot", "viewBox": root.attrib["viewBox"], "role": "img", "aria-label": seen}
+        )
         shown.extend(self._lightened(root))
         _name_apart(shown, f"plot{self.figures}")
         return Markup(ElementTree.tostring(shown, encoding="unicode"))
@@ -131,7 +133,9 @@ def _shortened(geometry: str) -> str:
 def _name_apart(root: ElementTree.Element, prefix: str) -> None:
     """Give what is referred to a short identifier of this figure's own."""
     used = [element for element in root.iter() if "href" in element.attrib]
-    names = {name: f"{prefix}-{place}" for place, name in enumerate(dict.fromkeys(one.attrib["href"][1:] for one in used), 1)}
+    names = {
+        name: f"{prefix}-{place}" for place, name in enumerate(dict.fromkeys(one.attrib["href"][1:] for one in used), 1)
+    }
     for element in used:
         element.set("href", f"#{names[element.attrib['href'][1:]]}")
     for element in root.iter():

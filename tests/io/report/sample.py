@@ -247,7 +247,11 @@ def hostile() -> Appraisal:
     judged = monitor(812.5, 4.0, 139.1, 30, ("shift", "noise"))
     faults = tuple(one.model_copy(update={"unit": "unit"}) if one.kind == "shift" else one for one in judged.faults)
     attacked = stream(
-        HOSTILE, HOSTILE, 1.0, judged.model_copy(update={"words": HOSTILE, "brief": HOSTILE, "faults": faults}), reason=HOSTILE
+        HOSTILE,
+        HOSTILE,
+        1.0,
+        judged.model_copy(update={"words": HOSTILE, "brief": HOSTILE, "faults": faults}),
+        reason=HOSTILE,
     )
     texts = {"allowable_error": HOSTILE, "schedule": HOSTILE, "response_lag": HOSTILE}
     return appraisal(

@@ -31,7 +31,9 @@ def test_the_same_sizes_again_start_a_group_of_their_own() -> None:
     assert [one.sizes for one in groups] == [(-2, -1, -0.5, 0.5, 1, 2)] * 2
 
 
-@pytest.mark.parametrize(("signs", "parts"), [((-1, 1), [slice(0, 6), slice(6, 12)]), ((1,), [slice(0, 6)]), ((-1,), [slice(0, 6)])])
+@pytest.mark.parametrize(
+    ("signs", "parts"), [((-1, 1), [slice(0, 6), slice(6, 12)]), ((1,), [slice(0, 6)]), ((-1,), [slice(0, 6)])]
+)
 def test_a_line_never_crosses_the_size_nought(signs: tuple[int, ...], parts: list[slice]) -> None:
     faults = [one for one in sample.SODIUM.monitors[0].faults if one.sign in signs]
     (group,) = fault_groups(faults, "mmol/L")
@@ -89,7 +91,9 @@ def test_names_stand_inside_the_axes_and_on_no_line() -> None:
     for box in boxes:
         assert frame.x0 <= box.x0 <= box.x1 <= frame.x1 and frame.y0 <= box.y0 <= box.y1 <= frame.y1
         for line in lines:
-            dense = axes.transData.transform(np.column_stack([np.interp(np.linspace(0, 10, 400), xs, line.parts[0][:, i]) for i in (0, 1)]))
+            dense = axes.transData.transform(
+                np.column_stack([np.interp(np.linspace(0, 10, 400), xs, line.parts[0][:, i]) for i in (0, 1)])
+            )
             assert not any(box.contains(*point) for point in dense)
     assert not boxes[0].overlaps(boxes[1])
 

@@ -13,7 +13,9 @@ def with_worst(name: str, alone: float, beside: float) -> StreamAppraisal:
         with_monitor=Figure(value=beside, low=beside, high=beside),
         with_monitor_at=monitor.faults[1].label,
     )
-    return sample.SODIUM.model_copy(update={"stream": name, "monitors": (monitor.model_copy(update={"worst_unreliable": worst}),)})
+    return sample.SODIUM.model_copy(
+        update={"stream": name, "monitors": (monitor.model_copy(update={"worst_unreliable": worst}),)}
+    )
 
 
 def places(appraisal: object, title: str) -> dict[str, str]:
@@ -22,7 +24,9 @@ def places(appraisal: object, title: str) -> dict[str, str]:
 
 
 def test_streams_stand_by_gain_and_those_without_a_monitor_last() -> None:
-    given = sample.appraisal(sample.TSH, with_worst("small", 10, 9), with_worst("worse", 5, 6), with_worst("large", 100, 60))
+    given = sample.appraisal(
+        sample.TSH, with_worst("small", 10, 9), with_worst("worse", 5, 6), with_worst("large", 100, 60)
+    )
     assert [row.stream.stream for row in fleet.fleet_rows(given)] == ["large", "small", "worse", "tsh@immuno"]
     assert [row.anchor for row in fleet.fleet_rows(given)] == ["stream-4", "stream-2", "stream-3", "stream-1"]
 
@@ -58,8 +62,12 @@ def test_a_budget_that_was_not_kept_is_named() -> None:
 
 
 def test_kinds_of_error_that_were_not_tried_are_named() -> None:
-    assert places(sample.THREE, "not tried") == {"sodium@line-2, albumin@line-1": "drift, noise (imprecision), sporadic error"}
-    assert places(sample.appraisal(sample.SODIUM), "not tried") == {"all streams": "drift, noise (imprecision), sporadic error"}
+    assert places(sample.THREE, "not tried") == {
+        "sodium@line-2, albumin@line-1": "drift, noise (imprecision), sporadic error"
+    }
+    assert places(sample.appraisal(sample.SODIUM), "not tried") == {
+        "all streams": "drift, noise (imprecision), sporadic error"
+    }
     assert places(sample.appraisal(sample.CALCIUM), "not tried") == {}
 
 

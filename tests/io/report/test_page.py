@@ -45,7 +45,16 @@ def test_the_page_is_well_formed(case: str) -> None:
 @all_cases
 def test_the_page_needs_nothing_from_elsewhere(case: str) -> None:
     page = page_of(case)
-    assert not {one.tag for one in page.elements} & {"script", "link", "img", "iframe", "object", "embed", "base", "form"}
+    assert not {one.tag for one in page.elements} & {
+        "script",
+        "link",
+        "img",
+        "iframe",
+        "object",
+        "embed",
+        "base",
+        "form",
+    }
     assert "http" not in text_of(case)
     assert not re.search(r"@import|url\(|@font-face", text_of(case))
     for one in page.elements:
@@ -100,7 +109,9 @@ def test_the_same_appraisal_gives_the_same_page(case: str) -> None:
 
 
 def test_another_process_with_other_settings_writes_the_same_bytes(tmp_path: Path) -> None:
-    (tmp_path / "matplotlibrc").write_text("font.size: 20\nsvg.fonttype: path\naxes.facecolor: red\nlines.linewidth: 9\n")
+    (tmp_path / "matplotlibrc").write_text(
+        "font.size: 20\nsvg.fonttype: path\naxes.facecolor: red\nlines.linewidth: 9\n"
+    )
     program = (
         "import sys; from pathlib import Path; from pbm.io.report.page import write_report; from tests.io.report.sample import THREE; "
         "write_report(Path(sys.argv[1]), THREE)"
@@ -153,11 +164,23 @@ def rows_of(monitor: MonitorAppraisal, unit: str) -> Iterator[list[str]]:
     """What each row of the tables of all figures must hold, by error and table."""
     for fault in monitor.faults:
         name = words.fault_in_words(fault, unit)
-        counts = [fault.unreliable.alone, fault.unreliable.with_monitor, fault.unreliable_final.alone, fault.unreliable_final.with_monitor]
-        yield [name, words.shift_in_words(fault, unit), *(f"{words.expected(one.value)} {words.interval(one)}" for one in counts)]
+        counts = [
+            fault.unreliable.alone,
+            fault.unreliable.with_monitor,
+            fault.unreliable_final.alone,
+            fault.unreliable_final.with_monitor,
+        ]
+        yield [
+            name,
+            words.shift_in_words(fault, unit),
+            *(f"{words.expected(one.value)} {words.interval(one)}" for one in counts),
+        ]
         ways = (fault.by_first_event.schedule, fault.by_first_event.monitor, fault.by_first_event.both)
         yield [name, *(f"{words.percent(one.value)} {words.share_interval(one)}" for one in ways)]
-        yield [name, f"before it {words.percent(fault.before_first_event.value)}, {words.share_interval(fault.before_first_event)}"]
+        yield [
+            name,
+            f"before it {words.percent(fault.before_first_event.value)}, {words.share_interval(fault.before_first_event)}",
+        ]
         for way in (fault.until.schedule, fault.until.monitor, fault.until.both):
             median, p95 = (words.results_until(one, sample.HORIZON) for one in (way.median, way.p95))
             yield [name, f"{median} 95 %: {p95} mean {words.mean_in_words(way)}; never {words.percent(way.never)}"]
@@ -167,7 +190,15 @@ def rows_of(monitor: MonitorAppraisal, unit: str) -> Iterator[list[str]]:
 def test_every_fact_of_a_stream_stands_in_its_section(place: int) -> None:
     stream = sample.THREE.streams[place]
     told = plain(page_of("three").identified(f"stream-{place + 1}"))
-    facts = [stream.stream, stream.verdict, stream.reason, stream.allowable_error, stream.schedule, stream.first_day, stream.last_day]
+    facts = [
+        stream.stream,
+        stream.verdict,
+        stream.reason,
+        stream.allowable_error,
+        stream.schedule,
+        stream.first_day,
+        stream.last_day,
+    ]
     numbers = [words.number(stream.results_per_day), words.whole(stream.held_out_results)]
     tried = [stream.response_lag, words.whole(stream.onsets), "7 days"] if stream.monitors else []
     for one in facts + numbers + tried:
@@ -273,7 +304,9 @@ def test_each_kind_of_error_has_three_plots_and_each_monitor_a_trace() -> None:
 
 def test_a_monitor_that_was_never_ready_has_no_trace() -> None:
     (monitor,) = sample.ALBUMIN.monitors
-    bare = monitor.model_copy(update={"trace": monitor.trace.model_copy(update={"day": (), "lowest": (), "highest": ()})})
+    bare = monitor.model_copy(
+        update={"trace": monitor.trace.model_copy(update={"day": (), "lowest": (), "highest": ()})}
+    )
     page = Page(report(sample.appraisal(sample.ALBUMIN.model_copy(update={"monitors": (bare,)}))))
     assert len(page.of("svg")) == 3
 
@@ -286,8 +319,13 @@ def test_what_is_never_found_is_said_in_words() -> None:
     stream = sample.ALBUMIN.model_copy(update={"monitors": (monitor.model_copy(update={"faults": faults}),)})
     page = Page(report(sample.appraisal(stream)))
     assert page.wrong == []
-    assert any("more than half never found within 7 days, at any size" in plot.attributes["aria-label"] for plot in page.of("svg"))
-    assert "More than half never found within 7 days, even with the monitor: shift ±0.25" in plain(page.identified("stream-1"))
+    assert any(
+        "more than half never found within 7 days, at any size" in plot.attributes["aria-label"]
+        for plot in page.of("svg")
+    )
+    assert "More than half never found within 7 days, even with the monitor: shift ±0.25" in plain(
+        page.identified("stream-1")
+    )
     assert "over 7 days 95 %: over 7 days mean at least" in plain(page.identified("stream-1"))
 
 

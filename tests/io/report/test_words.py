@@ -38,7 +38,16 @@ def test_a_written_number_is_within_half_a_digit_of_the_number(value: float) -> 
 
 @pytest.mark.parametrize(
     ("share", "written"),
-    [(0, "0"), (1, "100"), (0.0004, "<0.1"), (0.99996, ">99.9"), (0.9312, "93.1"), (0.5, "50.0"), (-0.03, "−3.0"), (1.5, "150.0")],
+    [
+        (0, "0"),
+        (1, "100"),
+        (0.0004, "<0.1"),
+        (0.99996, ">99.9"),
+        (0.9312, "93.1"),
+        (0.5, "50.0"),
+        (-0.03, "−3.0"),
+        (1.5, "150.0"),
+    ],
 )
 def test_a_share_is_said_to_be_none_or_all_only_where_it_is(share: float, written: str) -> None:
     assert words.percent(share) == f"{written}{N}%"
@@ -59,7 +68,9 @@ def test_an_expected_count_below_a_thousandth_is_said_to_be_so() -> None:
         (1.5e9, 1e9, 2e9, f"1.50{N}×{N}10⁹"),
     ],
 )
-def test_a_limit_has_as_many_decimals_as_tell_the_limits_apart(value: float, low: float, high: float, written: str) -> None:
+def test_a_limit_has_as_many_decimals_as_tell_the_limits_apart(
+    value: float, low: float, high: float, written: str
+) -> None:
     assert words.level(value, low, high) == written
 
 
