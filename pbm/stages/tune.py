@@ -213,7 +213,12 @@ class _Tuning:
             yield trial(training, fault, onsets, self._passed(fault, onsets)), weight
 
     def _passed(self, fault: Fault, onsets: Onsets) -> Floats:
-        """Chance of passing the first control events; worked out once for each fault, for the longest horizon."""
+        """Chance of passing the first control events; worked out once for each fault, for the longest horizon.
+
+        Of a drift it depends on the onsets: how far it has grown at each event.
+        """
+        if fault.kind == "drift":
+            return self.around.chance_of_passing(fault, onsets).passed
         events = onsets.edges.shape[1]
         if fault not in self._chances or len(self._chances[fault]) <= events:
             self._chances[fault] = self.around.chance_of_passing(fault, onsets).passed
