@@ -54,7 +54,7 @@ def stories(draw: st.DrawFn) -> Story:
 
 
 @given(stories())
-@settings(max_examples=300)
+@settings(max_examples=80)
 def test_exposure_gives_the_formulas_bracket_by_bracket(story: Story) -> None:
     found = exposure(story.onsets, np.array(story.p), np.array(story.passed))
     for r, (at, end) in enumerate(zip(story.at, story.end, strict=True)):
@@ -89,7 +89,7 @@ def of(detection: Detection, r: int) -> dict[int | None, float]:
 
 
 @given(stories())
-@settings(max_examples=300)
+@settings(max_examples=80)
 def test_detection_comes_with_whichever_is_first(story: Story) -> None:
     onsets, passed, alarm = story.onsets, np.array(story.passed), np.array(story.alarm)
     nothing_passes_for_ever = [1.0] * len(story.passed)

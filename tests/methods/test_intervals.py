@@ -81,7 +81,7 @@ def test_a_bootstrap_draw_takes_whole_days_as_many_as_there_are(days: list[int])
 
 def test_the_bootstrap_over_days_covers_a_mean_of_results_that_hang_together_within_days() -> None:
     """Results of a day share half of their variance: an interval that took them for independent would cover far too seldom."""
-    days, per_day, runs, covered, naive = 40, 25, 300, 0, 0
+    days, per_day, runs, covered, naive = 40, 25, 200, 0, 0
     place = np.repeat(np.arange(days), per_day)
     for run in range(runs):
         random = child(run, "bootstrap")

@@ -4,7 +4,7 @@ import math
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import given
 from hypothesis import strategies as st
 from scipy.special import boxcox, inv_boxcox
 
@@ -30,7 +30,7 @@ def all_kinds_of_values(count: int) -> Floats:
 @pytest.mark.parametrize("direction", ["forward", "back"])
 def test_plain_python_gives_the_compiled_values_to_the_last_bit(name: str, power: float, direction: str) -> None:
     law = getattr(TRANSFORMS[name], direction)
-    values = all_kinds_of_values(1_000_000 if power in {0.0, 0.22} else 50_000)
+    values = all_kinds_of_values(1_000_000 if (name, power) in {("log", 0.0), ("boxcox", 0.22)} else 20_000)
     plain = np.array([law(x, (power,)) for x in values.tolist()])
     looped = mapped(law, values, (power,))
     gaps = np.isnan(plain)
@@ -69,7 +69,6 @@ def test_box_cox_is_its_definition(power: float) -> None:
 
 @pytest.mark.parametrize(("name", "power"), LAWS)
 @given(a=NUMBERS, b=NUMBERS)
-@settings(max_examples=200)
 def test_a_greater_result_never_transforms_to_less(name: str, power: float, a: float, b: float) -> None:
     low, high = (TRANSFORMS[name].forward(x, (power,)) for x in sorted((a, b)))
     assert math.isnan(low) or math.isnan(high) or low <= high
