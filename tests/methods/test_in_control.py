@@ -58,6 +58,18 @@ def test_a_winsorized_mean_moves_by_the_share_of_results_inside() -> None:
     assert found == pytest.approx(0.6827, abs=0.02)
 
 
+def test_the_slope_is_that_of_shifts_to_both_sides() -> None:
+    """One limit, far from the shift on one side and near it on the other: shifts of 1 SD, by the moments of a truncated normal."""
+
+    def mean_below(limit: float) -> float:
+        return float(-norm.pdf(limit) / norm.cdf(limit))
+
+    up, down = mean_below(0.0) + 1 - mean_below(1.0), mean_below(2.0) - 1 - mean_below(1.0)
+    found = slope(stretch(normals(140, 3), 6.0), Preparation(high=143.0))
+    assert abs(up - (-down)) > 0.2
+    assert found == pytest.approx((up - down) / 2, abs=0.02)
+
+
 def test_on_the_logarithm_a_shift_moves_lower_results_more_than_the_typical_one() -> None:
     x = np.exp(child(3, "log").normal(3, 0.5, MANY))
     expected = np.mean(1 / x) / (1 / np.median(x))  # d ln x = dx / x

@@ -30,6 +30,12 @@ def test_events_by_the_clock_stand_before_the_first_result_at_or_after_them() ->
     assert positions.tolist() == [sum(1 for result in time.tolist() if result < t) for t in inside]
 
 
+def test_a_result_at_the_instant_of_an_event_comes_after_it() -> None:
+    midnight = int(times(1, 1)[0]) // DAY * DAY
+    time = midnight + np.array([1, 6, 6, 7, 14]) * HOUR
+    assert around(laboratory()).event_positions(time).tolist() == [1, 4]
+
+
 def test_an_event_every_so_many_results_stands_after_each_so_many() -> None:
     surrounded = around(laboratory({"every": "40 results", "rules": ["1-3s"]}))
     assert surrounded.event_positions(times(2, 100)).tolist() == [40, 80, 120, 160, 200]
