@@ -165,6 +165,29 @@ def test_the_same_generator_gives_the_same_calibrated_limits() -> None:
     assert one == other
 
 
+@pytest.mark.parametrize(("upper", "low", "high"), [(1.0, False, True), (0.0, True, False), (0.8, True, True)])
+def test_a_side_has_its_share_of_the_budget_and_none_has_no_limit(upper: float, low: bool, high: bool) -> None:
+    z, days = child(11, "sides").standard_normal(20_000), np.arange(101) * 200
+    tracker = tracker_for(z, "ewma", 0.1)
+    path = tracker.path(z)
+    quick = quick_limits(path, tracker.centre, 20.0, upper)
+    calibrated = calibrated_limits(tracker, z, days, 20.0, child(12, "sides"), draws=20, upper=upper)
+    assert quick is not None and calibrated is not None
+    for limits in (quick, calibrated.limits):
+        assert (math.isfinite(limits.low), math.isfinite(limits.high)) == (low, high)
+        sides = episodes(path, limits).side
+        assert 0.5 * 20 * upper <= (sides > 0).sum() <= 1.5 * 20 * upper
+        assert 0.5 * 20 * (1 - upper) <= (sides < 0).sum() <= 1.5 * 20 * (1 - upper) + 1e-9
+    assert (calibrated.low_interval is not None, calibrated.high_interval is not None) == (low, high)
+    assert calibrated.episodes == len(episodes(path, calibrated.limits))
+
+
+@pytest.mark.parametrize("upper", [-0.1, 1.1])
+def test_a_share_of_the_budget_lies_between_none_and_all(upper: float) -> None:
+    with pytest.raises(ValueError, match="between 0 and 1"):
+        quick_limits(np.arange(100.0), 0.0, 2.0, upper)
+
+
 @settings(max_examples=25, deadline=None)
 @given(st.integers(0, 10_000), st.floats(0.2, 12), st.floats(1.0, 3.0))
 def test_a_larger_budget_never_widens_a_limit(seed: int, expected: float, more: float) -> None:
