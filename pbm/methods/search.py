@@ -21,6 +21,11 @@ from pbm.methods.trials import Stretch, Trial
 Stopper = Callable[[Integers, Onsets], tuple[Integers, Integers]]
 
 
+def onsets_for(faults: int) -> int:
+    """Onsets of the last round: the fewer the faults, the more onsets each needs (3,000 runs in all, 250 to 1,000 onsets)."""
+    return min(max(3_000 // faults, 250), 1_000)
+
+
 @dataclass(frozen=True, slots=True)
 class Runner:
     """A candidate with its statistic centred and limited on the training results."""

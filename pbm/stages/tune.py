@@ -25,7 +25,7 @@ from pbm.methods.in_control import inflation, slope, wander
 from pbm.methods.intervals import poisson_interval
 from pbm.methods.jit import Floats, Integers
 from pbm.methods.limits import CalibratedLimits, calibrated_limits, quick_limits
-from pbm.methods.search import Runner, best_of, limited, scores, simplest_near_best
+from pbm.methods.search import Runner, best_of, limited, onsets_for, scores, simplest_near_best
 from pbm.methods.split import Split, first_held_out_day, split_at
 from pbm.methods.trials import Stretch, Trial, alarm_and_stop, draw_onsets, trial
 from pbm.records.laboratory import Lab
@@ -45,7 +45,8 @@ from pbm.stages.usefulness import Judgement, judge_usefulness
 FEWEST_DAYS = 20
 FEWEST_RESULTS = 1_000
 FIRST_ONSETS, FIRST_HORIZON_DAYS = 40, 2.0
-ONSETS, FINALISTS = 250, 12
+FINALISTS = 12
+NEEDED_ONSETS = 250
 WINDOWS = 50  # a window is no longer than this part of the training results
 NEEDED_AT_MOST = 5_000
 TRADED_BUDGETS = tuple(1 / days for days in (240, 120, 60, 30, 15, 7, 3, 1))  # false alarms a day
@@ -252,7 +253,8 @@ class _Tuning:
         return self._refitted(training, finalists[simplest_near_best(finalists, score)])
 
     def _last_onsets(self, training: Stretch) -> Onsets:
-        return self.around.onsets(training.time, self.choose_at, len(training), ONSETS)
+        count = onsets_for(len(faults_of(self.around.analyte)))
+        return self.around.onsets(training.time, self.choose_at, len(training), count)
 
     def _with_and_without_baseline(self, training: Stretch, plain: list[Runner]) -> list[Runner]:
         """The finalists as they are, and adjusted for patient mix, unless one of the two is wanted."""
@@ -286,7 +288,7 @@ class _Tuning:
     def _results_needed(self, training: Stretch, runner: Runner) -> float:
         """Median of the results until a shift of 1 TEa is found, to either side, followed for up to `NEEDED_AT_MOST` results."""
         last = max(len(training) - NEEDED_AT_MOST, len(training) // 2)
-        at = draw_onsets(len(training) // WINDOWS, last, ONSETS, self.around.random("results needed"))
+        at = draw_onsets(len(training) // WINDOWS, last, NEEDED_ONSETS, self.around.random("results needed"))
         far = follow(at, np.minimum(at + NEEDED_AT_MOST, len(training)), np.zeros(0, dtype=np.int64), 1)
         z = training.prepared(runner.candidate.preparation)
         standing = runner.tracker.standing(z, runner.limits, at)
