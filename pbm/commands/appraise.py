@@ -39,7 +39,7 @@ def appraise(
     from pbm.io.report.page import write_report
 
     folder = LabFolder.find(lab)
-    laboratory, plan = read_checked_lab(folder.lab), read_plan(folder.plan)
+    laboratory, plan = read_checked_lab(folder.lab), read_plan(folder.existing_plan())
     names = chosen_streams(folder.history, streams or sorted(plan.streams))
     if missing := [str(name) for name in names if str(name) not in plan.streams]:
         raise PlanError(f"{folder.plan} has no stream {', '.join(missing)}. Run `pbm tune {' '.join(missing)}` first.")

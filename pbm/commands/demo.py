@@ -22,9 +22,9 @@ def demo(folder: FolderArgument = Path("tern-bay"), workers: WorkersOption = Non
     from pbm.errors import InputError
     from synthetic_streams import write_laboratory
 
-    if folder.exists() and any(folder.iterdir()):
+    if folder.exists() and not (folder.is_dir() and not any(folder.iterdir())):
         raise InputError(
-            f"{folder} is not empty, and the demo would write among its files. Name a new folder: pbm demo FOLDER."
+            f"{folder} is there already, and the demo does not write among other files. Name a new folder: pbm demo FOLDER."
         )
     _step(f"1  An invented laboratory: history, controls, two live days with an error of known onset, in {folder}")
     write_laboratory(folder, seed=seed)

@@ -6,7 +6,7 @@ from typing import Annotated
 
 import typer
 
-from pbm.errors import InputError
+from pbm.errors import InputError, PlanError
 
 LabOption = Annotated[
     Path | None,
@@ -56,6 +56,20 @@ class LabFolder:
     def plan(self) -> Path:
         """`plan.toml`."""
         return self.root / "plan.toml"
+
+    def existing_plan(self) -> Path:
+        """`plan.toml`, which `pbm tune` must have made.
+
+        Raises
+        ------
+        PlanError
+            If there is none.
+        """
+        if not self.plan.is_file():
+            raise PlanError(
+                f"There is no plan.toml in {self.root.absolute()}. Run `pbm tune` first: it chooses the monitors."
+            )
+        return self.plan
 
     @property
     def reports(self) -> Path:

@@ -22,9 +22,10 @@ def intake(files: FilesArgument, lab: LabOption = None, json: JsonOption = False
     """
     from pbm.commands.intake_account import as_json, in_words
     from pbm.commands.intake_work import take
-    from pbm.io.lab_file import lab_fingerprint, read_lab
+    from pbm.commands.lab import read_checked_lab
+    from pbm.io.lab_file import lab_fingerprint
 
     folder = LabFolder.find(lab)
-    laboratory = read_lab(folder.lab)
+    laboratory = read_checked_lab(folder.lab)
     taken = take(files, folder.history, laboratory, lab_fingerprint(folder.lab))
     typer.echo(as_json(taken) if json else in_words(taken, folder.history, laboratory.laboratory.zone))

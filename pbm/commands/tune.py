@@ -63,7 +63,7 @@ def tune(
     laboratory = read_checked_lab(folder.lab)
     names = chosen_streams(folder.history, streams)
     by_hand = _by_hand(admit, winsorize, transform, statistic, weight if window is None else window, mix)
-    kept = read_plan(folder.plan).streams if keep else None
+    kept = read_plan(folder.existing_plan()).streams if keep else None
     task = partial(tune_stream, lab=laboratory, seed=seed, by_hand=by_hand, kept=kept)
     done = over_streams(folder.history, names, task, workers, "Tuning")
     tuned = {str(d.name): d.result for d in done if d.result is not None}

@@ -183,7 +183,7 @@ async def _read_until_stopped(feeds: Sequence[Feed], prepare: Prepare, queue: as
     finally:
         stop.cancel()
         readers.cancel()
-        await asyncio.wait([readers])
+        await asyncio.gather(readers, return_exceptions=True)  # what was stopped is no error, and is not told as one
     await queue.put(None)
     if readers in ended:
         readers.result()  # raises what a feed raised

@@ -259,6 +259,9 @@ class Range(Written):
         return self
 
 
+MICRO_SIGN, GREEK_MU = "\u00b5", "\u03bc"
+
+
 class Analyte(Written):
     """One measurand: unit, resolution, TEa, analytic SD, spellings, controls and the errors to guard against.
 
@@ -308,6 +311,12 @@ class Analyte(Written):
     budget: AlarmRate | None = None
     controls: Controls = Controls()
     faults: tuple[FaultList, ...] = Field(default=DEFAULT_FAULTS, min_length=1)
+
+    def known_units(self) -> tuple[str, ...]:
+        """The unit and its other spellings, the unit first; the micro sign and the Greek letter that looks the same count as one."""
+        written = (self.unit, *self.unit_names)
+        signs = str.maketrans({MICRO_SIGN: GREEK_MU, GREEK_MU: MICRO_SIGN})
+        return tuple(dict.fromkeys([*written, *(unit.translate(signs) for unit in written)]))
 
 
 def spelling_clashes(spellings: Mapping[str, Iterable[str]]) -> Iterator[str]:

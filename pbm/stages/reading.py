@@ -59,7 +59,7 @@ class Reader:
         self._zone = lab.laboratory.zone
         self._extract = lab.extract
         self._analytes = {name: (key, lab.analytes[key]) for name, key in lab.spellings().items()}
-        self._units = {key: {one.unit, *one.unit_names} for key, one in lab.analytes.items()}
+        self._units = {key: set(one.known_units()) for key, one in lab.analytes.items()}
         self._time_format = time_format
         self._units_given, self._kinds_given = units_given, kinds_given
         self._streams: dict[tuple[str, str], StreamName] = {}

@@ -91,7 +91,7 @@ def tune_stream(
         return _no_monitor(around, days, refusal)
     budget = (budgets or {}).get(str(history.name), lab.budget_of(history.name.analyte).per_day)
     work = _Tuning(around, history, split_at(days, first_held_out_day(days)), budget, by_hand)
-    return work.plan() if kept is None else work.relimited(_one_monitor(kept, str(history.name)))
+    return work.plan() if kept is None else work.relimited(_one_monitor(kept, str(history.name), around.analyte.unit))
 
 
 def trade_off(history: StreamHistory, lab: Lab, seed: int, plans: Mapping[str, StreamPlan]) -> TradeOff:
@@ -105,10 +105,14 @@ def trade_off(history: StreamHistory, lab: Lab, seed: int, plans: Mapping[str, S
     around = Surroundings.of(history.name, lab, seed)
     days = local_days(history.time, lab.laboratory.zone)
     work = _Tuning(around, history, split_at(days, first_held_out_day(days)), budget=TRADED_BUDGETS[0])
-    return work.trade_off(_one_monitor(plans, str(history.name)))
+    return work.trade_off(_one_monitor(plans, str(history.name), around.analyte.unit))
 
 
-def _one_monitor(kept: Mapping[str, StreamPlan], name: str) -> MonitorPlan:
+def _one_monitor(kept: Mapping[str, StreamPlan], name: str, unit: str) -> MonitorPlan:
+    if name in kept and kept[name].unit != unit:
+        raise PlanError(
+            f"plan.toml gives {name} in {kept[name].unit}, lab.toml in {unit}. Correct one of them, or tune again."
+        )
     monitors = kept[name].monitors if name in kept else ()
     if len(monitors) != 1:
         raise PlanError(

@@ -35,7 +35,7 @@ def judge_usefulness(needed: float, per_day: float, gain: float) -> Judgement:
     at least some gain.
     """
     sees = f"needs about {needed:.0f} results to see" if np.isfinite(needed) else "does not see"
-    gained = f"{max(gain, 0):.0%} fewer unreliable results expected than with the controls alone"
+    gained = f"averaged over the errors tried, {max(gain, 0):.0%} fewer unreliable results expected than with the controls alone"
     reason = f"{sees} a shift of 1 TEa; the line makes {per_day:.0f} a day; {gained}"
     same_day, gains = needed <= per_day, gain >= WORTHWHILE
     word: Verdict = (

@@ -117,3 +117,31 @@ def test_a_fleet_budget_is_shared_told_and_stands_in_the_plan(laboratory: Path, 
     assert shared.budget_per_day == pytest.approx(0.01)
     assert pbm(laboratory, "tune", *by_hand).exit_code == 0
     assert shared.limits.high > monitor(laboratory).limits.high
+
+
+@pytest.mark.parametrize("arguments", [("appraise",), ("tune", "--keep")])
+def test_what_needs_a_plan_says_that_tune_makes_it(
+    laboratory: Path, tmp_path: Path, arguments: tuple[str, ...]
+) -> None:
+    shutil.copytree(laboratory, tmp_path / "lab")
+    (tmp_path / "lab" / "plan.toml").unlink(missing_ok=True)
+    result = pbm(tmp_path / "lab", *arguments)
+    assert "Run `pbm tune` first" in str(result.exception)
+
+
+def test_keep_refuses_a_plan_in_another_unit(laboratory: Path, tmp_path: Path) -> None:
+    assert pbm(laboratory, "tune", "--statistic", "ewma", "--weight", "0.1", "--no-mix").exit_code == 0
+    shutil.copytree(laboratory, tmp_path / "lab")
+    plan = tmp_path / "lab" / "plan.toml"
+    plan.write_text(plan.read_text().replace('unit = "mmol/L"', 'unit = "mg/dL"'))
+    result = pbm(tmp_path / "lab", "tune", "--keep")
+    assert result.exit_code == 2
+    assert "plan.toml gives sodium@line-1 in mg/dL, lab.toml in mmol/L" in result.stderr
+
+
+def test_the_demo_does_not_write_where_something_is(tmp_path: Path) -> None:
+    (tmp_path / "file").write_text("mine")
+    for taken in (tmp_path, tmp_path / "file"):
+        result = CliRunner().invoke(app, ["demo", str(taken)])
+        assert "is there already" in str(result.exception)
+    assert (tmp_path / "file").read_text() == "mine"

@@ -262,6 +262,7 @@ def test_a_file_is_followed_until_a_signal_which_leaves_a_whole_store(folder: Pa
         out, err = process.communicate(timeout=20)
     assert process.returncode == 0, err
     assert "Taken: 900 results" in err
+    assert "Traceback" not in err
     assert len(out.splitlines()) == len(expected_alarms(FEED))
 
 

@@ -43,7 +43,7 @@ class RowReader:
         self._columns = lab.extract
         self._keys = list(lab.analytes)
         self._spellings = {name: self._keys.index(key) for name, key in lab.spellings().items()}
-        self._units = [(one.unit, *one.unit_names) for one in analytes]
+        self._units = [one.known_units() for one in analytes]
         self._wards = [one.leave_out_wards for one in analytes]
         self._low = np.array([-np.inf if one.plausible.low is None else one.plausible.low for one in analytes])
         self._high = np.array([np.inf if one.plausible.high is None else one.plausible.high for one in analytes])
