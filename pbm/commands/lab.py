@@ -22,11 +22,11 @@ def read_checked_lab(path: Path) -> Lab:
     given = {"controls.rules": lab.controls.rules or ()}
     given |= {f"analytes.{key}.controls.rules": analyte.controls.rules or () for key, analyte in lab.analytes.items()}
     for key, rules in given.items():
-        for rule in rules:
+        for place, rule in enumerate(rules):
             try:
                 parse_rule(rule)
             except ValueError as error:
-                mistakes.append(f"{key}: {error}")
+                mistakes.append(f"{key}[{place}]: {error}")
     if mistakes:
         raise LabError(f"{path} has {len(mistakes)} mistake{'s' * (len(mistakes) > 1)}:\n  " + "\n  ".join(mistakes))
     return lab

@@ -35,7 +35,7 @@ def collected() -> list[Row]:
     """Run the tests and return their rows in the order of files and lines."""
     with tempfile.TemporaryDirectory() as folder:
         path = Path(folder) / "rows.jsonl"
-        command = [sys.executable, "-m", "pytest", "-q", "-p", "no:cacheprovider", "tests/published"]
+        command = [sys.executable, "-m", "pytest", "-q", "-p", "no:cacheprovider", "-n", "0", "tests/published"]
         run = subprocess.run(command, cwd=TOP, env={**os.environ, ROWS: str(path)}, check=False)
         if run.returncode:
             sys.exit("the tests against print did not pass: docs/evidence/published.md is left as it was")
