@@ -54,7 +54,7 @@ def toml_blocks() -> Iterator[tuple[str, str]]:
     return ((document, block) for document in DOCUMENTS for block in fenced(text_of(document), "toml"))
 
 
-@pytest.mark.parametrize(("document", "block"), toml_blocks(), ids=lambda text: text.split("\n")[0])
+@pytest.mark.parametrize(("document", "block"), list(toml_blocks()), ids=lambda text: text.split("\n")[0])
 def test_every_block_of_toml_is_taken(document: str, block: str):
     """A block is a whole lab.toml, some tables of one (put over those of the README's), or monitors of a plan."""
     found = tomllib.loads(block)
