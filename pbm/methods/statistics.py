@@ -18,8 +18,6 @@ from typing import Literal
 from pbm.methods import batch_mean, cusum, ewma, ewsd, moving_mean, moving_median, moving_sd, moving_share
 from pbm.methods.jit import Parameters, Step
 
-LEARNED = ("level", "spread")
-
 
 @dataclass(frozen=True, slots=True)
 class Statistic:

@@ -13,13 +13,14 @@ from functools import partial
 import numpy as np
 
 from pbm.errors import PlanError
-from pbm.methods.alarm import Limits, episodes
+from pbm.methods.alarm import Limits
 from pbm.methods.chain import Preparation, Standing, Tracker
 from pbm.methods.clock_time import local_days
 from pbm.methods.detection import Detection, by_both, by_monitor, by_schedule
 from pbm.methods.expected import Onsets
 from pbm.methods.faults import Fault
-from pbm.methods.intervals import day_weights, poisson_interval
+from pbm.methods.held_out import held_out_alarms
+from pbm.methods.intervals import day_weights
 from pbm.methods.jit import Floats, Integers
 from pbm.methods.split import Split, first_held_out_day, split_at
 from pbm.methods.trials import Stretch, Trial, alarm_and_stop, trial
@@ -143,15 +144,13 @@ class _Appraising:
         )
 
     def _false_alarms(self, running: "_Running", budget: float) -> FalseAlarms:
-        count = int((episodes(running.path, running.limits).at >= self.split.at).sum())
-        interval = poisson_interval(count)
-        allowed = budget * self.split.held_out_days
+        found = held_out_alarms(running.path, running.limits, self.split, budget)
         return FalseAlarms(
-            days=self.split.held_out_days,
-            episodes=count,
-            allowed=allowed,
-            interval=interval,
-            kept=interval[0] <= allowed,
+            days=found.days,
+            episodes=found.episodes,
+            allowed=found.allowed,
+            interval=found.interval,
+            kept=found.kept,
         )
 
 

@@ -13,7 +13,7 @@ from functools import partial
 import numpy as np
 
 from pbm.errors import PlanError
-from pbm.methods.alarm import Limits, episodes
+from pbm.methods.alarm import Limits
 from pbm.methods.baseline import fit_baseline
 from pbm.methods.candidates import Candidate, preparations
 from pbm.methods.chain import Preparation, Tracker, tracker_for
@@ -21,8 +21,8 @@ from pbm.methods.clock_time import local_days
 from pbm.methods.expected import Onsets, follow
 from pbm.methods.faults import Fault
 from pbm.methods.fleet import TradeOff
+from pbm.methods.held_out import held_out_alarms
 from pbm.methods.in_control import inflation, slope, wander
-from pbm.methods.intervals import poisson_interval
 from pbm.methods.jit import Floats, Integers
 from pbm.methods.limits import CalibratedLimits, calibrated_limits, quick_limits
 from pbm.methods.search import Runner, best_of, limited, onsets_for, scores, simplest_near_best
@@ -332,12 +332,8 @@ class _Tuning:
 
     def _held_out(self, prepared: Preparation, tracked: Tracker, limits: Limits) -> HeldOut:
         z = self.around.stretch(self.history).prepared(prepared)
-        count = int((episodes(tracked.path(z), limits).at >= self.split.at).sum())
-        interval = poisson_interval(count)
-        allowed = self.budget * self.split.held_out_days
-        return HeldOut(
-            days=self.split.held_out_days, episodes=count, interval=interval, kept=bool(interval[0] <= allowed)
-        )
+        found = held_out_alarms(tracked.path(z), limits, self.split, self.budget)
+        return HeldOut(days=found.days, episodes=found.episodes, interval=found.interval, kept=found.kept)
 
 
 def _fixed(given: Tracker) -> dict[str, float]:
