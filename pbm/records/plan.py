@@ -1,5 +1,6 @@
 """`plan.toml`: what each stream's monitor is, its limits, and where they came from."""
 
+import math
 from datetime import date, datetime
 from typing import Annotated, Literal
 
@@ -86,11 +87,22 @@ class ControlLimits(Written):
     Attributes
     ----------
     low, high
-        On the statistic's own (transformed) scale.
+        On the statistic's own (transformed) scale; a side that raises no alarm is left out.
     """
 
-    low: Finite
-    high: Finite
+    low: Finite | None = None
+    high: Finite | None = None
+
+    @model_validator(mode="after")
+    def _some_is_given(self) -> "ControlLimits":
+        if self.low is None and self.high is None:
+            raise ValueError("expected { low = ... }, { high = ... } or both")
+        return self
+
+    @property
+    def ends(self) -> tuple[float, float]:
+        """Both limits; infinite where a side raises no alarm."""
+        return -math.inf if self.low is None else self.low, math.inf if self.high is None else self.high
 
 
 class LimitsInterval(Written):
@@ -99,11 +111,11 @@ class LimitsInterval(Written):
     Attributes
     ----------
     low, high
-        90 % interval of each limit from the day-block bootstrap.
+        90 % interval of each limit from the day-block bootstrap; left out where there is no limit.
     """
 
-    low: Interval
-    high: Interval
+    low: Interval | None = None
+    high: Interval | None = None
 
 
 class Training(Written):
@@ -267,7 +279,8 @@ class MonitorPlan(Written):
 
     @model_validator(mode="after")
     def _whole(self) -> "MonitorPlan":
-        if not self.limits.low < self.centre < self.limits.high:
+        low, high = self.limits.ends
+        if not low < self.centre < high:
             raise ValueError("expected limits.low < centre < limits.high")
         if (self.transform == "boxcox") != (self.transform_lambda is not None):
             raise ValueError('transform_lambda goes with transform = "boxcox" and only with it')
@@ -280,7 +293,8 @@ class MonitorPlan(Written):
 
     @model_validator(mode="after")
     def _no_hidden_sum(self) -> "MonitorPlan":
-        narrower, wider = sorted((self.centre - self.limits.low, self.limits.high - self.centre))
+        low, high = self.limits.ends
+        narrower, wider = sorted((self.centre - low, high - self.centre))
         if self.statistic == "cusum" and wider > 2 * narrower:
             # Only the larger of the two sums is seen: methods/cusum.py says why it can then hide the smaller.
             raise ValueError(

@@ -82,7 +82,7 @@ def planned_parameters(tracker: Tracker, level: float) -> dict[str, Any]:
 
 def limits(monitor: MonitorPlan) -> Limits:
     """Control limits and re-arm share of a monitor."""
-    return Limits(monitor.limits.low, monitor.limits.high, monitor.centre, monitor.rearm)
+    return Limits(*monitor.limits.ends, monitor.centre, monitor.rearm)
 
 
 def in_control(monitor: MonitorPlan) -> InControl:

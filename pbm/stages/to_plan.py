@@ -1,5 +1,6 @@
 """How the numbers that methods chose become the words of plan.toml; the way back from stages/from_plan.py."""
 
+import math
 from typing import Any
 
 import numpy as np
@@ -16,8 +17,8 @@ def chain_in_plan(preparation: Preparation, tracker: Tracker, z: Floats) -> dict
     baseline = preparation.baseline
     return {
         "admit": Admit(
-            low=preparation.low if np.isfinite(preparation.low) else None,
-            high=preparation.high if np.isfinite(preparation.high) else None,
+            low=_unless_open(preparation.low),
+            high=_unless_open(preparation.high),
             mode="winsorize" if preparation.winsorize else "truncate",
         ),
         "transform": preparation.transform,
@@ -33,6 +34,10 @@ def chain_in_plan(preparation: Preparation, tracker: Tracker, z: Floats) -> dict
 def limits_in_plan(found: CalibratedLimits) -> dict[str, Any]:
     """Limits and their intervals by the keys of a monitor."""
     return {
-        "limits": ControlLimits(low=found.limits.low, high=found.limits.high),
+        "limits": ControlLimits(low=_unless_open(found.limits.low), high=_unless_open(found.limits.high)),
         "limits_interval": LimitsInterval(low=found.low_interval, high=found.high_interval),
     }
+
+
+def _unless_open(limit: float) -> float | None:
+    return limit if math.isfinite(limit) else None

@@ -48,14 +48,16 @@ def path(plan: MonitorPlan, z: Sequence[float]) -> list[float]:
 def alarms(plan: MonitorPlan, statistic: Sequence[float]) -> list[int]:
     """Place of each result that opened an episode."""
     found, is_open = [], False
+    low = -math.inf if plan.limits.low is None else plan.limits.low
+    high = math.inf if plan.limits.high is None else plan.limits.high
     for i, s in enumerate(statistic):
         if math.isnan(s):
             continue
-        if not is_open and (s > plan.limits.high or s < plan.limits.low):
+        if not is_open and (s > high or s < low):
             found.append(i)
             is_open = True
         elif is_open:
-            above = plan.centre + plan.rearm * (plan.limits.high - plan.centre)
-            below = plan.centre + plan.rearm * (plan.limits.low - plan.centre)
+            above = plan.centre + plan.rearm * (high - plan.centre)
+            below = plan.centre + plan.rearm * (low - plan.centre)
             is_open = not below <= s <= above
     return found

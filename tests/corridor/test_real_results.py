@@ -71,7 +71,8 @@ def test_results_until_detection_equal_a_simulation_by_the_naive_monitor(hdl: Pa
     counts = []
     for onset in random.integers(first, len(rows) - 5_600, 150):
         level = next(s for s in reversed(in_control[:onset]) if not np.isnan(s))
-        if not monitor.limits.low <= level <= monitor.limits.high:
+        low, high = monitor.limits.ends
+        if not low <= level <= high:
             continue
         shifted = [
             (t, float(round(x + random.uniform(-0.5, 0.5) + max(6.0, 0.2 * x))), w)

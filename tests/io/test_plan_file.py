@@ -130,6 +130,33 @@ def test_limits_out_of_order_are_told(tmp_path: Path) -> None:
         read_plan(path)
 
 
+def test_a_limit_on_one_side_only_is_written_without_the_other(tmp_path: Path) -> None:
+    one_sided = MonitorPlan(
+        statistic="ewsd",
+        weight=0.02,
+        level=139.0,
+        watches="imprecision",
+        centre=3.0,
+        limits=ControlLimits(high=3.6),
+        limits_interval=LimitsInterval(high=(3.5, 3.7)),
+        budget_per_day=0.01,
+        spread=3.0,
+    )
+    stream = StreamPlan(unit="mmol/L", verdict="useful", reason="", results_per_day=1, monitors=(one_sided,))
+    plan = Plan(made=MADE, streams={"sodium@line-2": stream})
+    write_plan(tmp_path / "plan.toml", plan)
+    assert "limits = {high = 3.6}" in (tmp_path / "plan.toml").read_text()
+    assert read_plan(tmp_path / "plan.toml") == plan
+
+
+def test_limits_that_are_open_on_both_sides_are_told(tmp_path: Path) -> None:
+    path = tmp_path / "plan.toml"
+    write_plan(path, PLAN)
+    path.write_text(path.read_text().replace("limits = {low = 136.5, high = 141.3}", "limits = {}"))
+    with pytest.raises(PlanError, match=r"limits: found .*; expected \{ low = ... \}, \{ high = ... \} or both"):
+        read_plan(path)
+
+
 def test_a_missing_plan_is_a_plan_error(tmp_path: Path) -> None:
     with pytest.raises(PlanError, match="There is no file"):
         read_plan(tmp_path / "plan.toml")

@@ -76,3 +76,8 @@ def test_a_monitor_is_prepared_and_limited_as_its_plan_says() -> None:
     assert limits(given) == Limits(136.0, 142.0, 139.0, 0.4)
     assert in_control(given) == InControl(138.0, 3.0, 1.5, 0.8, 0.2)
     assert in_control(monitor()).centre == 139.0
+
+
+def test_a_limit_that_is_left_out_never_alarms() -> None:
+    assert limits(monitor(limits={"high": 142.0})) == Limits(-math.inf, 142.0, 139.0, 0.5)
+    assert limits(monitor(limits={"low": 136.0})) == Limits(136.0, math.inf, 139.0, 0.5)

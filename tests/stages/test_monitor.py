@@ -96,6 +96,13 @@ def test_an_alarm_of_an_sd_does_not_claim_a_shift() -> None:
     assert alarm.shown == alarm.value
 
 
+def test_an_sd_without_a_lower_limit_alarms_above_and_never_below() -> None:
+    limits = {"high": 5.0}
+    plan = ewma(3.0, statistic="sd", weight=None, window=10, level=140.0, watches="imprecision", limits=limits)
+    [alarm] = alarms(monitor(plan), results([140.0] * 20 + [140.0, 142.0] * 10 + [150.0, 130.0] * 10 + [140.0] * 20))
+    assert (alarm.side, alarm.limit) == ("HIGH", 5.0)
+
+
 def test_the_last_control_is_the_last_one_scheduled_by_the_clocks_of_the_laboratory() -> None:
     noon = datetime(2031, 3, 2, 12, 0, tzinfo=LAB.laboratory.zone)
     [alarm] = alarms(monitor(ewma()), results([160], start=round(noon.timestamp()) * 1_000_000))
