@@ -14,8 +14,8 @@ class Reading(NamedTuple):
     ----------
     place
         Where it stands in the feed: the line.
-    time, analyte, analyser, value, unit, specimen, ward, kind, patient
-        As written; "" where not given. The patient is never kept as written.
+    time, analyte, analyser, value, unit, specimen, ward, kind, patient, sex, age
+        As written; "" where not given. Patient, sex and age are never kept as written: see `records.sex_and_age` for the last two.
     """
 
     place: int
@@ -28,6 +28,8 @@ class Reading(NamedTuple):
     ward: str
     kind: str
     patient: str = ""
+    sex: str = ""
+    age: str = ""
 
 
 class SetAside(NamedTuple):

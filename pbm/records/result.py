@@ -23,6 +23,8 @@ class Result:
         Text, "" where not given.
     patient
         A keyed one-way token, where repeats of a patient are limited; else "".
+    sex, age
+        "F" or "M", and one of `records.sex_and_age.AGE_BANDS`; "" where not given or not known.
     """
 
     time: int
@@ -32,3 +34,5 @@ class Result:
     specimen: str = ""
     ward: str = ""
     patient: str = ""
+    sex: str = ""
+    age: str = ""
