@@ -133,8 +133,10 @@ def _one_ahead(blocks: Iterator[TextBlock]) -> Iterator[TextBlock]:
 def _guesses(reader: RowReader) -> Iterator[str]:
     if count := reader.clock.by_sequence:
         yield f"{count:,} times lie in an hour that the clocks repeat; the sequence of the lines told the passages apart"
-    if count := reader.covariates.ages_refused:
+    if count := reader.covariates.not_read["age"]:
         yield f"{count:,} ages are no ages (such as a birth date) and were not kept"
+    if count := reader.covariates.not_read["sex"]:
+        yield f"{count:,} entries for sex say neither female nor male and count as not known"
 
 
 def _merge(lab: Lab, writer: HistoryWriter, account: Account, progress: Callable[[float], None]) -> None:

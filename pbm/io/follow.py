@@ -27,7 +27,7 @@ from pbm.records.reading import Chunk, Reading, SetAside
 MOST_LINES = 500
 _BLOCK = 2**18
 _TAIL = 256
-_ROLES = ("time", "analyte", "analyser", "value", "unit", "specimen", "ward", "kind", "patient")
+_ROLES = ("time", "analyte", "analyser", "value", "unit", "specimen", "ward", "kind", "patient", "sex", "age")
 _WIDE = (codecs.BOM_UTF16_LE, codecs.BOM_UTF16_BE)
 
 

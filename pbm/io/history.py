@@ -9,6 +9,7 @@ import difflib
 import hashlib
 import json
 import re
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 from urllib.parse import unquote
@@ -22,6 +23,7 @@ import pyarrow.parquet as pq
 from pbm.errors import InputError, one_line
 from pbm.records.intake import COVARIATES, TakenExtract
 from pbm.records.plan import HistoryMark
+from pbm.records.sex_and_age import read_age_band, read_sex
 from pbm.records.stream import StreamHistory, StreamName
 
 RESULTS = "results.parquet"
@@ -92,7 +94,7 @@ def read_history(folder: Path, name: StreamName) -> StreamHistory:
     InputError
         If the history does not hold the stream, or its file cannot be read.
     """
-    table = read_results(folder, name, ["time", "value", "censor", "specimen", "ward"])
+    table = read_results(folder, name, ["time", "value", "censor", "specimen", "ward", "sex", "age"])
     return StreamHistory(
         name=name,
         time=table["time"].cast(pa.int64()).to_numpy(),
@@ -100,6 +102,9 @@ def read_history(folder: Path, name: StreamName) -> StreamHistory:
         censor=table["censor"].to_numpy(),
         specimen=_objects(table["specimen"]),
         ward=_objects(table["ward"]),
+        # A history taken by an earlier version holds sex and age as they were written.
+        sex=_objects(table["sex"], read_sex),
+        age=_objects(table["age"], read_age_band),
     )
 
 
@@ -173,10 +178,10 @@ def _update(total: Any, column: pa.ChunkedArray) -> None:
             total.update(memoryview(chunk.buffers()[2])[offsets[0] : offsets[-1]])
 
 
-def _objects(column: pa.ChunkedArray) -> npt.NDArray[np.object_]:
+def _objects(column: pa.ChunkedArray, read: Callable[[str], str] = str) -> npt.NDArray[np.object_]:
     # One Python object per different text, not per row: a ward has a dozen names and a million results.
     encoded = column.combine_chunks().dictionary_encode()
-    words: npt.NDArray[np.object_] = np.array(encoded.dictionary.to_pylist(), dtype=object)
+    words: npt.NDArray[np.object_] = np.array([read(text) for text in encoded.dictionary.to_pylist()], dtype=object)
     codes: npt.NDArray[np.int32] = encoded.indices.to_numpy(zero_copy_only=False)
     return words[codes]
 

@@ -1,6 +1,8 @@
 """NDJSON: one result a line in, one alarm a line out.
 
 {"time":"2031-03-02T07:14:05Z","analyte":"sodium","analyser":"line-2","value":"138","unit":"mmol/L","specimen":"24-118233","ward":"ED"}
+
+and where they are known `"sex":"F","age":"67"`, `kind` and `patient`.
 """
 
 import json
@@ -13,7 +15,7 @@ from pbm.records.alarm import Alarm
 from pbm.records.reading import Reading, SetAside
 
 LONGEST_LINE = 2**16
-_FIELDS = ("time", "analyte", "analyser", "value", "unit", "specimen", "ward", "kind", "patient")
+_FIELDS = ("time", "analyte", "analyser", "value", "unit", "specimen", "ward", "kind", "patient", "sex", "age")
 _TIMES = ("time", "onset", "onset_low", "onset_high", "last_control")
 _WITHOUT_BOUND = (math.inf, -math.inf)
 

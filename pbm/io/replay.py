@@ -77,4 +77,6 @@ def _result(stream: StreamHistory, row: int) -> Result:
         int(stream.censor[row]),
         str(stream.specimen[row]),
         str(stream.ward[row]),
+        sex=str(stream.sex[row]),
+        age=str(stream.age[row]),
     )

@@ -79,7 +79,11 @@ class Extract(Written):
         Tells reruns and duplicates of a specimen from results of different specimens.
     ward
         Where the patient is; for patient mix and for `leave_out_wards`.
-    sex, age, priority
+    sex
+        For patient mix; "F", "female", "W", "M" and the like are read, and a letter is kept.
+    age
+        For patient mix; an age such as "67", "67 y" or "3 m" is read, never a birth date, and a band of ages is kept.
+    priority
         Kept beside the result.
     patient
         Kept as a keyed one-way token only; for `repeat_hours`.

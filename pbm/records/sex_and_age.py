@@ -5,14 +5,16 @@ menstruation and by old age; they are fixed, so that a plan means the same from 
 """
 
 import re
+from typing import Literal, get_args
 
-FEMALE, MALE = "F", "M"
-AGE_BANDS = ("under 1", "1-11", "12-17", "18-39", "40-59", "60-74", "75 and over")
+Sex = Literal["F", "M"]
+AgeBand = Literal["under 1", "1-11", "12-17", "18-39", "40-59", "60-74", "75 and over"]
+AGE_BANDS: tuple[str, ...] = get_args(AgeBand)
 _FROM_YEAR = (0, 1, 12, 18, 40, 60, 75)
 OLDEST = 130  # years; beyond are placeholders such as 999
 
-_SEXES = dict.fromkeys(("F", "FEMALE", "W", "WOMAN", "GIRL", "2"), FEMALE) | dict.fromkeys(
-    ("M", "MALE", "MAN", "BOY", "1"), MALE
+_SEXES = dict.fromkeys(("F", "FEMALE", "W", "WOMAN", "GIRL", "2"), "F") | dict.fromkeys(
+    ("M", "MALE", "MAN", "BOY", "1"), "M"
 )
 # A date has more digits or other signs.
 _AGE = re.compile(r"(\d{1,3}(?:[.,]\d+)?) ?([A-Za-z]{0,6})")

@@ -56,6 +56,8 @@ class StreamHistory:
         int8: -1 for "<v", +1 for ">v", 0.
     specimen, ward
         Text, "" where not given.
+    sex, age
+        "F" or "M", and one of `records.sex_and_age.AGE_BANDS`; "" where not given or not known.
     """
 
     name: StreamName
@@ -64,6 +66,8 @@ class StreamHistory:
     censor: npt.NDArray[np.int8]
     specimen: npt.NDArray[np.object_]
     ward: npt.NDArray[np.object_]
+    sex: npt.NDArray[np.object_]
+    age: npt.NDArray[np.object_]
 
     def __len__(self) -> int:
         return len(self.time)

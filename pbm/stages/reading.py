@@ -15,6 +15,7 @@ from pbm.records.as_written import EARLIEST, LATEST, read_time, read_value
 from pbm.records.laboratory import Analyte, Lab
 from pbm.records.reading import Reading, SetAside
 from pbm.records.result import Result
+from pbm.records.sex_and_age import read_age_band, read_sex
 from pbm.records.stream import LONGEST_ANALYSER, POOLED, StreamName
 
 _EPOCH = datetime(1970, 1, 1)
@@ -67,6 +68,7 @@ class Reader:
             lambda text: blake2b(text.encode(), digest_size=8, key=patient_key).hexdigest()
         )
         self._value = lru_cache(_KNOWN_TEXTS)(lambda text: read_value(text, decimal))
+        self._sex, self._age = lru_cache(_KNOWN_TEXTS)(read_sex), lru_cache(_KNOWN_TEXTS)(read_age_band)
 
     def read(self, reading: Reading) -> Result | SetAside:
         """The result, or why it is none."""
@@ -95,7 +97,8 @@ class Reader:
         time = self._time(reading.time)
         self._check_plausible(value, analyte)
         patient = self._token(reading.patient) if reading.patient and analyte.repeat_hours else ""
-        return Result(time, stream, value, censor, reading.specimen, reading.ward, patient)
+        sex, age = self._sex(reading.sex), self._age(reading.age)
+        return Result(time, stream, value, censor, reading.specimen, reading.ward, patient, sex, age)
 
     def _check_it_is_data(self, reading: Reading) -> None:
         if not (reading.time or reading.analyte or reading.value):

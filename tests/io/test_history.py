@@ -62,6 +62,14 @@ def test_a_stream_comes_back_as_it_was_laid_down(tmp_path: Path) -> None:
     assert stream.censor.dtype == np.int8
     assert list(stream.specimen) == ["S-0", "S-1", "S-2"]
     assert list(stream.ward) == ["", "ED", ""]
+    assert (list(stream.sex), list(stream.age)) == (["F"] * 3, ["60-74"] * 3)
+
+
+def test_sex_and_age_of_an_older_history_which_holds_them_as_written_are_read(tmp_path: Path) -> None:
+    put(tmp_path, SODIUM, changed={"sex": ["female", "M", "?"], "age": ["3 m", "75 and over", ""]})
+    stream = read_history(tmp_path, SODIUM)
+    assert list(stream.sex) == ["F", "M", ""]
+    assert list(stream.age) == ["under 1", "75 and over", ""]
 
 
 def test_streams_are_listed_by_name_with_their_sizes(tmp_path: Path) -> None:

@@ -40,6 +40,11 @@ def test_a_number_stays_as_it_is_written(written: str, value: str) -> None:
     assert read_line(7, LINE.replace('"138"', written).encode()) == READING._replace(value=value)
 
 
+def test_sex_and_age_are_read_where_they_are_given() -> None:
+    line = LINE.replace("}", ',"sex":"F","age":67}')
+    assert read_line(7, line.encode()) == READING._replace(sex="F", age="67")
+
+
 def test_fields_that_are_not_given_are_empty_and_others_are_ignored() -> None:
     assert read_line(1, b'{"analyte":"sodium","patient_name":"somebody"}') == Reading(
         1, "", "sodium", "", "", "", "", "", ""

@@ -54,6 +54,8 @@ def history(value: Any, time: Any, name: StreamName = SODIUM, **columns: Any) ->
         np.asarray(columns.get("censor", np.zeros(n)), dtype=np.int8),
         np.array([f"s{i}" for i in range(n)], dtype=object),
         np.array(wards, dtype=object),
+        np.array(columns.get("sex", [""] * n), dtype=object),
+        np.array(columns.get("age", [""] * n), dtype=object),
     )
 
 

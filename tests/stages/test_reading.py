@@ -35,6 +35,13 @@ def result(**changed: str) -> Result:
     return found
 
 
+def test_sex_and_age_become_a_letter_and_a_band_and_a_birth_date_nothing() -> None:
+    found = result(sex="female", age="3 m")
+    assert (found.sex, found.age) == ("F", "under 1")
+    found = result(sex="U", age="1964-03-02")
+    assert (found.sex, found.age) == ("", "")
+
+
 def test_a_reading_becomes_a_result_of_its_stream() -> None:
     found = result()
     assert (found.stream, found.value, found.censor, found.specimen, found.ward) == (

@@ -50,7 +50,14 @@ def surveyed(
     )
     words = np.full(n, "", dtype=object)
     history = StreamHistory(
-        StreamName(analyte, "line-1"), when, x.astype(float), np.broadcast_to(censor, n).astype(np.int8), words, words
+        StreamName(analyte, "line-1"),
+        when,
+        x.astype(float),
+        np.broadcast_to(censor, n).astype(np.int8),
+        words,
+        words,
+        words,
+        words,
     )
     return survey_stream(history, np.full(n, -1) if patient is None else patient, LAB, 1)
 
@@ -199,7 +206,14 @@ def test_days_of_the_week_are_those_of_the_laboratorys_clock():
 def test_an_analyte_that_lab_toml_does_not_know_is_an_error_that_says_so():
     words = np.full(1, "", dtype=object)
     history = StreamHistory(
-        StreamName("chloride", "line-1"), np.array([BEGIN]), np.array([1.0]), np.zeros(1, dtype=np.int8), words, words
+        StreamName("chloride", "line-1"),
+        np.array([BEGIN]),
+        np.array([1.0]),
+        np.zeros(1, dtype=np.int8),
+        words,
+        words,
+        words,
+        words,
     )
     with pytest.raises(InputError, match="no analyte chloride"):
         survey_stream(history, np.array([-1]), LAB, 1)

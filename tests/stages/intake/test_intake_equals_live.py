@@ -11,7 +11,7 @@ from pbm.stages.intake import RowReader
 from pbm.stages.reading import Reader
 from tests.stages.intake.laboratory import KEY, ROW, block, lab
 
-ROLES = ("time", "analyte", "analyser", "value", "unit", "specimen", "ward", "kind")
+ROLES = ("time", "analyte", "analyser", "value", "unit", "specimen", "ward", "kind", "sex", "age")
 WORDS = {
     "time": [
         "2031-03-02 07:14",
@@ -29,6 +29,8 @@ WORDS = {
     "specimen": ["S-2"],
     "ward": ["DIAL"],
     "kind": ["P", "Q"],
+    "sex": ["female", "W", "m", "U", "2"],
+    "age": ["3 m", "067Y", "12,5", "1970-03-02", "75 and over", "999"],
 }
 row = st.fixed_dictionaries(
     {role: st.one_of(st.just(ROW[role]), st.sampled_from([*WORDS[role], "", " "])) for role in ROLES}
@@ -38,16 +40,12 @@ row = st.fixed_dictionaries(
 @given(row)
 def test_a_row_of_an_extract_and_a_live_reading_agree(cells: dict[str, str]) -> None:
     parsed = RowReader(lab(), KEY).parse(block({**ROW, **cells}))
-    live = Reader(lab(), kinds_given=True).read(Reading(2, *(cells[role] for role in ROLES)))
+    live = Reader(lab(), kinds_given=True).read(Reading(**cells, place=2))
     if isinstance(live, Result):
         found: Any = parsed.results.to_pylist()[0]
         assert [str(name) for name, _ in parsed.streams] == [str(live.stream)]
         assert int(found["time"].timestamp()) * 1_000_000 == live.time
-        assert (found["value"], found["censor"], found["specimen"], found["ward"]) == (
-            live.value,
-            live.censor,
-            live.specimen,
-            live.ward,
-        )
+        kept = ("value", "censor", "specimen", "ward", "sex", "age")
+        assert {name: found[name] for name in kept} == {name: getattr(live, name) for name in kept}
     else:
         assert parsed.left_out["reason"].to_pylist() == [live.reason]

@@ -17,8 +17,8 @@ def test_a_row_becomes_a_result_of_its_stream(encoded: bool) -> None:
     row = parsed.results.to_pylist()[0]
     assert parsed.streams == ((StreamName("sodium", "line-2"), 1),)
     assert row["time"] == datetime(2031, 3, 2, 7, 14, 5, tzinfo=UTC)
-    assert (row["value"], row["censor"], row["specimen"], row["ward"], row["age"]) == (138.0, -1, "S-1", "ED", "61")
-    assert (row["file"], row["line"], row["sex"]) == ("export.csv", 2, "")
+    assert (row["value"], row["censor"], row["specimen"], row["ward"], row["age"]) == (138.0, -1, "S-1", "ED", "60-74")
+    assert (row["file"], row["line"], row["sex"]) == ("export.csv", 2, "F")
     assert left(parsed) == []
 
 
@@ -99,12 +99,19 @@ def test_a_patient_is_kept_as_a_token_that_needs_the_key() -> None:
     assert other[0] != tokens[0]
 
 
-def test_an_age_is_kept_and_a_birth_date_is_not() -> None:
-    ages = ["61", "3 d", "0.5", "061Y", "1970-03-02", "02.03.1970", "19700302", ""]
+def test_the_band_of_an_age_is_kept_and_a_birth_date_is_not() -> None:
+    ages = ["61", "3 d", "17.5", "061Y", "1970-03-02", "02.03.1970", "19700302", ""]
     reader = RowReader(lab(), KEY)
     kept = reader.parse(block(*({"age": age} for age in ages))).results["age"].to_pylist()
-    assert kept == ["61", "3 d", "0.5", "061Y", "", "", "", ""]
-    assert reader.covariates.ages_refused == 3
+    assert kept == ["60-74", "under 1", "12-17", "60-74", "", "", "", ""]
+    assert reader.covariates.not_read["age"] == 3
+
+
+def test_sex_is_kept_as_a_letter() -> None:
+    reader = RowReader(lab(), KEY)
+    kept = reader.parse(block(*({"sex": sex} for sex in ["F", "female", "W", "m", "U", ""]))).results["sex"].to_pylist()
+    assert kept == ["F", "F", "F", "M", "", ""]
+    assert reader.covariates.not_read["sex"] == 1
 
 
 def test_an_empty_block_gives_nothing() -> None:
