@@ -1,177 +1,15 @@
-"""What an appraisal found: for each stream and fault, the control schedule alone and with the monitor, every figure with its interval.
+"""What an appraisal found: for each stream and fault, the control schedule alone and with the monitors, every figure with its interval.
 
 This is also the documented content of `reports/appraisal.json`; `version` rises when its shape changes.
 """
 
-from typing import Annotated, Literal
+from typing import Annotated
 
-from pydantic import BaseModel, ConfigDict, Field
+from pydantic import Field
 
+from pbm.records.figures import AloneAndWith, Figure, Found
+from pbm.records.judged import FalseAlarms, Judged
 from pbm.records.plan import Verdict
-
-
-class Found(BaseModel):
-    """Base of everything an appraisal writes: frozen, and every number finite, since JSON has no other."""
-
-    model_config = ConfigDict(frozen=True, extra="forbid", allow_inf_nan=False)
-
-
-class Figure(Found):
-    """A figure with its interval.
-
-    Attributes
-    ----------
-    value
-        The figure.
-    low, high
-        Its 90 % interval from the bootstrap over days.
-    """
-
-    value: float
-    low: float
-    high: float
-
-
-class ResultsUntil(Found):
-    """Affected results until detection.
-
-    Attributes
-    ----------
-    mean
-        What was not found counts as found at the horizon; a lower bound where `never` is not 0.
-    median, p95
-        Median and 95th percentile; none where more than the rest are never found.
-    never
-        Share not found within the horizon.
-    """
-
-    mean: float
-    median: float | None
-    p95: float | None
-    never: float
-
-
-class Ways(Found):
-    """A figure in three ways.
-
-    Attributes
-    ----------
-    schedule, monitor, both
-        The control schedule alone, the monitor alone, both together.
-    """
-
-    schedule: Figure
-    monitor: Figure
-    both: Figure
-
-
-class UntilWays(Found):
-    """Results until detection in three ways.
-
-    Attributes
-    ----------
-    schedule, monitor, both
-        The control schedule alone, the monitor alone, both together.
-    """
-
-    schedule: ResultsUntil
-    monitor: ResultsUntil
-    both: ResultsUntil
-
-
-class AloneAndWith(Found):
-    """A figure without and with the monitor.
-
-    Attributes
-    ----------
-    alone, with_monitor
-        The control schedule alone, and with the monitor beside it.
-    """
-
-    alone: Figure
-    with_monitor: Figure
-
-
-class FaultAppraisal(Found):
-    """One fault: what finds it, when, and what it costs until then.
-
-    Attributes
-    ----------
-    label
-        The fault in words.
-    kind
-        "shift", "drift", "noise" or "sporadic".
-    size, unit
-        Size in this unit ("" for the factor of noise).
-    sign
-        To which side.
-    shift
-        Its size in the analyte's unit at the median result (None for noise).
-    by_first_event
-        Probability of detection no later than the first control event after the onset.
-    before_first_event
-        Probability that the monitor alarms before the first control event.
-    until
-        Affected results until detection.
-    unreliable, unreliable_final
-        Expected unreliable results reported, and those of them released before the last accepted control event.
-    schedule_error
-        Largest standard error of a chance of passing; 0 where those are exact.
-    """
-
-    label: str
-    kind: str
-    size: float
-    unit: str
-    sign: Literal[-1, 1]
-    shift: float | None
-    by_first_event: Ways
-    before_first_event: Figure
-    until: UntilWays
-    unreliable: AloneAndWith
-    unreliable_final: AloneAndWith
-    schedule_error: float
-
-
-class WorstCase(Found):
-    """The largest expected number of unreliable results over all faults.
-
-    Attributes
-    ----------
-    alone, with_monitor
-        The control schedule alone, and with the monitor beside it.
-    alone_at, with_monitor_at
-        At which fault each is largest.
-    """
-
-    alone: Figure
-    alone_at: str
-    with_monitor: Figure
-    with_monitor_at: str
-
-
-class FalseAlarms(Found):
-    """Alarms on held-out days without a known error, against the budget.
-
-    Attributes
-    ----------
-    days
-        Calendar days.
-    episodes
-        Alarms in them.
-    allowed
-        Episodes that the budget allows in these days.
-    interval
-        Exact 90 % Poisson interval of the expected count.
-    kept
-        The budget lies inside the interval or the count is below it.
-    """
-
-    days: int
-    episodes: int
-    allowed: float
-    interval: tuple[float, float]
-    kept: bool
 
 
 class Trace(Found):
@@ -191,45 +29,45 @@ class Trace(Found):
 
 
 class MonitorAppraisal(Found):
-    """One monitor judged on held-out days.
+    """One monitor: what it is, and its alarms on held-out days.
 
     Attributes
     ----------
     words, brief
         What the monitor is, in a sentence and in as few words as a table bears.
+    watches
+        What it is meant to find: "shift" or "imprecision".
     admitted
         Share of held-out results that the statistic takes.
-    centre, low, high
+    centre
         Of the statistic, in the result's unit (transformed back).
-    limits, scale_centre
-        The same on the statistic's own scale.
+    low, high
+        Its control limits in the result's unit; none where that side raises no alarm.
+    limits
+        The same on the statistic's own scale, low and high.
+    scale_centre
+        The centre on the statistic's own scale.
     trace
         The statistic.
     false_alarms
-        Alarms on held-out days.
-    faults
-        Every fault.
-    worst_unreliable, worst_final
-        The worst case of `unreliable` and of `unreliable_final` over the faults.
+        Its own alarms on held-out days.
     """
 
     words: str
     brief: str
+    watches: str
     admitted: float
     centre: float
-    low: float
-    high: float
-    limits: tuple[float, float]
+    low: float | None
+    high: float | None
+    limits: tuple[float | None, float | None]
     scale_centre: float
     trace: Trace
     false_alarms: FalseAlarms
-    faults: tuple[FaultAppraisal, ...]
-    worst_unreliable: WorstCase
-    worst_final: WorstCase
 
 
 class StreamAppraisal(Found):
-    """One stream: its monitors judged, or the reason why it has none.
+    """One stream: its monitors judged on held-out days, or the reason why it has none.
 
     Attributes
     ----------
@@ -238,7 +76,9 @@ class StreamAppraisal(Found):
     unit
         Of its results.
     verdict, reason
-        Of the plan.
+        By what the monitors save on the held-out days.
+    planned_verdict, planned_reason
+        Of the plan, by the training days.
     results_per_day
         Results a day in the history that made the plan.
     first_day, last_day
@@ -253,12 +93,16 @@ class StreamAppraisal(Found):
         TEa, control schedule and response lag in words.
     monitors
         The monitors.
+    judged
+        What was found; none where the history is too short to hold days out.
     """
 
     stream: str
     unit: str
     verdict: Verdict
     reason: str
+    planned_verdict: Verdict
+    planned_reason: str
     results_per_day: float
     first_day: str
     last_day: str
@@ -269,6 +113,35 @@ class StreamAppraisal(Found):
     schedule: str
     response_lag: str
     monitors: tuple[MonitorAppraisal, ...] = ()
+    judged: Judged | None = None
+
+
+class Bench(Found):
+    """The whole bench: what its staff will see and what a year may bring, streams taken together.
+
+    Attributes
+    ----------
+    streams, monitors
+        How many are watched, by how many monitors.
+    a_month
+        Alarms in 30 days without a known error. Its interval is the exact Poisson interval where all streams have as many held-out days,
+        else that of a weighted sum of Poisson counts.
+    allowed_a_month
+        What the budgets allow together.
+    kept
+        The interval does not begin above what is allowed.
+    unreliable, unreliable_final
+        Expected unreliable results in a year by the assumed rate of error conditions, and those of them that are final; all streams judged,
+        each with its own independent interval.
+    """
+
+    streams: int
+    monitors: int
+    a_month: Figure
+    allowed_a_month: float
+    kept: bool
+    unreliable: AloneAndWith
+    unreliable_final: AloneAndWith
 
 
 class Appraisal(Found):
@@ -280,21 +153,33 @@ class Appraisal(Found):
         Of this layout.
     made_by
         Version of the tool.
+    versions
+        Of Python and of the libraries that decide figures.
     laboratory
         Its name.
+    time_zone
+        In which its days and hours are told.
     seed
         Master seed.
     history_sha256, plan_sha256, lab_sha256
         What was judged: the history, `plan.toml` and `lab.toml`.
+    onset_times
+        Which hours of the week "day", "night" and "weekend" are.
+    bench
+        The bench as a whole.
     streams
         The streams.
     """
 
-    version: Annotated[int, Field(ge=1)] = 1
+    version: Annotated[int, Field(ge=1)] = 2
     made_by: str
+    versions: dict[str, str]
     laboratory: str
+    time_zone: str
     seed: int
     history_sha256: str
     plan_sha256: str
     lab_sha256: str
+    onset_times: dict[str, str]
+    bench: Bench
     streams: tuple[StreamAppraisal, ...]

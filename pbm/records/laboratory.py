@@ -244,6 +244,18 @@ class FaultList(Written):
 DEFAULT_FAULTS = (FaultList(sizes=(0.25, 0.5, 0.75, 1.0, 1.5, 2.0)),)
 
 
+class FaultRate(Written):
+    """How often errors come: an assumption, which only scales what `pbm appraise` says of a year.
+
+    Attributes
+    ----------
+    per_year
+        Error conditions of one stream in a year.
+    """
+
+    per_year: NotNegative = 5.0
+
+
 class Range(Written):
     """A closed range of results; an open side is left out.
 
@@ -347,6 +359,8 @@ class Lab(Written):
         The alarm budget.
     controls
         The control schedule of every analyte that does not say otherwise.
+    faults
+        How often errors come.
     analytes
         The analytes, by a short name of the laboratory's choice.
     """
@@ -355,6 +369,7 @@ class Lab(Written):
     extract: Extract
     alarms: Alarms = Alarms()
     controls: Controls = Controls()
+    faults: FaultRate = FaultRate()
     analytes: dict[str, Analyte] = Field(min_length=1)
 
     @model_validator(mode="after")

@@ -7,7 +7,7 @@ from typing import Annotated, Literal
 
 from pydantic import Field
 
-from pbm.records.appraisal import Found
+from pbm.records.figures import Found
 from pbm.records.plan import Verdict
 
 
