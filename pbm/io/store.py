@@ -5,43 +5,25 @@ are SQLAlchemy Core; store_engine.py knows which database it is.
 """
 
 import json
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Iterable, Sequence
+from dataclasses import asdict
 from pathlib import Path
 from types import TracebackType
-from typing import Any
 
-from sqlalchemy import (
-    Table,
-    bindparam,
-    delete,
-    func,
-    insert,
-    inspect,
-    select,
-    update,
-)
+from sqlalchemy import insert, inspect, select, update
 
-from pbm.io import store_rows
+from pbm.io import store_audit, store_rows
+from pbm.io.store_batch import BatchRows, Numbers
 from pbm.io.store_engine import writing_engine
 from pbm.io.store_errors import told
-from pbm.io.store_schema import (
-    NAMED,
-    SCHEMA_VERSION,
-    UNNAMED,
-    VISITS,
-    alarms,
-    audit,
-    feeds,
-    metadata,
-    monitors,
-    results,
-    schema,
-    set_aside,
-    streams,
-    tallies,
-)
+from pbm.io.store_migrations import migrate
+from pbm.io.store_schema import NAMED, SCHEMA_VERSION, UNNAMED, VISITS, audit, feeds, metadata, results, schema, streams
+from pbm.io.store_schema import heartbeat as heartbeats
 from pbm.io.writer_lock import WriterLock
 from pbm.records.alarm import Alarm
+from pbm.records.event import LabEvent
+from pbm.records.message import MessageKey
+from pbm.records.notice import Heartbeat, Notice
 from pbm.records.result import Result
 from pbm.records.snapshot import LATE, RERUN, Batch, Earlier, Edition, Snapshot
 from pbm.records.stream import StreamName
@@ -86,16 +68,8 @@ class Store:
             if not inspect(self._connection).has_table("schema"):
                 metadata.create_all(self._connection)
                 self._connection.execute(insert(schema).values(version=SCHEMA_VERSION))
-            store_rows.check_version(self._connection, self.path)
-            self._streams = {
-                StreamName(one.analyte, one.analyser): one.id for one in self._connection.execute(select(streams))
-            }
-            self._feeds = {one.source: one.id for one in self._connection.execute(select(feeds))}
-            self._last = {table: self._highest(table) for table in (results, alarms, set_aside)}
-
-    def _highest(self, table: Table) -> int:
-        number = next(iter(table.primary_key))
-        return int(self._connection.execute(select(func.coalesce(func.max(number), 0))).scalar_one())
+            migrate(self._connection, self.path)
+            self._numbers = Numbers.read(self._connection)
 
     # What a batch asks before it is kept
 
@@ -118,7 +92,7 @@ class Store:
         return found
 
     def _find_runs(self, specimens: set[str], found: Earlier) -> None:
-        r, names = results.c, {number: name for name, number in self._streams.items()}
+        r, names = results.c, {number: name for name, number in self._numbers.streams.items()}
         asked = select(r.stream, r.specimen, r.time, r.value, r.censor, r.left_out).where(
             NAMED, r.specimen.in_(specimens)
         )
@@ -127,15 +101,15 @@ class Store:
             runs[time, value, censor] = left_out != RERUN
 
     def _find_unnamed(self, times: set[int], found: Earlier) -> None:
-        r, names = results.c, {number: name for name, number in self._streams.items()}
-        sources = {number: source for source, number in self._feeds.items()}
+        r, names = results.c, {number: name for name, number in self._numbers.streams.items()}
+        sources = {number: source for source, number in self._numbers.feeds.items()}
         asked = select(r.stream, r.time, r.value, r.censor, r.feed, r.edition).where(UNNAMED, r.time.in_(times))
         for stream, time, value, censor, feed, edition in self._connection.execute(asked):
             editions = found.unnamed.setdefault((names[stream], time, value, censor), set())
             editions.add(Edition(sources[feed], edition))
 
     def _find_visits(self, patients: set[str], found: Earlier) -> None:
-        r, names = results.c, {number: name for name, number in self._streams.items()}
+        r, names = results.c, {number: name for name, number in self._numbers.streams.items()}
         # One that came too late counts for its patient all the same.
         counted = r.left_out.in_(("", LATE))
         for stream, patient, time in self._connection.execute(
@@ -143,94 +117,27 @@ class Store:
         ):
             found.visits.setdefault((names[stream], patient), []).append(time)
 
+    def answered(self, keys: Iterable[MessageKey]) -> dict[MessageKey, str]:
+        """Of some messages those that were answered, with the code that was given."""
+        with told(self.path), self._connection.begin():
+            return store_rows.codes_answered(self._connection, keys)
+
     # What is kept
 
     def keep(self, batch: Batch) -> None:
         """Keep a batch: all of it, on the disk, or (with an error) nothing of it; the same batch may then be tried again."""
         with told(self.path):
             with self._connection.begin():
-                known = self._with_streams(one.result.stream for one in batch.results)
-                feeds_known = self._with_positions(batch.positions)
-                self._insert_results(batch, known, feeds_known)
-                aside = [item._asdict() | {"feed": feeds_known[source]} for source, item in batch.set_aside]
-                self._insert_numbered(set_aside, aside)
-                self._add_to_tallies(batch.tallies)
-                self._update_states(batch, known)
-            self._streams, self._feeds = known, feeds_known
-            self._last = {
-                results: self._last[results] + len(batch.results),
-                alarms: self._last[alarms] + len(batch.alarms),
-                set_aside: self._last[set_aside] + len(batch.set_aside),
-            }
+                rows = BatchRows(self._connection, self._numbers)
+                rows.write(batch)
+            self._numbers = rows.numbers
 
-    def _insert_results(self, batch: Batch, known: Mapping[StreamName, int], feeds_known: Mapping[str, int]) -> None:
-        rows = [
-            {
-                "stream": known[one.stream],
-                "specimen": one.specimen,
-                "time": one.time,
-                "value": one.value,
-                "censor": one.censor,
-                "ward": one.ward,
-                "patient": one.patient,
-                "left_out": left_out,
-                "feed": feeds_known[edition.source],
-                "edition": edition.number,
-            }
-            for one, left_out, edition in batch.results
-        ]
-        first = self._insert_numbered(results, rows)
-        raised = [
-            store_rows.alarm_row(alarm) | {"stream": known[alarm.stream], "seq": first + place}
-            for place, alarm in batch.alarms
-        ]
-        self._insert_numbered(alarms, raised)
-
-    def _insert_numbered(self, table: Table, rows: list[dict[str, Any]]) -> int:
-        """Insert rows under the next numbers; the number of the first."""
-        number, first = next(iter(table.primary_key)).name, self._last[table] + 1
-        for place, row in enumerate(rows):
-            row[number] = first + place
-        if rows:
-            self._connection.execute(insert(table), rows)
-        return first
-
-    def _with_streams(self, named: Iterable[StreamName]) -> dict[StreamName, int]:
-        new = [name for name in dict.fromkeys(named) if name not in self._streams]
-        if not new:
-            return self._streams
-        numbers = dict(zip(new, range(len(self._streams) + 1, len(self._streams) + len(new) + 1), strict=True))
-        rows = [
-            {"id": number, "analyte": name.analyte, "analyser": name.analyser, "newest": "[]"}
-            for name, number in numbers.items()
-        ]
-        self._connection.execute(insert(streams), rows)
-        return self._streams | numbers
-
-    def _with_positions(self, positions: Mapping[str, str]) -> dict[str, int]:
-        known = dict(self._feeds)
-        for source, position in positions.items():
-            if source in known:
-                self._connection.execute(update(feeds).where(feeds.c.id == known[source]).values(position=position))
-            else:
-                known[source] = len(known) + 1
-                self._connection.execute(insert(feeds).values(id=known[source], source=source, position=position))
-        return known
-
-    def _add_to_tallies(self, counts: Mapping[str, int]) -> None:
-        for reason, count in counts.items():
-            added = update(tallies).where(tallies.c.reason == reason).values(count=tallies.c.count + count)
-            if self._connection.execute(added).rowcount == 0:
-                self._connection.execute(insert(tallies).values(reason=reason, count=count))
-
-    def _update_states(self, batch: Batch, known: Mapping[StreamName, int]) -> None:
-        if batch.snapshots:
-            rows = [
-                store_rows.snapshot_row(one) | {"of": known[one.stream], "nth": one.monitor} for one in batch.snapshots
-            ]
-            self._connection.execute(_UPDATE_MONITOR, rows)
-            times = [{"of": known[name], "newest": json.dumps(newest)} for name, newest in batch.newest.items()]
-            self._connection.execute(_UPDATE_STREAM, times)
+    def beat(self, heartbeat: Heartbeat) -> None:
+        """Leave a sign of life."""
+        with told(self.path), self._connection.begin():
+            row = asdict(heartbeat)
+            if self._connection.execute(update(heartbeats).values(row)).rowcount == 0:
+                self._connection.execute(insert(heartbeats), row)
 
     # How a watch begins
 
@@ -250,6 +157,16 @@ class Store:
         """The alarm of every monitor whose episode is still open, the newest last."""
         with told(self.path), self._connection.begin():
             return store_rows.open_alarms(self._connection)
+
+    def open_notices(self) -> list[Notice]:
+        """The notices that last, the newest last."""
+        with told(self.path), self._connection.begin():
+            return store_rows.open_notices(self._connection)
+
+    def events(self, count: int = 1000) -> list[LabEvent]:
+        """The last laboratory events in order of arrival, the newest last."""
+        with told(self.path), self._connection.begin():
+            return store_rows.last_events(self._connection, count)
 
     def recent_results(self, name: StreamName, count: int) -> list[Result]:
         """The last results of a stream that counted, in order of arrival."""
@@ -278,18 +195,9 @@ class Store:
         states
             Every monitor of the plan as it begins.
         """
-        before = self.plan_in_force()
         with told(self.path):
             with self._connection.begin():
-                known = self._with_streams(one.stream for one in states)
-                self._connection.execute(delete(monitors))
-                if states:
-                    rows = [store_rows.snapshot_row(one) | {"stream": known[one.stream]} for one in states]
-                    self._connection.execute(insert(monitors), rows)
-                said = {"at": at, "what": what, "plan_before": before, "plan_after": plan_sha256, "detail": detail}
-                self._connection.execute(insert(audit), said | {"id": self._highest(audit) + 1})
-            self._streams = known
-
-
-_UPDATE_MONITOR = update(monitors).where(monitors.c.stream == bindparam("of"), monitors.c.monitor == bindparam("nth"))
-_UPDATE_STREAM = update(streams).where(streams.c.id == bindparam("of"))
+                rows = BatchRows(self._connection, self._numbers)
+                rows.replace_states(states)
+                store_audit.append(self._connection, at, what, detail, plan_sha256)
+            self._numbers = rows.numbers

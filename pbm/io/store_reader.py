@@ -6,7 +6,11 @@ from pbm.errors import InputError
 from pbm.io import store_rows
 from pbm.io.store_engine import reading_engine
 from pbm.io.store_errors import told
+from pbm.io.store_migrations import check_version
 from pbm.records.alarm import Alarm
+from pbm.records.event import LabEvent
+from pbm.records.message import Annotation
+from pbm.records.notice import Heartbeat, Notice
 from pbm.records.result import Result
 from pbm.records.snapshot import Snapshot
 from pbm.records.stream import StreamName
@@ -29,7 +33,7 @@ class StoreReader:
         self.path = path
         self._engine = reading_engine(path)
         with told(path), self._engine.connect() as connection:
-            store_rows.check_version(connection, path)
+            check_version(connection, path)
 
     def alarms(self, count: int = 100) -> list[Alarm]:
         """The last alarms, the newest last."""
@@ -50,3 +54,28 @@ class StoreReader:
         """The last results of a stream that counted, in order of arrival."""
         with told(self.path), self._engine.connect() as connection:
             return store_rows.recent_results(connection, name, count)
+
+    def events(self, count: int = 100) -> list[LabEvent]:
+        """The last laboratory events in order of arrival, the newest last."""
+        with told(self.path), self._engine.connect() as connection:
+            return store_rows.last_events(connection, count)
+
+    def notices(self, count: int = 100) -> list[Notice]:
+        """The last notices, the newest last."""
+        with told(self.path), self._engine.connect() as connection:
+            return store_rows.last_notices(connection, count)
+
+    def annotations(self, count: int = 100) -> list[Annotation]:
+        """The last later words on results, the newest last."""
+        with told(self.path), self._engine.connect() as connection:
+            return store_rows.last_annotations(connection, count)
+
+    def open_notices(self) -> list[Notice]:
+        """The notices that last, the newest last."""
+        with told(self.path), self._engine.connect() as connection:
+            return store_rows.open_notices(connection)
+
+    def heartbeat(self) -> Heartbeat | None:
+        """The sign of life of the watch; None before its first."""
+        with told(self.path), self._engine.connect() as connection:
+            return store_rows.sign_of_life(connection)

@@ -1,35 +1,33 @@
 """Rows of the store <-> records, and the questions that its writer and its readers ask alike."""
 
 import math
-from pathlib import Path
+from collections.abc import Iterable
+from dataclasses import asdict
 from typing import Any
 
 from sqlalchemy import Connection, Row, and_, func, select
 
-from pbm.errors import FeedError
-from pbm.io.store_schema import SCHEMA_VERSION, alarms, monitors, results, schema, streams
+from pbm.io.store_schema import (
+    alarms,
+    annotations,
+    events,
+    feeds,
+    heartbeat,
+    messages,
+    monitors,
+    notices,
+    results,
+    streams,
+)
 from pbm.records.alarm import Alarm, OnsetEstimate
+from pbm.records.event import LabEvent
+from pbm.records.message import Annotation, Answered, MessageKey
+from pbm.records.notice import Heartbeat, Notice
 from pbm.records.result import Result
 from pbm.records.snapshot import Snapshot
 from pbm.records.stream import StreamName
 
 _ESTIMATE = ("onset", "onset_low", "onset_high", "results", "size", "size_in_tea", "expected_unreliable")
-
-
-def check_version(connection: Connection, path: Path) -> None:
-    """Refuse a store of another layout.
-
-    Raises
-    ------
-    FeedError
-        If the layout is not the one this version writes.
-    """
-    found = connection.execute(select(schema.c.version)).scalar()
-    if found != SCHEMA_VERSION:
-        raise FeedError(
-            f"The store {path} has layout {found}, and this version of pbm writes layout {SCHEMA_VERSION}. Use the version of pbm that "
-            "wrote it, or move the store away to start afresh."
-        )
 
 
 def recent_results(connection: Connection, name: StreamName, count: int) -> list[Result]:
@@ -43,7 +41,8 @@ def recent_results(connection: Connection, name: StreamName, count: int) -> list
     )
     rows = connection.execute(asked).all()
     return [
-        Result(row.time, name, row.value, row.censor, row.specimen, row.ward, row.patient) for row in reversed(rows)
+        Result(row.time, name, row.value, row.censor, row.specimen, row.ward, row.patient, row.sex, row.age)
+        for row in reversed(rows)
     ]
 
 
@@ -74,6 +73,78 @@ def snapshots(connection: Connection) -> list[Snapshot]:
     return [_snapshot(row) for row in connection.execute(asked)]
 
 
+def codes_answered(connection: Connection, keys: Iterable[MessageKey]) -> dict[MessageKey, str]:
+    """Of some messages those that were answered, with the code."""
+    asked = {(one.sender, one.control_id, bytes.fromhex(one.sha256)): one for one in keys}
+    same = messages.c.control_id.in_({control_id for _, control_id, _ in asked})
+    rows = connection.execute(
+        select(messages).where(messages.c.sender.in_({sender for sender, _, _ in asked}), same)
+    ).all()
+    return {asked[key]: row.code for row in rows if (key := (row.sender, row.control_id, row.sha256)) in asked}
+
+
+def last_annotations(connection: Connection, count: int) -> list[Annotation]:
+    """The last annotations, the newest last."""
+    asked = select(annotations, streams.c.analyte, streams.c.analyser, feeds.c.source).join(streams).join(feeds)
+    rows = connection.execute(asked.order_by(annotations.c.id.desc()).limit(count)).all()
+    return [_annotation(row) for row in reversed(rows)]
+
+
+def last_events(connection: Connection, count: int) -> list[LabEvent]:
+    """The last laboratory events in order of arrival, the newest last."""
+    rows = connection.execute(select(events).order_by(events.c.id.desc()).limit(count)).all()
+    return [LabEvent(**{name: row._mapping[name] for name in _EVENT}) for row in reversed(rows)]
+
+
+def last_notices(connection: Connection, count: int) -> list[Notice]:
+    """The last notices, the newest last."""
+    rows = connection.execute(select(notices).order_by(notices.c.id.desc()).limit(count)).all()
+    return [_notice(row) for row in reversed(rows)]
+
+
+def open_notices(connection: Connection) -> list[Notice]:
+    """The notices that last, the newest last."""
+    asked = select(notices).where(notices.c.closed_at.is_(None)).order_by(notices.c.id)
+    return [_notice(row) for row in connection.execute(asked)]
+
+
+def sign_of_life(connection: Connection) -> Heartbeat | None:
+    """The heartbeat; None before the first."""
+    row = connection.execute(select(heartbeat)).first()
+    return None if row is None else Heartbeat(**row._mapping)
+
+
+def message_row(message: Answered) -> dict[str, Any]:
+    """The columns of a message, but for the number of a result."""
+    key = message.key
+    named = {"sender": key.sender, "control_id": key.control_id, "sha256": bytes.fromhex(key.sha256)}
+    return named | {"code": message.code, "at": message.at}
+
+
+def annotation_row(annotation: Annotation) -> dict[str, Any]:
+    """The columns of an annotation, but for its number, its stream's and its feed's."""
+    return {name: getattr(annotation, name) for name in ("specimen", "time", "status", "value", "at", "place")}
+
+
+_EVENT = ("time", "kind", "analyte", "analyser", "detail", "source", "at", "effect")
+
+
+def event_row(event: LabEvent) -> dict[str, Any]:
+    """The columns of an event, but for its number and a result's."""
+    return asdict(event)
+
+
+def event_in_words(event: LabEvent) -> str:
+    """What the audit says of an event."""
+    about = f"{event.analyte}@{event.analyser}" if event.analyte else event.analyser
+    return "; ".join(filter(None, (about, event.detail, event.source, event.effect)))
+
+
+def notice_row(notice: Notice) -> dict[str, Any]:
+    """The columns of a notice, but for its number."""
+    return asdict(notice)
+
+
 def alarm_row(alarm: Alarm) -> dict[str, Any]:
     """The columns of an alarm, but for its number, its stream's and its result's."""
     estimate = {name: getattr(alarm.estimate, name, None) for name in _ESTIMATE}
@@ -88,6 +159,7 @@ def alarm_row(alarm: Alarm) -> dict[str, Any]:
         "shown_limit",
         "last_control",
         "plan_sha256",
+        "shadow",
     )
     return {name: getattr(alarm, name) for name in own} | {"control_limit": alarm.limit} | estimate
 
@@ -114,6 +186,7 @@ def _alarm(row: Row[Any]) -> Alarm:
         estimate=None if row.onset is None else OnsetEstimate(**{name: row._mapping[name] for name in _ESTIMATE}),
         last_control=row.last_control,
         plan_sha256=row.plan_sha256,
+        shadow=row.shadow,
     )
 
 
@@ -129,3 +202,20 @@ def _snapshot(row: Row[Any]) -> Snapshot:
         value=math.nan if row.value is None else row.value,
         episode=row.episode,
     )
+
+
+def _annotation(row: Row[Any]) -> Annotation:
+    return Annotation(
+        stream=StreamName(row.analyte, row.analyser),
+        specimen=row.specimen,
+        time=row.time,
+        status=row.status,
+        value=row.value,
+        at=row.at,
+        source=row.source,
+        place=row.place,
+    )
+
+
+def _notice(row: Row[Any]) -> Notice:
+    return Notice(row.time, row.kind, row.analyte, row.analyser, row.text, row.closed_at)

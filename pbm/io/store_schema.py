@@ -2,6 +2,7 @@
 
 from sqlalchemy import (
     BigInteger,
+    Boolean,
     Column,
     Float,
     ForeignKey,
@@ -16,7 +17,7 @@ from sqlalchemy import (
     literal_column,
 )
 
-SCHEMA_VERSION = 1
+SCHEMA_VERSION = 2
 # SQLite makes a row number of INTEGER only; elsewhere 32 bits would not last.
 _Number = BigInteger().with_variant(Integer, "sqlite")
 
@@ -58,6 +59,8 @@ results = Table(
     Column("left_out", String, nullable=False, comment='why no monitor may take it (a rerun, too late), else ""'),
     Column("feed", ForeignKey("feeds.id"), nullable=False),
     Column("edition", Integer, nullable=False, comment="of the feed: a feed begun anew has the next number"),
+    Column("sex", String, nullable=False, comment='F or M, "" where not known'),
+    Column("age", String, nullable=False, comment='age band, "" where not known'),
     Index("results_of_a_stream", "stream", "seq"),
     comment="Every patient result, once.",
 )
@@ -131,7 +134,9 @@ alarms = Table(
     Column("expected_unreliable", Float),
     Column("last_control", BigInteger, comment="last control event scheduled before the alarm"),
     Column("plan_sha256", String, nullable=False, comment="the plan in force"),
+    Column("shadow", Boolean, nullable=False, comment="kept off the bench: the watch ran on trial"),
     UniqueConstraint("stream", "monitor", "seq"),
+    Index("alarms_of_a_result", "seq"),
     comment="One row for each episode, when it opens.",
 )
 
@@ -141,6 +146,8 @@ feeds = Table(
     Column("id", _Number, primary_key=True, autoincrement=False),
     Column("source", String, nullable=False, unique=True),
     Column("position", String, nullable=False, comment="where to go on; kept in the same transaction as the results"),
+    Column("delivered", BigInteger, nullable=False, comment="pieces that it brought since the store began"),
+    Column("removed", BigInteger, nullable=False, comment="of its results and pieces set aside: removed as too old"),
     comment="Every feed, and how far it was read.",
 )
 
@@ -173,5 +180,90 @@ audit = Table(
     Column("plan_before", String, nullable=False, comment='SHA-256 of the plan until then, "" if none'),
     Column("plan_after", String, nullable=False),
     Column("detail", String, nullable=False),
+    Column("hash", String, nullable=False, comment="SHA-256 over the entry and the hash of the one before"),
     comment="What was done to the watch, never changed afterwards.",
+)
+
+audit_head = Table(
+    "audit_head",
+    metadata,
+    Column("entries", _Number, primary_key=True, autoincrement=False, comment="how many the audit has"),
+    Column("hash", String, nullable=False, comment="of the last one"),
+    comment="One row: where the audit ends, so that a cut end is noticed.",
+)
+
+messages = Table(
+    "messages",
+    metadata,
+    Column("sender", String, primary_key=True, comment="sending application and facility"),
+    Column("control_id", String, primary_key=True),
+    Column("sha256", LargeBinary, primary_key=True, comment="of the content"),
+    Column("code", String, nullable=False, comment="the acknowledgement that was answered"),
+    Column("at", BigInteger, nullable=False, comment="when it came, by the clock of the computer"),
+    Column("seq", BigInteger, nullable=False, comment="the last result that was kept before its answer"),
+    comment="Every HL7 message answered: sent again, it gets the same answer and counts once.",
+    sqlite_with_rowid=False,
+)
+
+annotations = Table(
+    "annotations",
+    metadata,
+    Column("id", _Number, primary_key=True, autoincrement=False),
+    Column("stream", ForeignKey("streams.id"), nullable=False),
+    Column("specimen", String, nullable=False),
+    Column("time", BigInteger, nullable=False, comment="when the result was measured, as the feed says"),
+    Column("status", String, nullable=False, comment="C corrected, D deleted, W wrong"),
+    Column("value", String, nullable=False, comment='as corrected, as written; "" where none is given'),
+    Column("at", BigInteger, nullable=False, comment="when the word came, by the clock of the computer"),
+    Column("feed", ForeignKey("feeds.id"), nullable=False),
+    Column("place", BigInteger, nullable=False),
+    Index("annotations_of_a_specimen", "specimen"),
+    comment="Later words on results. The result as first reported stays as it is.",
+)
+
+events = Table(
+    "events",
+    metadata,
+    Column("id", _Number, primary_key=True, autoincrement=False),
+    Column("time", BigInteger, nullable=False, comment="when it happened"),
+    Column(
+        "kind",
+        String,
+        nullable=False,
+        comment="calibration, reagent lot, maintenance, control accepted or rejected, note",
+    ),
+    Column("analyte", String, nullable=False, comment='"" for every analyte of the analyser'),
+    Column("analyser", String, nullable=False, comment='"" for every analyser'),
+    Column("detail", String, nullable=False, comment="lot, control material and value, or words of a person"),
+    Column("source", String, nullable=False, comment="the feed that brought it, or who entered it"),
+    Column("at", BigInteger, nullable=False, comment="when it came, by the clock of the computer"),
+    Column("seq", BigInteger, nullable=False, comment="the last result that came before it"),
+    Column("effect", String, nullable=False, comment='what the watch did because of it, "" if nothing'),
+    comment="Laboratory events.",
+)
+
+notices = Table(
+    "notices",
+    metadata,
+    Column("id", _Number, primary_key=True, autoincrement=False),
+    Column("time", BigInteger, nullable=False, comment="when it began"),
+    Column("kind", String, nullable=False, comment="quiet, clock skew and the like"),
+    Column("analyte", String, nullable=False, comment='"" for every analyte of the analyser'),
+    Column("analyser", String, nullable=False, comment='"" for every analyser'),
+    Column("text", String, nullable=False),
+    Column("closed_at", BigInteger, comment="when it ended; empty while it lasts"),
+    UniqueConstraint("time", "kind", "analyte", "analyser"),
+    comment="What the watch tells beside alarms.",
+)
+
+heartbeat = Table(
+    "heartbeat",
+    metadata,
+    Column("started", BigInteger, primary_key=True, autoincrement=False, comment="when the watch began"),
+    Column("at", BigInteger, nullable=False, comment="when it was last alive, by the clock of the computer"),
+    Column("pid", Integer, nullable=False),
+    Column("last_result", BigInteger, comment="time of the newest result kept"),
+    Column("last_arrival", BigInteger, comment="when the last result came, by the clock of the computer"),
+    Column("state", String, nullable=False, comment="of feeds and streams, as JSON"),
+    comment="One row: the sign of life of the watch.",
 )

@@ -55,6 +55,8 @@ class Alarm:
         UTC microseconds of the last control event scheduled before the alarm; None where the schedule goes by counts or is not given.
     plan_sha256
         Which plan was in force.
+    shadow
+        Whether it is kept off the bench: the watch ran on trial.
     """
 
     stream: StreamName
@@ -70,3 +72,4 @@ class Alarm:
     estimate: OnsetEstimate | None
     last_control: int | None = None
     plan_sha256: str = ""
+    shadow: bool = False

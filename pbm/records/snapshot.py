@@ -5,6 +5,9 @@ from dataclasses import dataclass, field
 from typing import NamedTuple
 
 from pbm.records.alarm import Alarm
+from pbm.records.event import LabEvent
+from pbm.records.message import Annotation, Answered
+from pbm.records.notice import Notice
 from pbm.records.reading import SetAside
 from pbm.records.result import Result
 from pbm.records.stream import StreamName
@@ -99,12 +102,27 @@ class Batch:
         Reason -> number of pieces set aside for it, among them those that are only counted.
     positions
         Feed -> where it goes on.
+    delivered
+        Feed -> pieces that it brought: results, copies of results and what was set aside.
+    messages
+        Answered once the batch is kept.
+    annotations
+        Later words on results.
+    events
+        Each with the number of results in `results` that came before it.
+    notices
+        That begin or, with `closed_at`, end.
     """
 
-    results: Sequence[KeptResult]
-    alarms: Sequence[tuple[int, Alarm]]
-    snapshots: Sequence[Snapshot]
-    newest: Mapping[StreamName, Sequence[int]]
-    set_aside: Sequence[tuple[str, SetAside]]
-    tallies: Mapping[str, int]
-    positions: Mapping[str, str]
+    results: Sequence[KeptResult] = ()
+    alarms: Sequence[tuple[int, Alarm]] = ()
+    snapshots: Sequence[Snapshot] = ()
+    newest: Mapping[StreamName, Sequence[int]] = field(default_factory=dict)
+    set_aside: Sequence[tuple[str, SetAside]] = ()
+    tallies: Mapping[str, int] = field(default_factory=dict)
+    positions: Mapping[str, str] = field(default_factory=dict)
+    delivered: Mapping[str, int] = field(default_factory=dict)
+    messages: Sequence[Answered] = ()
+    annotations: Sequence[Annotation] = ()
+    events: Sequence[tuple[int, LabEvent]] = ()
+    notices: Sequence[Notice] = ()

@@ -149,6 +149,7 @@ class _Work:
         self._set_aside: list[tuple[str, SetAside]] = []
         self._tallies: Counter[str] = Counter()
         self._positions: dict[str, str] = {}
+        self._delivered: Counter[str] = Counter()
         self._moved: dict[StreamName, LiveStream] = {}
 
     def take(self, chunk: Chunk) -> None:
@@ -160,6 +161,7 @@ class _Work:
                 self._tallies[item.reason] += 1
                 self._set_aside.append((chunk.source, item))
         self._positions[chunk.source] = chunk.position
+        self._delivered[chunk.source] += len(chunk.items)
 
     def _take_result(self, result: Result, edition: Edition) -> None:
         reason = self._copy_of_another(result, edition)
@@ -210,6 +212,7 @@ class _Work:
             set_aside=self._set_aside,
             tallies=dict(self._tallies),
             positions=self._positions,
+            delivered=dict(self._delivered),
         )
 
 

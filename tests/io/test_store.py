@@ -10,6 +10,7 @@ from contextlib import contextmanager
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
+from unittest.mock import ANY
 
 import pytest
 from sqlalchemy import event, text
@@ -19,9 +20,12 @@ from pbm.errors import FeedError, InputError
 from pbm.io.store import Store
 from pbm.io.store_reader import StoreReader
 from pbm.records.alarm import Alarm, OnsetEstimate
+from pbm.records.event import LabEvent
+from pbm.records.message import Annotation, Answered, MessageKey
+from pbm.records.notice import Heartbeat, Notice
 from pbm.records.reading import SetAside
 from pbm.records.snapshot import LATE, REPEAT, RERUN, Batch, Edition, KeptResult, Snapshot
-from tests.live_laboratory import SODIUM, SODIUM_2, results
+from tests.live_laboratory import MINUTE, SODIUM, SODIUM_2, START, results
 
 FEED = Edition("live.csv", 1)
 ESTIMATE = OnsetEstimate(5, 1, 9, 41, 2.1, 0.525, 3.2)
@@ -56,7 +60,11 @@ def begun(path: Path) -> Store:
 def tables(path: Path) -> dict[str, list[tuple[Any, ...]]]:
     with sqlite3.connect(path) as connection:
         names = [row[0] for row in connection.execute("select name from sqlite_master where type = 'table'")]
-        return {name: connection.execute(f"select * from {name} order by rowid").fetchall() for name in names}
+        return {name: sorted(connection.execute(f"select * from {name}"), key=_by_columns) for name in names}
+
+
+def _by_columns(row: tuple[Any, ...]) -> list[Any]:
+    return [(value is None, value) for value in row]
 
 
 def test_what_was_kept_is_there_when_the_store_is_opened_again(path: Path) -> None:
@@ -109,7 +117,7 @@ def test_tallies_add_up(path: Path) -> None:
     with begun(path) as store:
         store.keep(batch())
         store.keep(batch(results=[], alarms=[], tallies={"not a number": 2, "duplicate": 5}))
-    assert tables(path)["tallies"] == [("not a number", 3), ("duplicate", 5)]
+    assert tables(path)["tallies"] == [("duplicate", 5), ("not a number", 3)]
 
 
 def test_earlier_runs_of_a_specimen_are_found_in_every_stream(path: Path) -> None:
@@ -178,8 +186,8 @@ def test_a_plan_that_takes_over_puts_its_monitors_in_place_and_leaves_a_mark(pat
         )
         assert [one.monitor for one in store.snapshots()] == [0, 1]
     assert tables(path)["audit"] == [
-        (1, 1, "watch begun", "", "sha", ""),
-        (2, 99, "watch begun", "sha", "other", "1 monitors go on"),
+        (1, 1, "watch begun", "", "sha", "", ANY),
+        (2, 99, "watch begun", "sha", "other", "1 monitors go on", ANY),
     ]
 
 
@@ -194,6 +202,69 @@ def test_an_alarm_is_open_until_its_episode_closes(path: Path) -> None:
 
 def results_kept(first: int) -> list[KeptResult]:
     return [KeptResult(one, "", FEED) for one in results([140, 141], first=first)]
+
+
+# What comes beside results
+
+KEY = MessageKey("LIS^TERN BAY", "000123", "ab" * 32)
+EVENT = LabEvent(START, "reagent lot", "sodium", "line-1", "R-2031-07", "events.ndjson", START + 5, "level re-learned")
+NOTICE = Notice(START, "quiet", "sodium", "line-2", "line-2 quiet for 45 min, 20 expected")
+ANNOTATION = Annotation(SODIUM, "31-1", START, "C", "141", START + 9, "live.csv", 7)
+BEAT = Heartbeat(START, START + 1, 42, None, None)
+
+
+def test_a_message_is_answered_once_the_batch_that_holds_it_is_kept(path: Path) -> None:
+    other = KEY._replace(sha256="cd" * 32)
+    with begun(path) as store:
+        assert store.answered([KEY]) == {}
+        store.keep(batch(messages=[Answered(KEY, "AA", 5)]))
+        assert store.answered([KEY, other, KEY._replace(sender="another")]) == {KEY: "AA"}
+        with pytest.raises(FeedError):
+            store.keep(batch(results=results_kept(90), alarms=[], set_aside=[], messages=[Answered(KEY, "AA", 6)]))
+        assert len(store.recent_results(SODIUM, 99)) == 3
+    assert tables(path)["messages"] == [("LIS^TERN BAY", "000123", bytes.fromhex("ab" * 32), "AA", 5, 3)]
+
+
+def test_annotations_events_and_notices_come_back_as_they_were(path: Path) -> None:
+    with begun(path) as store:
+        store.keep(batch(annotations=[ANNOTATION], events=[(1, EVENT)], notices=[NOTICE]))
+        assert store.events() == [EVENT] and store.open_notices() == [NOTICE]
+    reader = StoreReader(path)
+    assert (reader.annotations(), reader.events(), reader.notices()) == ([ANNOTATION], [EVENT], [NOTICE])
+    assert [row[8] for row in tables(path)["events"]] == [1], "after the first result of the batch"
+    assert reader.recent_results(SODIUM, 1)[0].value == 142, "a later word never rewrites a result"
+
+
+def test_a_notice_ends_under_the_name_with_which_it_began(path: Path) -> None:
+    ended = replace(NOTICE, text="line-2 was quiet for 50 min", closed_at=START + MINUTE)
+    with begun(path) as store:
+        store.keep(Batch(notices=[NOTICE]))
+        store.keep(Batch(notices=[ended, replace(NOTICE, analyser="line-1")]))
+        assert store.open_notices() == [replace(NOTICE, analyser="line-1")]
+    assert StoreReader(path).notices() == [ended, replace(NOTICE, analyser="line-1")]
+
+
+def test_a_laboratory_event_leaves_a_mark_in_the_audit(path: Path) -> None:
+    with begun(path) as store:
+        store.keep(Batch(events=[(0, EVENT)]))
+    told = "sodium@line-1; R-2031-07; events.ndjson; level re-learned"
+    assert tables(path)["audit"][-1][1:-1] == (START + 5, "reagent lot", "sha", "sha", told)
+
+
+def test_the_last_sign_of_life_is_kept(path: Path) -> None:
+    with begun(path) as store:
+        assert StoreReader(path).heartbeat() is None
+        store.beat(BEAT)
+        store.beat(replace(BEAT, at=START + 9, last_result=START, last_arrival=START + 2, state='{"armed": 3}'))
+    assert StoreReader(path).heartbeat() == Heartbeat(START, START + 9, 42, START, START + 2, '{"armed": 3}')
+    assert len(tables(path)["heartbeat"]) == 1
+
+
+def test_what_a_feed_delivered_adds_up(path: Path) -> None:
+    with begun(path) as store:
+        store.keep(batch(delivered={"live.csv": 4}))
+        store.keep(Batch(positions={"live.csv": "30", "-": ""}, delivered={"live.csv": 2}))
+    assert [row[1:] for row in tables(path)["feeds"]] == [("live.csv", "30", 6, 0), ("-", "", 0, 0)]
 
 
 # One writer, many readers
@@ -253,7 +324,7 @@ def test_a_store_of_another_layout_is_refused(path: Path) -> None:
     with sqlite3.connect(path) as connection:
         connection.execute("update schema set version = 99")
     for opened in (Store, StoreReader):
-        with pytest.raises(FeedError, match="has layout 99, and this version of pbm writes layout 1"):
+        with pytest.raises(FeedError, match="has layout 99, and this version of pbm knows layouts up to 2"):
             opened(path)
 
 
