@@ -111,7 +111,7 @@ class StreamMonitor(base.DriftDetector):
         """The monitor that a plan describes."""
         return cls(from_plan.tracker(plan), from_plan.limits(plan), from_plan.preparation(plan))
 
-    def update(self, x: float, censor: int = 0, ward: str = "", hour: int = 0) -> None:
+    def update(self, x: float, censor: int = 0, ward: str = "", hour: int = 0, sex: str = "", age: str = "") -> None:
         """Take a result.
 
         Parameters
@@ -120,10 +120,11 @@ class StreamMonitor(base.DriftDetector):
             The result in its own unit; not a number moves nothing.
         censor
             -1 for "<x", +1 for ">x".
-        ward, hour
-            Where it came from and in which local hour of the week; matter with a patient-mix baseline only.
+        ward, hour, sex, age
+            Where it came from, in which local hour of the week, and the patient's sex ("F", "M") and age band; matter with a patient-mix
+            baseline only.
         """
-        z = x if self.preparation is None else self.preparation.one(x, censor, ward, hour)
+        z = x if self.preparation is None else self.preparation.one(x, censor, ward, hour, sex, age)
         self._drift_detected = False
         if math.isnan(z):
             return

@@ -14,7 +14,6 @@ from pbm.methods.jit import Floats
 from pbm.records.laboratory import Lab
 from pbm.records.plan import (
     Admit,
-    BaselinePlan,
     ControlLimits,
     HistoryMark,
     Made,
@@ -25,6 +24,7 @@ from pbm.records.plan import (
 )
 from pbm.records.result import Result
 from pbm.records.stream import StreamName
+from pbm.stages.to_plan import baseline_in_plan
 
 SODIUM = StreamName("sodium", "line-1")
 SODIUM_2 = StreamName("sodium", "line-2")
@@ -137,7 +137,7 @@ def monitor_plan(tracker: Tracker, preparation: Preparation, limits: Limits, spr
         ),
         transform=preparation.transform,
         transform_lambda=preparation.transform_lambda if preparation.transform == "boxcox" else None,
-        baseline=None if baseline is None else BaselinePlan(wards=dict(baseline.wards), hours=baseline.hours),
+        baseline=None if baseline is None else baseline_in_plan(baseline),
         statistic=tracker.statistic,
         centre=limits.centre,
         limits=ControlLimits(low=limits.low, high=limits.high),

@@ -1,9 +1,9 @@
-"""Patient mix: the expected value by ward and hour of the week, which is taken away before the statistic.
+"""Patient mix: the expected value by ward, hour of the week, sex and age band, which is taken away before the statistic.
 
-    z = y - b(ward, hour of week),   b = effect of the ward + effect of the hour
+    z = y - b,   b = effect of the ward + of the hour + of the sex + of the age band
 
-The additive effects are fitted by least squares, and shrunk towards 0 where a ward or an
-hour is thin: an effect with sampling variance s^2 / n among effects with variance t^2 is multiplied by t^2 / (t^2 + s^2 / n). A ward
+Sex and age take part where the history gives them. The additive effects are fitted by least squares, and each is shrunk towards 0 where
+its group is thin: an effect with sampling variance s^2 / n among effects with variance t^2 is multiplied by t^2 / (t^2 + s^2 / n). A group
 never seen in training has effect 0. The table is part of the plan and is never refitted silently.
 
 Source of the adjustment: "Regression-adjusted real-time quality control", Clinical Chemistry 2021;67:1342-50 (from memory). Source of the
@@ -21,10 +21,44 @@ HOURS = 168
 SIGNIFICANT = 4
 RIDGE = 1e-9
 
+Effects = tuple[tuple[str, float], ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Groups:
+    """A property of the patients that takes a few values, such as their sex.
+
+    Attributes
+    ----------
+    names
+        The values that it takes; "" where it is not known.
+    code : (n,)
+        Index into `names` of each result.
+    """
+
+    names: tuple[str, ...]
+    code: Integers
+
+    @classmethod
+    def of(cls, texts: Any) -> "Groups":
+        """From the value of each result, shape (n,)."""
+        listed = texts.tolist()
+        number = {name: code for code, name in enumerate(sorted(set(listed)))}
+        return cls(tuple(number), np.fromiter(map(number.__getitem__, listed), np.int64, len(listed)))
+
+    def rows(self, chosen: Any) -> "Groups":
+        """Some of the results (slice, mask or index)."""
+        return Groups(self.names, self.code[chosen])
+
+    def effect(self, effects: Effects) -> Floats:
+        """The effect of each result's group, shape (n,)."""
+        known = dict(effects)
+        return np.array([known.get(name, 0.0) for name in self.names])[self.code]
+
 
 @dataclass(frozen=True, slots=True)
 class Mix:
-    """Who each result came from.
+    """Who each result came from, and when.
 
     Attributes
     ----------
@@ -32,39 +66,60 @@ class Mix:
         Names of the wards.
     ward, hour : (n,)
         Index into `wards`, and local hour of the week (0 = Monday 00:00 to 01:00), of each result.
+    sex, age
+        Sex and age band of each result's patient; None where nobody's is known.
     """
 
     wards: tuple[str, ...]
     ward: Integers
     hour: Integers
+    sex: Groups | None = None
+    age: Groups | None = None
 
     @classmethod
-    def of(cls, wards: Any, hour: Integers) -> "Mix":
-        """From the ward names of the results, shape (n,), and their hours of the week."""
-        names, codes = np.unique(wards.astype(str), return_inverse=True)
-        return cls(tuple(names.tolist()), codes.astype(np.int64), hour)
+    def of(cls, wards: Any, hour: Integers, sex: Any = None, age: Any = None) -> "Mix":
+        """From the ward names of the results, shape (n,), their hours of the week, and their patients' sex and age band, "" if unknown."""
+        ward = Groups.of(wards)
+        return cls(ward.names, ward.code, hour, _known(sex), _known(age))
 
     def rows(self, chosen: Any) -> "Mix":
         """Some of the results (slice, mask or index)."""
-        return Mix(self.wards, self.ward[chosen], self.hour[chosen])
+        sex, age = (None if one is None else one.rows(chosen) for one in (self.sex, self.age))
+        return Mix(self.wards, self.ward[chosen], self.hour[chosen], sex, age)
+
+
+def _known(texts: Any) -> Groups | None:
+    groups = None if texts is None else Groups.of(texts)
+    return groups if groups and any(groups.names) else None
 
 
 @dataclass(frozen=True, slots=True)
 class Baseline:
-    """Effects of wards and of the 168 hours of the week, on the transformed scale."""
+    """Effects of wards, of the 168 hours of the week, of the sexes and of the age bands, on the transformed scale.
 
-    wards: tuple[tuple[str, float], ...]
+    `sexes` and `ages` are empty where they take no part.
+    """
+
+    wards: Effects
     hours: tuple[float, ...]
+    sexes: Effects = ()
+    ages: Effects = ()
 
-    def one(self, ward: str, hour: int) -> float:
-        """b for one result; the same sum of the same two numbers as in `all`."""
-        return dict(self.wards).get(ward, 0.0) + self.hours[hour]
+    def one(self, ward: str, hour: int, sex: str = "", age: str = "") -> float:
+        """b for one result; the same sum of the same numbers in the same order as in `all`."""
+        expected = dict(self.wards).get(ward, 0.0) + self.hours[hour]
+        if self.sexes:
+            expected += dict(self.sexes).get(sex, 0.0)
+        if self.ages:
+            expected += dict(self.ages).get(age, 0.0)
+        return expected
 
     def all(self, mix: Mix) -> Floats:
         """b for each result, shape (n,)."""
-        effects = dict(self.wards)
-        ward = np.array([effects.get(name, 0.0) for name in mix.wards])
-        expected: Floats = ward[mix.ward] + np.array(self.hours)[mix.hour]
+        expected: Floats = Groups(mix.wards, mix.ward).effect(self.wards) + np.array(self.hours)[mix.hour]
+        for effects, groups in ((self.sexes, mix.sex), (self.ages, mix.age)):
+            if effects:
+                expected += dict(effects).get("", 0.0) if groups is None else groups.effect(effects)
         return expected
 
 
@@ -80,33 +135,58 @@ def fit_baseline(y: Floats, mix: Mix) -> Baseline:
     """
     taken = ~np.isnan(y)
     y, mix = y[taken], mix.rows(taken)
-    level = y.mean()
-    count, total = _by_ward_and_hour(np.ones_like(y), mix), _by_ward_and_hour(y - level, mix)
-    ward, hour = _effects(total, count)
-    ward, hour = _centred(ward, count.sum(axis=1)), _centred(hour, count.sum(axis=0))
-    noise = float((y - level - ward[mix.ward] - hour[mix.hour]).var())
-    wards = _shrunk(ward, count.sum(axis=1), noise)
-    hours = _shrunk(hour, count.sum(axis=0), noise)
-    return Baseline(tuple(zip(mix.wards, wards, strict=True)), tuple(hours))
+    people = [groups for groups in (mix.sex, mix.age) if groups]
+    codes = [mix.ward, mix.hour, *(groups.code for groups in people)]
+    effects = shrunk_effects(y, codes, [len(mix.wards), HOURS, *(len(groups.names) for groups in people)])
+    wards, hours, *of_people = effects
+    named = iter(of_people)
+    sexes, ages = (
+        () if groups is None else tuple(zip(groups.names, next(named), strict=True)) for groups in (mix.sex, mix.age)
+    )
+    return Baseline(tuple(zip(mix.wards, wards, strict=True)), tuple(hours), sexes, ages)
 
 
-def _by_ward_and_hour(amount: Floats, mix: Mix) -> Floats:
-    """Sum of an amount over the results of each ward and hour, shape (wards, 168)."""
-    cells = np.bincount(mix.ward * HOURS + mix.hour, weights=amount, minlength=len(mix.wards) * HOURS)
-    return cells.astype(np.float64).reshape(-1, HOURS)
+def shrunk_effects(y: Floats, codes: list[Integers], sizes: list[int]) -> list[list[float]]:
+    """Additive effects of several groupings of the same results, each effect shrunk by itself.
 
-
-def _effects(total: Floats, count: Floats) -> tuple[Floats, Floats]:
-    """Additive effects of wards and hours by least squares, from the total and count of each ward and hour.
-
-    The normal equations are singular: a constant may move between wards and hours, and more where wards never share an hour. A ridge too
-    small to be seen in the effects picks their smallest solution.
+    Parameters
+    ----------
+    y : (n,)
+        The results.
+    codes : each (n,)
+        Group of each result in each grouping.
+    sizes
+        How many groups each grouping has.
     """
-    wards, hours = count.sum(axis=1), count.sum(axis=0)
-    normal = np.block([[np.diag(wards), count], [count.T, np.diag(hours)]])
-    normal += RIDGE * count.sum() * np.eye(len(normal))
-    found = np.linalg.solve(normal, np.concatenate([total.sum(axis=1), total.sum(axis=0)])).astype(np.float64)
-    return found[: len(wards)], found[len(wards) :]
+    level = y.mean()
+    counts = [np.bincount(code, minlength=size).astype(np.float64) for code, size in zip(codes, sizes, strict=True)]
+    fitted = _least_squares(y - level, codes, counts)
+    centred = [_centred(effect, count) for effect, count in zip(fitted, counts, strict=True)]
+    left = y - level - sum(effect[code] for effect, code in zip(centred, codes, strict=True))
+    return [_shrunk(effect, count, float(left.var())) for effect, count in zip(centred, counts, strict=True)]
+
+
+def _least_squares(y: Floats, codes: list[Integers], counts: list[Floats]) -> list[Floats]:
+    """Effects of each grouping by least squares.
+
+    The normal equations are singular: a constant may move between groupings, and more where wards never share an hour. A ridge too small
+    to be seen in the effects picks their smallest solution.
+    """
+    sizes = [len(count) for count in counts]
+    rows = [
+        [np.diag(counts[i]) if i == j else _together(codes[i], codes[j], sizes[i], sizes[j]) for j in range(len(sizes))]
+        for i in range(len(sizes))
+    ]
+    normal = np.block(rows)
+    normal += RIDGE * len(y) * np.eye(len(normal))
+    totals = [np.bincount(code, weights=y, minlength=size) for code, size in zip(codes, sizes, strict=True)]
+    found = np.linalg.solve(normal, np.concatenate(totals)).astype(np.float64)
+    return np.split(found, np.cumsum(sizes)[:-1])
+
+
+def _together(one: Integers, other: Integers, rows: int, columns: int) -> Floats:
+    """Number of results in each pair of groups of two groupings, shape (rows, columns)."""
+    return np.bincount(one * columns + other, minlength=rows * columns).astype(np.float64).reshape(rows, columns)
 
 
 def _centred(effects: Floats, counts: Floats) -> Floats:

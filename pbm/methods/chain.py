@@ -51,7 +51,7 @@ class Preparation:
         if math.isnan(admitted):
             return math.nan
         y = TRANSFORMS[self.transform].forward(admitted, (self.transform_lambda,))
-        return y if self.baseline is None else y - self.baseline.one(ward, hour)
+        return y if self.baseline is None else y - self.baseline.one(ward, hour, sex, age)
 
     def transformed(self, xs: Floats, censor: Floats) -> Floats:
         """Admitted and transformed results before the baseline, shape (n,); not a number where dropped."""

@@ -29,7 +29,7 @@ class Stretch:
     value, censor : (n,)
         As reported.
     mix
-        Wards and hours of the week.
+        Wards, hours of the week, sex and age.
     error, reporting
         The analyte's error model and how it is reported.
     chance

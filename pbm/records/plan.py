@@ -2,11 +2,13 @@
 
 import math
 from datetime import date, datetime
+from functools import partial
 from typing import Annotated, Literal
 
-from pydantic import Field, model_validator
+from pydantic import AfterValidator, Field, model_validator
 
 from pbm.records.quantities import Finite, NotNegative, Positive, Written
+from pbm.records.sex_and_age import AGE_BANDS, SEXES
 
 StatisticName = Literal["mean", "median", "ewma", "sd", "ewsd", "share", "cusum", "batch"]
 Verdict = Literal["useful", "marginal", "not useful here"]
@@ -150,6 +152,13 @@ class HeldOut(Written):
     kept: bool
 
 
+def _only(known: tuple[str, ...], effects: dict[str, float]) -> dict[str, float]:
+    for name in effects:
+        if name not in ("", *known):
+            raise ValueError(f'"{name}" is none of {", ".join(known)}, nor "" for not known')
+    return effects
+
+
 class BaselinePlan(Written):
     """Patient mix: what is taken from each result before the statistic, on the transformed scale.
 
@@ -159,10 +168,17 @@ class BaselinePlan(Written):
         Effect of each ward; a ward that is not listed has effect 0.
     hours
         Effect of each of the 168 hours of the week, from Monday 00:00.
+    sexes
+        Effect of `F`, `M` and, where the sex is not known, `""`; absent where sex takes no part.
+    ages
+        Effect of each age band, and of `""` where the age is not known; absent where age takes no part. The bands are `under 1`, `1-11`,
+        `12-17`, `18-39`, `40-59`, `60-74`, `75 and over`.
     """
 
     wards: dict[str, Finite]
     hours: Annotated[tuple[Finite, ...], Field(min_length=168, max_length=168)]
+    sexes: Annotated[dict[str, Finite], AfterValidator(partial(_only, SEXES))] | None = None
+    ages: Annotated[dict[str, Finite], AfterValidator(partial(_only, AGE_BANDS))] | None = None
 
 
 class Outside(Written):

@@ -5,11 +5,9 @@ menstruation and by old age; they are fixed, so that a plan means the same from 
 """
 
 import re
-from typing import Literal, get_args
 
-Sex = Literal["F", "M"]
-AgeBand = Literal["under 1", "1-11", "12-17", "18-39", "40-59", "60-74", "75 and over"]
-AGE_BANDS: tuple[str, ...] = get_args(AgeBand)
+SEXES = ("F", "M")
+AGE_BANDS = ("under 1", "1-11", "12-17", "18-39", "40-59", "60-74", "75 and over")
 _FROM_YEAR = (0, 1, 12, 18, 40, 60, 75)
 OLDEST = 130  # years; beyond are placeholders such as 999
 

@@ -11,7 +11,7 @@ from pbm.methods.onset import InControl
 from pbm.methods.statistics import STATISTICS
 from pbm.methods.unreliable import ErrorModel
 from pbm.records.laboratory import Analyte, FaultList
-from pbm.records.plan import MonitorPlan, Outside
+from pbm.records.plan import BaselinePlan, MonitorPlan, Outside
 
 
 def error_model(analyte: Analyte) -> ErrorModel:
@@ -51,8 +51,13 @@ def preparation(monitor: MonitorPlan) -> Preparation:
         monitor.admit.mode == "winsorize",
         monitor.transform,
         1.0 if monitor.transform_lambda is None else monitor.transform_lambda,
-        None if monitor.baseline is None else Baseline(tuple(monitor.baseline.wards.items()), monitor.baseline.hours),
+        None if monitor.baseline is None else _baseline(monitor.baseline),
     )
+
+
+def _baseline(plan: BaselinePlan) -> Baseline:
+    sexes, ages = (tuple((effects or {}).items()) for effects in (plan.sexes, plan.ages))
+    return Baseline(tuple(plan.wards.items()), plan.hours, sexes, ages)
 
 
 def tracker(monitor: MonitorPlan) -> Tracker:

@@ -85,7 +85,7 @@ class StreamMonitor:
 
     def _prepared(self, result: Result) -> float:
         hour = hour_of_week(result.time, self._zone) if self._preparation.baseline else 0
-        return self._preparation.one(result.value, result.censor, result.ward, hour)
+        return self._preparation.one(result.value, result.censor, result.ward, hour, result.sex, result.age)
 
     def _alarm(self, result: Result) -> Alarm:
         limit = self._limits.high if self.episode > 0 else self._limits.low

@@ -59,7 +59,7 @@ class Surroundings:
             history.time,
             history.value,
             history.censor.astype(float),
-            Mix.of(history.ward, hours_of_week(history.time, self.lab.laboratory.zone)),
+            Mix.of(history.ward, hours_of_week(history.time, self.lab.laboratory.zone), history.sex, history.age),
             error_model(self.analyte),
             reporting(self.analyte),
             Chance.draw(len(history), self.random("chance")),

@@ -5,6 +5,7 @@ from typing import Any
 
 import numpy as np
 
+from pbm.methods.baseline import Baseline
 from pbm.methods.chain import Preparation, Tracker
 from pbm.methods.jit import Floats
 from pbm.methods.limits import CalibratedLimits
@@ -23,12 +24,22 @@ def chain_in_plan(preparation: Preparation, tracker: Tracker, z: Floats) -> dict
         ),
         "transform": preparation.transform,
         "transform_lambda": preparation.transform_lambda if preparation.transform == "boxcox" else None,
-        "baseline": None if baseline is None else BaselinePlan(wards=dict(baseline.wards), hours=baseline.hours),
+        "baseline": None if baseline is None else baseline_in_plan(baseline),
         "statistic": tracker.statistic,
         **planned_parameters(tracker, float(np.nanmean(z))),
         "centre": tracker.centre,
         "spread": float(np.nanstd(z)),
     }
+
+
+def baseline_in_plan(baseline: Baseline) -> BaselinePlan:
+    """The table of effects; sexes and ages are left out where they take no part."""
+    return BaselinePlan(
+        wards=dict(baseline.wards),
+        hours=baseline.hours,
+        sexes=dict(baseline.sexes) or None,
+        ages=dict(baseline.ages) or None,
+    )
 
 
 def limits_in_plan(found: CalibratedLimits) -> dict[str, Any]:

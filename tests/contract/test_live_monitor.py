@@ -3,7 +3,7 @@ and patient mix, and down to the texts of the alarms.
 """
 
 import itertools
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from zoneinfo import ZoneInfo
 
 import numpy as np
@@ -18,6 +18,7 @@ from pbm.methods.statistics import STATISTICS
 from pbm.records.alarm import Alarm
 from pbm.records.plan import MonitorPlan
 from pbm.records.result import Result
+from pbm.records.sex_and_age import AGE_BANDS
 from pbm.stages.alarm_line import alarm_line
 from pbm.stages.monitor import StreamMonitor
 from tests.contract.statistics_table import same_bits
@@ -26,6 +27,7 @@ from tests.live_laboratory import MINUTE, SODIUM, START, laboratory, monitor_pla
 LAB = laboratory()
 WARDS = ("ED", "ICU", "GP")
 MIX = Baseline((("ED", 0.01), ("ICU", -0.02)), tuple(0.0005 * (hour % 24) for hour in range(168)))
+PEOPLE = replace(MIX, sexes=(("F", -0.005), ("M", 0.004), ("", 0.001)), ages=(("under 1", -0.03), ("60-74", 0.007)))
 PREPARATIONS = {
     "as it is": Preparation(),
     "truncated": Preparation(low=133.0, high=148.0),
@@ -34,6 +36,7 @@ PREPARATIONS = {
     "Box-Cox, winsorized": Preparation(high=147.0, winsorize=True, transform="boxcox", transform_lambda=0.3),
     "patient mix": Preparation(low=130.0, high=151.0, baseline=MIX),
     "patient mix on the logarithm": Preparation(transform="log", baseline=MIX),
+    "patient mix with sex and age": Preparation(low=130.0, transform="log", baseline=PEOPLE),
 }
 PARAMETERS = {"window": 12, "weight": 0.15, "reference": 0.3}
 CASES = list(itertools.product(STATISTICS, PREPARATIONS))
@@ -58,13 +61,14 @@ def case(statistic: str, preparation: Preparation, count: int, seed: int) -> Cas
     censor = random.choice([0, 0, 0, 0, 0, 0, 0, -1, 1], count)
     x = np.where(censor < 0, 132.0, np.where(censor > 0, 150.0, x))
     ward = random.choice(WARDS, count)
+    sex, age = random.choice(["F", "M", ""], count), random.choice([*AGE_BANDS, ""], count)
     time = START + np.cumsum(random.integers(1, 9 * MINUTE, count))
     results = [
-        Result(int(t), SODIUM, float(v), int(c), f"31-{n}", str(w))
-        for n, (t, v, c, w) in enumerate(zip(time, x, censor, ward, strict=True))
+        Result(int(t), SODIUM, float(v), int(c), f"31-{n}", str(w), sex=str(s), age=str(a))
+        for n, (t, v, c, w, s, a) in enumerate(zip(time, x, censor, ward, sex, age, strict=True))
     ]
     zone: ZoneInfo = LAB.laboratory.zone
-    z = preparation.all(x, censor.astype(float), Mix.of(ward, hours_of_week(time, zone)))
+    z = preparation.all(x, censor.astype(float), Mix.of(ward, hours_of_week(time, zone), sex, age))
     tracker = centred(statistic, z)
     path = tracker.path(z)
     judged = path[~np.isnan(path)]

@@ -12,6 +12,7 @@ from pbm.errors import PlanError
 from pbm.io.plan_file import plan_fingerprint, read_plan, write_plan
 from pbm.records.plan import (
     Admit,
+    BaselinePlan,
     ControlLimits,
     HeldOut,
     HistoryMark,
@@ -51,6 +52,28 @@ MADE = Made(
 SODIUM = StreamPlan(unit="mmol/L", verdict="useful", reason="", results_per_day=812.5, monitors=(MONITOR,))
 THIN = StreamPlan(unit="mU/L", verdict="not useful here", reason='fewer than 5 a day: "too thin"', results_per_day=3)
 PLAN = Plan(made=MADE, streams={"sodium@line-2": SODIUM, 'tsh@"odd" \\ name': THIN})
+
+
+def test_a_baseline_with_sex_and_age_comes_back_equal_and_one_without_has_no_such_keys(tmp_path: Path) -> None:
+    plain = BaselinePlan(wards={"ED": 0.1, "": -0.2}, hours=(0.0,) * 168)
+    whole = plain.model_copy(update={"sexes": {"F": -0.1, "": 0.01}, "ages": {"75 and over": 1 / 3}})
+    for baseline, there in ((plain, False), (whole, True)):
+        stream = SODIUM.model_copy(update={"monitors": (MONITOR.model_copy(update={"baseline": baseline}),)})
+        plan = Plan(made=MADE, streams={"sodium@line-2": stream})
+        write_plan(tmp_path / "plan.toml", plan)
+        assert read_plan(tmp_path / "plan.toml") == plan
+        text = (tmp_path / "plan.toml").read_text()
+        assert ("sexes" in text, "ages" in text) == (there, there)
+
+
+def test_an_effect_of_a_band_that_is_none_is_told(tmp_path: Path) -> None:
+    baseline = BaselinePlan(wards={}, hours=(0.0,) * 168, ages={"60-74": 0.2})
+    stream = SODIUM.model_copy(update={"monitors": (MONITOR.model_copy(update={"baseline": baseline}),)})
+    path = tmp_path / "plan.toml"
+    write_plan(path, Plan(made=MADE, streams={"sodium@line-2": stream}))
+    path.write_text(path.read_text().replace("60-74", "60-75"))
+    with pytest.raises(PlanError, match=r'ages: found .*"60-75" is none of under 1, 1-11'):
+        read_plan(path)
 
 
 def test_a_plan_comes_back_equal(tmp_path: Path) -> None:

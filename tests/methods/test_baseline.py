@@ -1,4 +1,4 @@
-"""Patient mix: effects found again, thin cells shrunk, one result as a history, wards that are new or never meet."""
+"""Patient mix: effects found again, thin groups shrunk, one result as a history, wards that are new or never meet, sex and age."""
 
 import numpy as np
 import pytest
@@ -6,7 +6,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from statsmodels.regression.linear_model import OLS
 
-from pbm.methods.baseline import HOURS, Baseline, Mix, fit_baseline
+from pbm.methods.baseline import HOURS, Baseline, Effects, Groups, Mix, fit_baseline
 from pbm.methods.jit import Floats
 from pbm.methods.seeds import child
 
@@ -53,6 +53,55 @@ def test_unbalanced_wards_and_hours_are_told_apart_as_a_regression_tells_them() 
     np.testing.assert_allclose(ours - ours.mean(), fitted.resid, atol=0.1)
 
 
+def test_ward_hour_sex_and_age_are_told_apart_as_a_regression_tells_them() -> None:
+    """Women are many in one ward and the old in another, so that no effect can be read off the means of its own groups."""
+    random = child(11, "people")
+    count = 60_000
+    ward, hour = random.integers(0, 3, count), random.integers(0, 24, count)
+    sex = (random.random(count) < np.array([0.2, 0.5, 0.9])[ward]).astype(np.int64)
+    age = np.minimum(random.binomial(4, np.array([0.3, 0.5, 0.7])[ward]), 3)
+    y = 2.0 * ward - 3.0 * sex + 1.5 * age + np.sin(hour / 4) + random.normal(0, 2, count)
+    mix = Mix(("a", "b", "c"), ward, hour, Groups(("F", "M"), sex), Groups(("child", "young", "adult", "old"), age))
+    found = fit_baseline(y, mix)
+    design = np.column_stack(
+        [*[ward == w for w in (1, 2)], sex, *[age == a for a in (1, 2, 3)], *[hour == h for h in range(24)]]
+    ).astype(float)
+    fitted = OLS(y, design).fit()
+    wards, sexes, ages = (np.array([effect for _, effect in one]) for one in (found.wards, found.sexes, found.ages))
+    np.testing.assert_allclose(wards[1:] - wards[0], fitted.params[:2], rtol=1e-3)
+    np.testing.assert_allclose(sexes[1] - sexes[0], fitted.params[2], rtol=1e-3)
+    np.testing.assert_allclose(ages[1:] - ages[0], fitted.params[3:6], rtol=1e-3)
+    ours = y - found.all(mix)
+    np.testing.assert_allclose(ours - ours.mean(), fitted.resid, atol=0.05)
+
+
+def test_the_effect_of_a_thin_age_band_is_shrunk() -> None:
+    random = child(12, "thin band")
+    age = np.concatenate([np.repeat([0, 1], 5000), np.full(4, 2)])
+    y = np.array([3.0, -3.0, 3.0])[age] + random.normal(0, 3, len(age))
+    none = np.zeros(len(age), dtype=np.int64)
+    found = fit_baseline(y, Mix(("",), none, none, age=Groups(("18-39", "75 and over", "under 1"), age)))
+    raw = y[age == 2].mean() - y.mean()
+    assert dict(found.ages)["under 1"] == pytest.approx(raw / (1 + 9 / 9 / 4), rel=0.1), "t^2 / (t^2 + s^2 / n), n = 4"
+    assert dict(found.ages)["18-39"] == pytest.approx(3.0, abs=0.2)
+
+
+def test_sex_and_age_take_part_where_somebody_has_them_only() -> None:
+    y, hour, ward = child(13, "absent").normal(0, 1, 300), np.zeros(300, dtype=np.int64), np.full(300, "ED", object)
+    nobody, women = np.full(300, "", object), np.where(np.arange(300) < 100, "F", "")
+    found = fit_baseline(y, Mix.of(ward, hour, nobody, nobody))
+    assert (found.sexes, found.ages) == ((), ())
+    assert found == fit_baseline(y, Mix.of(ward, hour))
+    known = fit_baseline(y, Mix.of(ward, hour, women, nobody))
+    assert (dict(known.sexes).keys(), known.ages) == ({"", "F"}, ())
+
+
+def test_an_effect_of_sex_is_that_of_the_unknown_where_a_history_gives_no_sex() -> None:
+    baseline = Baseline((), (0.0,) * HOURS, (("", 0.5), ("F", 2.0)), (("1-11", 3.0),))
+    ward, hour = np.full(2, "", object), np.zeros(2, dtype=np.int64)
+    assert baseline.all(Mix.of(ward, hour)).tolist() == [0.5, 0.5] == [baseline.one("", 0)] * 2
+
+
 def test_an_effect_seen_seldom_is_shrunk_and_one_seen_often_is_kept() -> None:
     random = child(4, "thin")
     ward = np.concatenate([np.repeat(np.arange(10), 2000), np.repeat(np.arange(10, 20), 4)])
@@ -74,14 +123,27 @@ def test_where_there_is_no_effect_nearly_nothing_is_taken_away() -> None:
 
 
 @given(
-    st.lists(st.tuples(st.sampled_from([*WARDS, "new ward", ""]), st.integers(0, HOURS - 1)), min_size=1, max_size=50)
+    st.lists(
+        st.tuples(
+            st.sampled_from([*WARDS, "new ward", ""]),
+            st.integers(0, HOURS - 1),
+            st.sampled_from(["F", "M", ""]),
+            st.sampled_from(["under 1", "18-39", "60-74", "75 and over", ""]),
+        ),
+        min_size=1,
+        max_size=50,
+    ),
+    st.sampled_from([(), (("", 0.1), ("F", -0.7), ("M", 0.3))]),
+    st.sampled_from([(), (("18-39", 1 / 3), ("60-74", -0.7), ("75 and over", 0.9))]),
 )
-def test_one_result_gets_the_number_that_a_history_gets_to_the_last_bit(results: list[tuple[str, int]]) -> None:
+def test_one_result_gets_the_number_that_a_history_gets_to_the_last_bit(
+    results: list[tuple[str, int, str, str]], sexes: Effects, ages: Effects
+) -> None:
     wards = tuple((name, float(value)) for name, value in zip(WARDS, effects("bits", 4, 1.0), strict=True))
-    baseline = Baseline(wards, tuple(effects("bits of hours", HOURS, 0.3).tolist()))
-    names, hours = zip(*results, strict=True)
-    whole = baseline.all(Mix.of(np.array(names, dtype=object), np.array(hours)))
-    assert whole.tolist() == [baseline.one(name, hour) for name, hour in results]
+    baseline = Baseline(wards, tuple(effects("bits of hours", HOURS, 0.3).tolist()), sexes, ages)
+    ward, hour, sex, age = (np.array(column) for column in zip(*results, strict=True))
+    whole = baseline.all(Mix.of(ward, hour, sex, age))
+    assert whole.tolist() == [baseline.one(*result) for result in results]
 
 
 def test_a_ward_never_seen_in_training_has_the_hours_effect_alone() -> None:

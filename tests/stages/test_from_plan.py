@@ -7,6 +7,7 @@ import pytest
 from pydantic import ValidationError
 
 from pbm.methods.alarm import Limits
+from pbm.methods.baseline import Baseline, Effects
 from pbm.methods.chain import Preparation
 from pbm.methods.faults import Fault, Reporting
 from pbm.methods.onset import InControl
@@ -14,6 +15,7 @@ from pbm.methods.unreliable import ErrorModel
 from pbm.records.laboratory import Controls, FaultList
 from pbm.records.plan import MonitorPlan
 from pbm.stages.from_plan import error_model, faults_of, in_control, limits, preparation, reporting
+from pbm.stages.to_plan import baseline_in_plan
 from tests.stages.offline import laboratory
 
 
@@ -76,6 +78,12 @@ def test_a_monitor_is_prepared_and_limited_as_its_plan_says() -> None:
     assert limits(given) == Limits(136.0, 142.0, 139.0, 0.4)
     assert in_control(given) == InControl(138.0, 3.0, 1.5, 0.8, 0.2)
     assert in_control(monitor()).centre == 139.0
+
+
+@pytest.mark.parametrize("people", [((), ()), ((("", 0.1), ("F", -0.2)), (("60-74", 0.3),))])
+def test_a_baseline_comes_back_from_its_plan(people: tuple[Effects, Effects]) -> None:
+    baseline = Baseline((("ED", 0.5), ("", -0.1)), (0.25,) * 168, *people)
+    assert preparation(monitor(baseline=baseline_in_plan(baseline))).baseline == baseline
 
 
 def test_a_limit_that_is_left_out_never_alarms() -> None:
