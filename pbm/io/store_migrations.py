@@ -91,6 +91,8 @@ ALTER TABLE audit RENAME TO audit_1;
 CREATE TABLE audit (
     id INTEGER NOT NULL, at BIGINT NOT NULL, what VARCHAR NOT NULL, plan_before VARCHAR NOT NULL, plan_after VARCHAR NOT NULL,
     detail VARCHAR NOT NULL, hash VARCHAR NOT NULL, PRIMARY KEY (id));
+CREATE TRIGGER audit_is_never_changed BEFORE UPDATE ON audit BEGIN SELECT RAISE(ABORT, 'the audit is never changed'); END;
+CREATE TRIGGER audit_is_never_cut BEFORE DELETE ON audit BEGIN SELECT RAISE(ABORT, 'the audit is never changed'); END;
 CREATE TABLE audit_head (entries INTEGER NOT NULL, hash VARCHAR NOT NULL, PRIMARY KEY (entries));
 CREATE TABLE messages (
     sender VARCHAR NOT NULL, control_id VARCHAR NOT NULL, sha256 BLOB NOT NULL, code VARCHAR NOT NULL, at BIGINT NOT NULL,

@@ -1,6 +1,7 @@
 """Tables of the store that `pbm watch` writes. Times are UTC microseconds since 1970; the reference page is made from these comments."""
 
 from sqlalchemy import (
+    DDL,
     BigInteger,
     Boolean,
     Column,
@@ -14,6 +15,7 @@ from sqlalchemy import (
     String,
     Table,
     UniqueConstraint,
+    event,
     literal_column,
 )
 
@@ -183,6 +185,18 @@ audit = Table(
     Column("hash", String, nullable=False, comment="SHA-256 over the entry and the hash of the one before"),
     comment="What was done to the watch, never changed afterwards.",
 )
+
+_NEVER_CHANGED = (
+    "CREATE TRIGGER audit_is_never_changed BEFORE UPDATE ON audit BEGIN SELECT RAISE(ABORT, 'the audit is never changed'); END",
+    "CREATE TRIGGER audit_is_never_cut BEFORE DELETE ON audit BEGIN SELECT RAISE(ABORT, 'the audit is never changed'); END",
+)
+_NEVER_CHANGED_IN_POSTGRESQL = (
+    "CREATE FUNCTION audit_stays() RETURNS trigger LANGUAGE plpgsql AS $$ BEGIN RAISE EXCEPTION 'the audit is never changed'; END $$",
+    "CREATE TRIGGER audit_is_never_changed BEFORE UPDATE OR DELETE OR TRUNCATE ON audit EXECUTE FUNCTION audit_stays()",
+)
+for _dialect, _statements in (("sqlite", _NEVER_CHANGED), ("postgresql", _NEVER_CHANGED_IN_POSTGRESQL)):
+    for _statement in _statements:
+        event.listen(audit, "after_create", DDL(_statement).execute_if(dialect=_dialect))
 
 audit_head = Table(
     "audit_head",

@@ -294,6 +294,13 @@ def test_readers_see_what_is_kept_while_the_writer_goes_on(path: Path) -> None:
     assert StoreReader(path).alarms() == [ALARM]
 
 
+@pytest.mark.parametrize("change", ["delete from audit", "update audit set detail = 'another'"])
+def test_an_entry_of_the_audit_is_neither_changed_nor_deleted(path: Path, change: str) -> None:
+    begun(path).close()
+    with sqlite3.connect(path) as connection, pytest.raises(sqlite3.IntegrityError, match="the audit is never changed"):
+        connection.execute(change)
+
+
 @pytest.mark.parametrize("name", ["two words", "50 % of #1", "why?", "Übersee", "a&b=c"])
 def test_a_folder_may_have_any_name(tmp_path: Path, name: str) -> None:
     path = tmp_path / name / "watch.sqlite"
