@@ -2,8 +2,9 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import NamedTuple
+from typing import Literal, NamedTuple
 
+from pbm.records.message import Annotation, MessageKey
 from pbm.records.result import Result
 
 
@@ -53,6 +54,63 @@ class SetAside(NamedTuple):
     stream: str = ""
 
 
+class Remark(NamedTuple):
+    """Something about a piece of a feed that a person should know, and that left nothing out.
+
+    Attributes
+    ----------
+    place
+        Where it stands in the feed.
+    text
+        One of a few texts that can be counted.
+    found
+        What was found there, short.
+    """
+
+    place: int
+    text: str
+    found: str = ""
+
+
+class Correction(NamedTuple):
+    """A later word of a sender on a result that it reported before.
+
+    Attributes
+    ----------
+    status
+        "C" corrected, "D" deleted, "W" wrong, such as another patient's.
+    at
+        When it came, by the clock of the computer, UTC microseconds.
+    reading
+        The result as it is written now; it may have no value.
+    """
+
+    status: Literal["C", "D", "W"]
+    at: int
+    reading: Reading
+
+
+class Message(NamedTuple):
+    """A message of a feed that is answered.
+
+    Attributes
+    ----------
+    key
+        Which message.
+    items
+        How many of the chunk's items are its own.
+    at
+        When it came, by the clock of the computer, UTC microseconds.
+    """
+
+    key: MessageKey
+    items: int
+    at: int
+
+
+Item = Reading | Result | SetAside | Remark | Correction | Annotation
+
+
 @dataclass(frozen=True, slots=True)
 class Chunk:
     """Some consecutive pieces of one feed.
@@ -65,9 +123,12 @@ class Chunk:
         What was read, in the order of the feed.
     position
         Where to go on after these items, as the feed understands it.
+    messages
+        Those that brought the items, in the same order, where the feed consists of messages; items that no message accounts for come last.
     """
 
     source: str
     edition: int
-    items: Sequence[Reading | Result | SetAside]
+    items: Sequence[Item]
     position: str
+    messages: Sequence[Message] = ()
