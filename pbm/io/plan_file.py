@@ -35,6 +35,8 @@ def write_plan(path: Path, plan: Plan) -> None:
     for name, stream in plan.streams.items():
         streams.add(name, _stream(stream))
     document.add("streams", streams)
+    if plan.analysers:
+        document.add("analysers", _filled(tomlkit.table(), {k: v.model_dump() for k, v in plan.analysers.items()}))
     replace_file(path, tomlkit.dumps(document).encode("utf-8"))
 
 

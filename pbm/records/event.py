@@ -3,7 +3,16 @@
 from dataclasses import dataclass
 from typing import Literal, get_args
 
-EventKind = Literal["calibration", "reagent lot", "maintenance", "control accepted", "control rejected", "note"]
+EventKind = Literal[
+    "calibration",
+    "reagent lot",
+    "maintenance",
+    "control accepted",
+    "control rejected",
+    "restart",
+    "keep the old centre",
+    "note",
+]
 EVENT_KINDS: tuple[EventKind, ...] = get_args(EventKind)
 
 

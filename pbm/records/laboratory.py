@@ -22,6 +22,7 @@ from pbm.records.quantities import (
     Signs,
     Written,
 )
+from pbm.records.watching import EventRules, Quiet
 
 
 def _known_zone(name: str) -> str:
@@ -121,7 +122,7 @@ class Extract(Written):
 
 
 class Alarms(Written):
-    """How many false alarms the bench can bear, and how long it takes to stop reporting after one.
+    """How many false alarms the bench can bear, how long it takes to stop reporting after one, and where alarms go.
 
     Attributes
     ----------
@@ -131,11 +132,20 @@ class Alarms(Written):
         False alarms of the whole laboratory together, shared among the streams where they save most.
     response_lag
         What is still reported between an alarm and the stop.
+    file
+        Each alarm is added to this file as a line of JSON; without a leading "/" it is in the laboratory's folder.
+    command
+        Run for each alarm: the program and its arguments, as they are and without a shell; the alarm comes as JSON on its standard input.
+    command_seconds
+        After so many seconds the command is ended.
     """
 
     budget: AlarmRate = Rate(1, 30)
     fleet_budget: AlarmRate | None = None
     response_lag: ResponseLag = Lag(results=10)
+    file: Annotated[str, Field(min_length=1)] | None = None
+    command: Annotated[tuple[str, ...], Field(min_length=1)] | None = None
+    command_seconds: Annotated[float, Field(gt=0, le=600)] = 10.0
 
 
 class ControlLevel(Written):
@@ -356,11 +366,15 @@ class Lab(Written):
     extract
         The columns of its extracts.
     alarms
-        The alarm budget.
+        The alarm budget, and where alarms go.
     controls
         The control schedule of every analyte that does not say otherwise.
     faults
         How often errors come.
+    quiet
+        When silence is told.
+    events
+        What laboratory events do.
     analytes
         The analytes, by a short name of the laboratory's choice.
     """
@@ -370,6 +384,8 @@ class Lab(Written):
     alarms: Alarms = Alarms()
     controls: Controls = Controls()
     faults: FaultRate = FaultRate()
+    quiet: Quiet = Quiet()
+    events: EventRules = EventRules()
     analytes: dict[str, Analyte] = Field(min_length=1)
 
     @model_validator(mode="after")

@@ -8,6 +8,7 @@ from typing import Annotated, Literal
 from pydantic import AfterValidator, Field, model_validator
 
 from pbm.records.quantities import Finite, NotNegative, Positive, Written
+from pbm.records.rhythm import Rhythm
 from pbm.records.sex_and_age import AGE_BANDS, SEXES
 
 StatisticName = Literal["mean", "median", "ewma", "sd", "ewsd", "share", "cusum", "batch"]
@@ -336,6 +337,8 @@ class StreamPlan(Written):
         The days from here on did not train the monitor.
     monitors
         The monitors.
+    rhythm
+        When its results come, and how long a silence raises a notice; without it a silence of the stream is not noticed.
     """
 
     unit: str
@@ -344,6 +347,7 @@ class StreamPlan(Written):
     results_per_day: NotNegative
     held_out_from: date | None = None
     monitors: tuple[MonitorPlan, ...] = ()
+    rhythm: Rhythm | None = None
 
 
 class Plan(Written):
@@ -355,7 +359,10 @@ class Plan(Written):
         Where the plan came from.
     streams
         The streams, by name such as sodium@line-2.
+    analysers
+        The rhythm of each analyser, all its streams together.
     """
 
     made: Made
     streams: dict[str, StreamPlan]
+    analysers: dict[str, Rhythm] = Field(default_factory=dict)
