@@ -20,7 +20,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from pbm.methods.jit import Floats, Integers, kernel
+from pbm.methods.jit import Floats, Integers
 
 
 @dataclass(frozen=True, slots=True)
@@ -45,6 +45,11 @@ class Onsets:
     def length(self) -> Integers:
         """Results followed after each onset, shape (r,)."""
         return self.end - self.at
+
+    @property
+    def counts(self) -> Integers:
+        """Affected results before each event, shape (r, k)."""
+        return self.edges - self.at[:, None]
 
     @property
     def to_first_event(self) -> Integers:
@@ -74,37 +79,6 @@ def follow(at: Integers, end: Integers, event_positions: Integers, events: int) 
     return Onsets(at, end, np.minimum(known[np.minimum(place, len(event_positions))], end[:, None]))
 
 
-@kernel
-def _accumulate(
-    at: Integers,
-    end: Integers,
-    edges: Integers,
-    p: Floats,
-    by_onset: bool,
-    passed: Floats,
-    reported: Floats,
-    final: Floats,
-) -> None:
-    for r in range(len(at)):
-        bracket = 0
-        inside = 0.0
-        reported[r, 0] = 0.0
-        final[r, 0] = 0.0
-        for j in range(end[r] - at[r]):
-            closed = 0.0
-            while bracket < edges.shape[1] and edges[r, bracket] <= at[r] + j and edges[r, bracket] < end[r]:
-                closed += passed[r, bracket + 1] * inside
-                inside = 0.0
-                bracket += 1
-            chance = p[r, j] if by_onset else p[0, at[r] + j]
-            inside += chance
-            reported[r, j + 1] = reported[r, j] + passed[r, bracket] * chance
-            final[r, j + 1] = final[r, j] + closed
-        for j in range(end[r] - at[r] + 1, reported.shape[1]):
-            reported[r, j] = reported[r, j - 1]
-            final[r, j] = final[r, j - 1]
-
-
 @dataclass(frozen=True, slots=True)
 class Exposure:
     """Expected unreliable results of each onset as a function of when the monitor's alarm comes.
@@ -112,25 +86,40 @@ class Exposure:
     Attributes
     ----------
     onsets
-        The onsets.
-    passed : (k + 1,) or (r, k + 1)
-        S_0 ... S_k, the same for all onsets or of each.
-    reported, final : (r, h + 1)
-        N_u if reporting stops after j affected results, and N_uf if the alarm comes with the j-th.
+        The onsets, r of them, with k events each.
+    passed : (r, k + 1)
+        S_0 ... S_k of each onset.
+    sums : (m,)
+        Running sums of the chances of the results read.
+    starts : (r,)
+        Which of them each onset reads first.
+    reported_before, final_before : (r, k + 1)
+        N_u and N_uf of the brackets before each bracket.
     """
 
     onsets: Onsets
     passed: Floats
-    reported: Floats
-    final: Floats
+    sums: Floats
+    starts: Integers
+    reported_before: Floats
+    final_before: Floats
 
     def unreliable(self, stop: Integers) -> Floats:
         """N_u of each onset, shape (r,), if reporting stops after `stop` affected results."""
-        return self.reported[np.arange(len(stop)), stop]
+        each, bracket = np.arange(len(stop)), self._brackets_before(stop)
+        begin = np.column_stack([np.zeros_like(stop), self.onsets.counts])[each, bracket]
+        inside = self.sums[self.starts + stop] - self.sums[self.starts + np.minimum(begin, stop)]
+        found: Floats = self.reported_before[each, bracket] + self.passed[each, bracket] * inside
+        return found
 
     def unreliable_final(self, alarm: Integers) -> Floats:
         """N_uf of each onset, shape (r,), if the alarm comes with affected result `alarm`."""
-        return self.final[np.arange(len(alarm)), alarm]
+        return self.final_before[np.arange(len(alarm)), self._brackets_before(alarm)]
+
+    def _brackets_before(self, result: Integers) -> Integers:
+        """Brackets that were closed before an affected result, shape (r,)."""
+        counted: Integers = (self.onsets.counts < result[:, None]).sum(axis=1)
+        return counted
 
 
 def exposure(onsets: Onsets, p: Floats, passed: Floats) -> Exposure:
@@ -145,9 +134,14 @@ def exposure(onsets: Onsets, p: Floats, passed: Floats) -> Exposure:
     passed : (k + 1,) or (r, k + 1)
         Chance that the first i events all pass: the same for all onsets, or of each (a drift).
     """
-    width = int(onsets.length.max()) + 1 if len(onsets.at) else 1
-    reported = np.empty((len(onsets.at), width))
-    final = np.empty_like(reported)
-    each = np.array(np.broadcast_to(passed, (len(onsets.at), passed.shape[-1])))
-    _accumulate(onsets.at, onsets.end, onsets.edges, np.atleast_2d(p), p.ndim == 2, each, reported, final)
-    return Exposure(onsets, passed, reported, final)
+    sums = _so_far(np.atleast_2d(p))
+    starts = np.arange(len(sums)) * sums.shape[1] if p.ndim == 2 else onsets.at
+    sums = sums.ravel()
+    each = np.broadcast_to(passed, (len(onsets.at), passed.shape[-1]))
+    inside = np.diff(sums[starts[:, None] + np.column_stack([np.zeros_like(onsets.at), onsets.counts])], axis=1)
+    return Exposure(onsets, each, sums, starts, _so_far(each[:, :-1] * inside), _so_far(each[:, 1:] * inside))
+
+
+def _so_far(amounts: Floats) -> Floats:
+    """What has come together before each column, shape (r, k + 1)."""
+    return np.column_stack([np.zeros(len(amounts)), np.cumsum(amounts, axis=1)])

@@ -32,4 +32,4 @@ def onsets(of: Stretch, at: list[int], length: int = 400, every: int = 120) -> O
     """Onsets followed for so many results, with a control event after every so many results of the stretch."""
     places = np.array(at, dtype=np.int64)
     end = np.minimum(places + length, len(of))
-    return follow(places, end, np.arange(every, len(of), every), math.ceil(length / every) + 1)
+    return follow(places, end, np.arange(every, len(of), every), math.ceil(length / every))

@@ -17,6 +17,7 @@ from pbm.methods.limits import quick_limits
 from pbm.methods.search import Runner, best_of, limited, scores, simplest_near_best
 from pbm.methods.trials import alarm_and_stop, trial
 from tests import naive
+from tests.methods import exposed
 from tests.methods.stretches import onsets, stretch
 from tests.methods.test_trials import stepped
 
@@ -64,7 +65,7 @@ def test_scores_are_the_weighted_unreliable_results_of_each_fault_at_each_onset(
         for (fault, weight), (tried, _) in zip(faults, trials, strict=True):
             alarm = stepped(history, fault, at, end, runner.tracker)
             last = min(alarm + 5, end - at) if alarm else end - at
-            chances = np.diff(trial(history, fault, followed, np.ones(4)).exposure.reported[r]).tolist()
+            chances = np.diff(exposed.reported(trial(history, fault, followed, np.ones(4)).exposure)[r]).tolist()
             events = list(range(120, 1500, 120))
             reported, _ = naive.unreliable_results(at, last, end, events, chances, passed)
             expected += weight * reported / 4.5

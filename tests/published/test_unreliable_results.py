@@ -17,6 +17,7 @@ from pbm.methods.detection import by_schedule
 from pbm.methods.expected import Exposure, Onsets, exposure, follow
 from pbm.methods.trials import alarm_and_stop
 from pbm.methods.unreliable import chance_unreliable
+from tests.methods import exposed
 from tests.published.record import published
 
 SOURCE = "Clin Chem 1997;43:2149-54 and 2008;54:2049-54 (model READ-ABS, closed form REPRO)"
@@ -63,8 +64,8 @@ def test_schedule_alone_gives_the_closed_forms(
 def with_alarm_chances(found: Exposure, survival: np.ndarray) -> tuple[float, float]:
     """E(N) and E(N final) averaged over the alarm time T, P(T > n) = survival[n]."""
     chance = -np.diff(survival)
-    reported = found.reported[:, 1 : len(chance) + 1] @ chance
-    final = found.final[:, 1 : len(chance) + 1] @ chance
+    reported = exposed.reported(found)[:, 1 : len(chance) + 1] @ chance
+    final = exposed.final(found)[:, 1 : len(chance) + 1] @ chance
     return float(reported.mean()), float(final.mean())
 
 
@@ -115,7 +116,7 @@ def test_controls_and_an_ewma_monitor_together_give_the_published_gain() -> None
     runs = 400_000
     times = ewma_alarm_times(runs)
     place = np.random.default_rng(5).integers(0, 100, runs)
-    reported, final = found.reported[place, times], found.final[place, times]
+    reported, final = exposed.reported(found)[place, times], exposed.final(found)[place, times]
     for name, expected, each in (("E(N)", 27.196, reported), ("E(N final)", 3.783, final)):
         tolerance = 3.5 * float(each.std()) / np.sqrt(runs)
         published(f"{name}, M=100, 1-3s N=2 with EWMA .05", SOURCE, expected, float(each.mean()), tolerance)
