@@ -8,12 +8,14 @@ import numpy.typing as npt
 from synthetic_streams.analytes import CHEMISTRY, PANELS, Analyte
 from synthetic_streams.clock import HOUR, SECOND, Hours
 from synthetic_streams.patients import Patients, admit, occupants
-from synthetic_streams.physiology import COLUMN, PHYSIOLOGY, centre_and_spread, correlated
+from synthetic_streams.physiology import COLUMN, PHYSIOLOGY, centre_and_spread, correlated, sex_and_age_effect
 from synthetic_streams.seeds import child
 from synthetic_streams.wards import WARDS, Ward
 
 Ints = npt.NDArray[np.int64]
 Floats = npt.NDArray[np.float64]
+
+MEAN_AGES = np.array([ward.age[0] for ward in WARDS])
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,7 +65,8 @@ class Draws:
         centre, spread = centre_and_spread(analyte.key, self.ward[rows])
         share, shift, factor = physiology.condition
         ill = people.condition[who, column] < share
-        centre = centre + np.where(ill, shift, 0.0) + physiology.male_minus_female * (people.male[who] - 0.5)
+        older = people.age[who] - MEAN_AGES[self.ward[rows]]
+        centre = centre + np.where(ill, shift, 0.0) + sex_and_age_effect(analyte.key, people.male[who], older)
         steady, passing = np.sqrt(1 - physiology.within), np.sqrt(physiology.within)
         distance = steady * people.set_point[who, column] + passing * self.fluctuation[rows, column]
         value = centre + spread * np.where(ill, factor, 1.0) * people.severity[who] * distance

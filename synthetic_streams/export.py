@@ -41,14 +41,13 @@ def clean_lines(rows: Rows, hours: Hours) -> list[str]:
 def ndjson_lines(rows: Rows) -> list[str]:
     """One JSON object a row: time in UTC, the analyte's key, the value as printed."""
     keys = [analyte.key for analyte, _ in STREAMS]
-    names = ("line", "result", "unit", "specimen", "location")
+    names = ("line", "result", "unit", "specimen", "location", "sex", "age")
     columns = [rows.cells[name].tolist() for name in names]
     lines = []
-    for time, stream, line, value, unit, specimen, ward in zip(
-        utc_text(rows.time), rows.stream.tolist(), *columns, strict=True
-    ):
+    for time, stream, line, value, unit, *who in zip(utc_text(rows.time), rows.stream.tolist(), *columns, strict=True):
         given = {"time": time, "analyte": keys[stream], "analyser": line, "value": value, "unit": unit}
-        lines.append(json.dumps(given | {"specimen": specimen, "ward": ward}, separators=(",", ":")))
+        given |= dict(zip(("specimen", "ward", "sex", "age"), who, strict=True))
+        lines.append(json.dumps(given, separators=(",", ":")))
     return lines
 
 

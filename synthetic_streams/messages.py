@@ -1,15 +1,17 @@
 """The live feed as HL7 v2.5.1 messages ORU^R01 (MSH PID PV1 OBR OBX SPM), one for each specimen on each analyser; invented people only.
 
-OBX-18 names the analyser and OBX-19 the time of analysis; OBX-14 is the time of collection. '<5' is sent as SN `<^5`.
+PID-7 is an invented date of birth, PID-8 the sex. OBX-18 names the analyser and OBX-19 the time of analysis; OBX-14 is the time of
+collection. '<5' is sent as SN `<^5`.
 """
 
 from collections.abc import Iterator, Sequence
-from datetime import datetime
+from datetime import date, datetime
 
 from synthetic_streams.analytes import CHEMISTRY, HAEMATOLOGY, IMMUNOASSAY, Analyte
 from synthetic_streams.clock import SECOND, ZONE
 from synthetic_streams.draws import Draws
 from synthetic_streams.laboratory import StreamSample
+from synthetic_streams.patients import born
 from synthetic_streams.wards import WARDS
 
 MOST_OBX = 10
@@ -43,7 +45,8 @@ def messages(draws: Draws, samples: Sequence[StreamSample]) -> list[bytes]:
             groups.setdefault((draw, sample.line), []).append((time, sample.analyte, sample.line, text))
     parts = [(draw, part) for (draw, _), found in groups.items() for part in _parts(found)]
     parts.sort(key=lambda part: (part[1][-1][0], part[0], part[1][0][2]))
-    return [_message(draws, draw, found, number) for number, (draw, found) in enumerate(parts, start=1)]
+    last_day = datetime.fromtimestamp(int(draws.time[-1]) / SECOND, ZONE).date()
+    return [_message(draws, draw, found, number, last_day) for number, (draw, found) in enumerate(parts, start=1)]
 
 
 def _parts(found: list[_Found]) -> Iterator[list[_Found]]:
@@ -52,16 +55,17 @@ def _parts(found: list[_Found]) -> Iterator[list[_Found]]:
         yield found[first : first + MOST_OBX]
 
 
-def _message(draws: Draws, draw: int, found: list[_Found], number: int) -> bytes:
+def _message(draws: Draws, draw: int, found: list[_Found], number: int, last_day: date) -> bytes:
     line = found[0][2]
     collected = _stamp(int(draws.time[draw]) - COLLECTED_BEFORE)
     who, ward = int(draws.patient[draw]), WARDS[int(draws.ward[draw])]
     people, specimen = draws.patients, draws.specimen[draw]
     sent = _stamp(found[-1][0] + SENT_AFTER)
     battery, material = _ORDERS[line]
+    birth, sex = born(int(people.age[who]), who, last_day), "M" if people.male[who] else "F"
     segments = [
         f"MSH|^~\\&|TBDL-LIS|TBDL|PBM|TBDL|{sent}||ORU^R01^ORU_R01|{number:08d}|P|2.5.1||||||UNICODE UTF-8",
-        f"PID|1||{people.token[who]}^^^TBDL^PI||^^^^^^S|||{'M' if people.male[who] else 'F'}",
+        f"PID|1||{people.token[who]}^^^TBDL^PI||^^^^^^S||{birth:%Y%m%d}|{sex}",
         f"PV1|1|{ward.patient_class}|{ward.code}",
         f"OBR|1||{specimen}-{line}^TBDL|{battery}|||{collected}|||||||||||||||{sent}|||F",
         *(_obx(place, result, collected) for place, result in enumerate(found, start=1)),

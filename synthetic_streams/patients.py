@@ -1,6 +1,7 @@
 """Who is measured: the places of each ward, the patients who hold them from day to day, and each patient's own set points."""
 
 from dataclasses import dataclass
+from datetime import date, timedelta
 
 import numpy as np
 import numpy.typing as npt
@@ -12,6 +13,7 @@ from synthetic_streams.wards import WARDS, Ward
 Ints = npt.NDArray[np.int64]
 Floats = npt.NDArray[np.float64]
 
+_BIRTHDAYS_APART = 37
 _ODD = np.uint64(0x9E3779B97F4A7C15)
 
 
@@ -75,6 +77,15 @@ def admit(ward: Ints, seed: int) -> Patients:
         condition=rng.random((count, len(KEYS))),
         token=_tokens(count, rng),
     )
+
+
+def born(age: int, number: int, day: date) -> date:
+    """When the patient of that number was born, who has that age in whole years on a day and in the two weeks before it.
+
+    The next birthday lies 1 to 350 days ahead, as the number says.
+    """
+    birthday = day + timedelta(1 + number * _BIRTHDAYS_APART % 350)
+    return date(birthday.year - age - 1, birthday.month, min(birthday.day, 28) if birthday.month == 2 else birthday.day)
 
 
 def _tokens(count: int, rng: np.random.Generator) -> npt.NDArray[np.object_]:

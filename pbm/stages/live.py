@@ -11,6 +11,7 @@
 from bisect import insort
 from collections import Counter
 from collections.abc import Callable, Iterable, Mapping, Sequence
+from dataclasses import replace
 
 from pbm.errors import PlanError
 from pbm.records.alarm import Alarm
@@ -35,6 +36,12 @@ class LiveStream:
     def __init__(self, monitors: Sequence[StreamMonitor]) -> None:
         self.monitors = tuple(monitors)
         self.newest: list[int] = []
+        baselines = [one.plan.baseline for one in monitors if one.plan.baseline]
+        self._needs_sex, self._needs_age = (any(one.sexes for one in baselines), any(one.ages for one in baselines))
+
+    def kept(self, result: Result) -> Result:
+        """A result as it may be kept: sex and age only where a monitor that starts again must know them."""
+        return replace(result, sex=result.sex if self._needs_sex else "", age=result.age if self._needs_age else "")
 
     def is_late(self, time: int) -> bool:
         """Whether a result comes too late for the monitors."""
@@ -173,7 +180,8 @@ class _Work:
             reason = self._repeat(result)
         if not reason and stream is not None and stream.is_late(result.time):
             reason = LATE
-        self._results.append(KeptResult(result, reason, edition))
+        kept = stream.kept(result) if stream is not None else replace(result, sex="", age="")
+        self._results.append(KeptResult(kept, reason, edition))
         if reason:
             self._tallies[reason] += 1
         elif stream is not None:

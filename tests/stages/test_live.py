@@ -9,6 +9,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from pbm.errors import PlanError
+from pbm.records.plan import BaselinePlan
 from pbm.records.reading import Chunk, SetAside
 from pbm.records.result import Result
 from pbm.records.snapshot import Batch, Earlier
@@ -65,6 +66,21 @@ def test_a_further_run_of_a_specimen_within_a_day_is_kept_but_no_monitor_takes_i
     ]
     assert batch.tallies == {"rerun of the specimen": 1, "duplicate": 1}
     assert batch.snapshots[0].taken == 2
+
+
+def test_sex_and_age_are_kept_only_where_a_monitor_adjusts_for_them() -> None:
+    one = replace(results([140])[0], sex="F", age="60-74")
+    hours = (0.0,) * 168
+    for effects, kept in (
+        ({}, ("", "")),
+        ({"sexes": {"F": 0.1}}, ("F", "")),
+        ({"ages": {"60-74": 0.1}}, ("", "60-74")),
+        ({"sexes": {"F": 0.1}, "ages": {"60-74": 0.1}}, ("F", "60-74")),
+    ):
+        adjusted = ewma().model_copy(update={"baseline": BaselinePlan(wards={}, hours=hours, **effects)})
+        watch = Live(LAB, plan(sodium_line_1=[ewma(), adjusted]), "sha")
+        found = [kept.result for kept in take(watch, [one, replace(one, stream=TSH)]).results]
+        assert [(result.sex, result.age) for result in found] == [kept, ("", "")]
 
 
 def test_the_same_specimen_in_another_stream_is_no_rerun() -> None:

@@ -185,6 +185,7 @@ def test_live_files_tell_the_same_results_and_the_fault_is_in_them(written: Writ
     assert [(r["result"], r["unit"], r["specimen"], r["line"], CODES[r["test"]], r["location"]) for r in rows] == [
         (t["value"], t["unit"], t["specimen"], t["analyser"], t["analyte"], t["ward"]) for t in told
     ]
+    assert [(r["sex"], r["age"]) for r in rows] == [(t["sex"], t["age"]) for t in told]
     assert [utc(datetime.fromisoformat(r["reported_at"])) for r in rows] == [
         utc(datetime.fromisoformat(t["time"])) for t in told
     ]

@@ -2,15 +2,19 @@
 
 import csv
 from collections import Counter
+from datetime import date, timedelta
 
 import hl7
 import numpy as np
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 
 from synthetic_streams import Laboratory
 from synthetic_streams.analytes import BY_KEY, STREAMS
 from synthetic_streams.clock import local_text
 from synthetic_streams.messages import MOST_OBX, messages
+from synthetic_streams.patients import born
 from tests.synthetic_streams.conftest import Written
 
 
@@ -51,10 +55,29 @@ def test_each_message_is_an_oru_of_version_2_5_1_with_its_segments_in_order(text
     assert len(set(numbers)) == len(numbers)
 
 
-def test_no_message_holds_a_name_or_a_date_of_birth(texts: list[str]) -> None:
+def test_no_message_holds_a_name(texts: list[str]) -> None:
     for text in texts[:50]:
-        pid = hl7.parse(text).segment("PID")
-        assert (str(pid[5]), str(pid[7])) == ("^^^^^^S", "")
+        assert str(hl7.parse(text).segment("PID")[5]) == "^^^^^^S"
+
+
+def test_sex_and_date_of_birth_agree_with_sex_and_age_in_the_live_table(written: Written, texts: list[str]) -> None:
+    with (written.folder / "live.csv").open(encoding="utf-8", newline="") as file:
+        known = {row["patient"]: (row["sex"], int(row["age"])) for row in csv.DictReader(file)}
+    met = set()
+    for text in texts:
+        message = hl7.parse(text)
+        pid, measured = message.segment("PID"), str(message.segment("OBX")[19])[:8]
+        birth, patient = str(pid[7]), str(pid[3][0][0])
+        years = int(measured[:4]) - int(birth[:4]) - (measured[4:] < birth[4:])
+        assert (str(pid[8]), years) == known[patient]
+        met.add(patient)
+    assert met == set(known)
+
+
+@given(st.integers(0, 101), st.integers(0, 10**6), st.dates(date(2031, 1, 6), date(2040, 12, 31)), st.integers(0, 14))
+def test_a_patient_has_the_age_on_the_day_and_the_two_weeks_before(age: int, number: int, day: date, ago: int) -> None:
+    birth, then = born(age, number, day), day - timedelta(ago)
+    assert then.year - birth.year - ((then.month, then.day) < (birth.month, birth.day)) == age
 
 
 def test_a_result_beyond_the_range_is_a_structured_number(laboratory: Laboratory) -> None:

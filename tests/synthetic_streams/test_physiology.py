@@ -87,6 +87,38 @@ def test_wards_differ_as_their_patients_do(laboratory: Laboratory) -> None:
     assert median("haemoglobin", "ICU") < median("haemoglobin", "GP")
 
 
+@pytest.mark.parametrize(
+    ("key", "male_minus_female"), [("haemoglobin", 10.0), ("creatinine", 0.22), ("alt", 0.25), ("sodium", 0.0)]
+)
+def test_men_and_women_differ_as_the_physiology_says(
+    laboratory: Laboratory, key: str, male_minus_female: float
+) -> None:
+    y, older, male = of_general_practice(laboratory, key)
+    middle = np.abs(older) < 10
+    found = y[middle & male].mean() - y[middle & ~male].mean()
+    assert found == pytest.approx(male_minus_female, abs=4 * y.std() / np.sqrt(middle.sum() / 4))
+
+
+@pytest.mark.parametrize("key", ["haemoglobin", "creatinine", "alt", "albumin", "sodium"])
+def test_results_change_with_age_as_the_physiology_says(laboratory: Laboratory, key: str) -> None:
+    y, older, male = of_general_practice(laboratory, key)
+    for of_sex, per_decade in zip((~male, male), PHYSIOLOGY[key].per_decade, strict=True):
+        slope = 10 * np.polyfit(older[of_sex], y[of_sex], 1)[0]
+        error = 10 * y.std() / older.std() / np.sqrt(of_sex.sum())
+        assert slope == pytest.approx(per_decade, abs=4 * error)
+
+
+def of_general_practice(laboratory: Laboratory, key: str) -> tuple[Floats, Floats, npt.NDArray[np.bool_]]:
+    """True values on the working scale, years above the mean age, and whether it is a man; each patient of the ward once."""
+    draws = laboratory.draws
+    ward = [ward.code for ward in WARDS].index("GP")
+    _, first = np.unique(draws.patient, return_index=True)
+    rows = first[draws.ward[first] == ward]
+    who, value = draws.patient[rows], draws.true_values(BY_KEY[key], rows)
+    older = draws.patients.age[who] - WARDS[ward].age[0]
+    return np.log(value) if PHYSIOLOGY[key].logarithmic else value, older, draws.patients.male[who]
+
+
 def test_every_analyte_has_a_physiology_for_every_ward() -> None:
     assert set(PHYSIOLOGY) == {analyte.key for analyte in ANALYTES} == set(COLUMN)
     assert {len(physiology.wards) for physiology in PHYSIOLOGY.values()} == {len(WARDS)}
