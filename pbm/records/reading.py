@@ -4,6 +4,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Literal, NamedTuple
 
+from pbm.records.event import LabEvent
 from pbm.records.message import Annotation, MessageKey
 from pbm.records.result import Result
 
@@ -108,7 +109,26 @@ class Message(NamedTuple):
     at: int
 
 
-Item = Reading | Result | SetAside | Remark | Correction | Annotation
+class EventReading(NamedTuple):
+    """A laboratory event as a feed wrote it.
+
+    Attributes
+    ----------
+    place
+        Where it stands in the feed: the line.
+    time, event, analyte, analyser, detail
+        As written; "" where not given.
+    """
+
+    place: int
+    time: str
+    event: str
+    analyte: str
+    analyser: str
+    detail: str
+
+
+Item = Reading | Result | SetAside | Remark | Correction | Annotation | EventReading | LabEvent
 
 
 @dataclass(frozen=True, slots=True)
@@ -125,6 +145,8 @@ class Chunk:
         Where to go on after these items, as the feed understands it.
     messages
         Those that brought the items, in the same order, where the feed consists of messages; items that no message accounts for come last.
+    arrived
+        When they came, by the clock of the computer, UTC microseconds; None where a feed is replayed: then its own times are the clock.
     """
 
     source: str
@@ -132,3 +154,4 @@ class Chunk:
     items: Sequence[Item]
     position: str
     messages: Sequence[Message] = ()
+    arrived: int | None = None
