@@ -1,12 +1,13 @@
 """The laboratory as its people describe it in `lab.toml`: extract columns, analytes, TEa, controls, alarm budget."""
 
-import codecs
 from collections.abc import Iterable, Iterator, Mapping
 from typing import Annotated, Literal, get_args
+from urllib.parse import urlsplit
 from zoneinfo import ZoneInfo, available_timezones
 
 from pydantic import AfterValidator, Field, model_validator
 
+from pbm.records.feed import FeedSettings, known_encoding
 from pbm.records.quantities import (
     AlarmRate,
     AllowableError,
@@ -31,14 +32,13 @@ def _known_zone(name: str) -> str:
     return name
 
 
-def _known_encoding(name: str) -> str:
-    try:
-        known = isinstance(codecs.getincrementaldecoder(name)().decode(b""), str)
-    except (LookupError, TypeError, ValueError):
-        known = False
-    if not known:
-        raise ValueError('expected an encoding of text such as "utf-8", "utf-16" or "latin-1"')
-    return name
+def _known_store(address: str) -> str:
+    parts = urlsplit(address)
+    if parts.scheme != "postgresql" or not parts.path.strip("/"):
+        raise ValueError(
+            'expected the address of a PostgreSQL database such as "postgresql://watch@localhost/laboratory"'
+        )
+    return address
 
 
 class Identity(Written):
@@ -117,7 +117,7 @@ class Extract(Written):
     time_format: str | None = None
     decimal: Literal[".", ","] = "."
     delimiter: str | None = Field(default=None, min_length=1, max_length=1)
-    encoding: Annotated[str, AfterValidator(_known_encoding)] | None = None
+    encoding: Annotated[str, AfterValidator(known_encoding)] | None = None
     patient_kinds: tuple[str, ...] = ("P",)
 
 
@@ -375,8 +375,12 @@ class Lab(Written):
         When silence is told.
     events
         What laboratory events do.
+    feed
+        How HL7 messages are received and read.
     analytes
         The analytes, by a short name of the laboratory's choice.
+    store
+        The PostgreSQL database that `pbm watch` writes, instead of `watch.sqlite` beside this file; written above the first table.
     """
 
     laboratory: Identity
@@ -386,7 +390,9 @@ class Lab(Written):
     faults: FaultRate = FaultRate()
     quiet: Quiet = Quiet()
     events: EventRules = EventRules()
+    feed: FeedSettings = FeedSettings()
     analytes: dict[str, Analyte] = Field(min_length=1)
+    store: Annotated[str, AfterValidator(_known_store), Field(repr=False)] | None = None
 
     @model_validator(mode="after")
     def _names_are_unambiguous(self) -> "Lab":
