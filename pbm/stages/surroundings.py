@@ -65,15 +65,20 @@ class Surroundings:
             Chance.draw(len(history), self.random("chance")),
         )
 
+    def event_times(self, time: Integers) -> Integers:
+        """Instants of the control events of a history with results at `time` (n,)."""
+        if self.controls.every is not None:
+            return time[self.controls.every - 1 :: self.controls.every]
+        if not self.controls.times:
+            return np.zeros(0, dtype=np.int64)
+        zone = self.lab.laboratory.zone
+        return control_events(int(time[0]), int(time[-1]), self.controls.times, zone, self.controls.on_weekdays())
+
     def event_positions(self, time: Integers) -> Integers:
         """Index of the first result after each control event of a history with results at `time` (n,)."""
         if self.controls.every is not None:
             return np.arange(self.controls.every, len(time) + 1, self.controls.every)
-        if not self.controls.times:
-            return np.zeros(0, dtype=np.int64)
-        zone = self.lab.laboratory.zone
-        events = control_events(int(time[0]), int(time[-1]), self.controls.times, zone, self.controls.on_weekdays())
-        return np.searchsorted(time, events, side="left").astype(np.int64)
+        return np.searchsorted(time, self.event_times(time), side="left").astype(np.int64)
 
     def onsets(self, time: Integers, first: int, last: int, count: int, horizon_days: float = HORIZON_DAYS) -> Onsets:
         """Onsets among results first ... last - 1, each followed to the horizon (at most half of the stretch) or to `last`."""

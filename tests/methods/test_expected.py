@@ -83,7 +83,7 @@ def test_chances_given_onset_by_onset_count_as_those_of_the_history(story: Story
 def of(detection: Detection, r: int) -> dict[int | None, float]:
     """Chance of each count at one onset; None for never."""
     chances: dict[int | None, float] = {}
-    for count, chance in zip(detection.count[r].tolist(), detection.chance[r].tolist(), strict=True):
+    for count, chance in zip(detection.delay[r].tolist(), detection.chance[r].tolist(), strict=True):
         if chance > 0:
             chances[count] = chances.get(count, 0.0) + chance
     never = float(detection.never[r])
