@@ -80,7 +80,6 @@ def _escaped(text: str, signs: Delimiters) -> str:
         signs.repetition: "R",
         signs.subcomponent: "T",
     }
-    stands = {
-        sign: f"{signs.escape}{name}{signs.escape}" if signs.escape else " " for sign, name in names.items() if sign
-    }
-    return text.translate(str.maketrans(stands))
+    mark = signs.escape
+    stands = {ord(sign): f"{mark}{name}{mark}" if mark else " " for sign, name in names.items() if sign}
+    return text.translate(stands)

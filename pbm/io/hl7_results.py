@@ -15,7 +15,7 @@ No other field of PID is looked at, nor any comment. Source: HL7 version 2.8.2, 
 from collections.abc import Iterable
 from dataclasses import dataclass
 from functools import lru_cache
-from typing import Literal, get_args
+from typing import Literal
 
 from pbm.io.hl7_check import LONGEST_NAME
 from pbm.io.hl7_groups import Observation, Order, orders
@@ -26,8 +26,7 @@ from pbm.records.reading import Correction, Reading, Remark, SetAside
 
 Read = Reading | SetAside | Remark | Correction
 PATIENT = "P"
-_Corrected = Literal["C", "D", "W"]
-_CORRECTED = get_args(_Corrected)
+_CORRECTED: dict[str, Literal["C", "D", "W"]] = {"C": "C", "D": "D", "W": "W"}
 _NOT_FINAL, _FINAL, _WITHOUT_RESULT = ("P", "R", "S"), ("", "A", "B", "F", "U", "V"), ("I", "N", "O", "X")
 _NUMBERS = ("NM", "ST", "")
 _OFF_SCALE = {"<": -1, ">": 1}
@@ -116,7 +115,8 @@ class ResultReader:
             common.sex,
             _age(common.birth, time),
         )
-        return Correction(status, at, reading) if status in _CORRECTED else reading
+        corrected = _CORRECTED.get(status)
+        return Correction(corrected, at, reading) if corrected else reading
 
     def _find_test(self, text: str, signs: Delimiters) -> str:
         """The name under which the laboratory knows a test, else its code as sent."""

@@ -102,11 +102,17 @@ class Message(NamedTuple):
         How many of the chunk's items are its own.
     at
         When it came, by the clock of the computer, UTC microseconds.
+    place
+        Its number in the feed.
+    code
+        The acknowledgement that it gets once it is kept.
     """
 
     key: MessageKey
     items: int
     at: int
+    place: int
+    code: str = "AA"
 
 
 class EventReading(NamedTuple):

@@ -6,12 +6,13 @@ from typing import NamedTuple
 
 from pbm.records.alarm import Alarm
 from pbm.records.event import LabEvent
-from pbm.records.message import Annotation, Answered
+from pbm.records.message import Annotation, Answered, MessageKey
 from pbm.records.notice import Notice
-from pbm.records.reading import SetAside
+from pbm.records.reading import Remark, SetAside
 from pbm.records.result import Result
 from pbm.records.stream import StreamName
 
+SENT_AGAIN, CORRECTION = "message sent again", "later word on a result"
 DUPLICATE, RERUN, REPEAT, LATE = "duplicate", "rerun of the specimen", "same patient again", "too late"
 
 
@@ -75,11 +76,14 @@ class Earlier:
         Stream, time, value and censor of results without a specimen -> the editions that held one.
     visits
         Stream and patient's token -> times of the results that count.
+    answered
+        Messages with the same sender and control id -> the code that they were answered with.
     """
 
     runs: dict[tuple[StreamName, str], dict[tuple[int, float, int], bool]] = field(default_factory=dict)
     unnamed: dict[tuple[StreamName, int, float, int], set[Edition]] = field(default_factory=dict)
     visits: dict[tuple[StreamName, str], list[int]] = field(default_factory=dict)
+    answered: dict[MessageKey, str] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)
@@ -112,6 +116,8 @@ class Batch:
         Each with the number of results in `results` that came before it.
     notices
         That begin or, with `closed_at`, end.
+    remarks
+        Source and what a person should know about a piece of the feed; they are told, not kept.
     """
 
     results: Sequence[KeptResult] = ()
@@ -126,3 +132,4 @@ class Batch:
     annotations: Sequence[Annotation] = ()
     events: Sequence[tuple[int, LabEvent]] = ()
     notices: Sequence[Notice] = ()
+    remarks: Sequence[tuple[str, Remark]] = ()

@@ -16,10 +16,23 @@ from dataclasses import replace
 from pbm.errors import PlanError
 from pbm.records.alarm import Alarm
 from pbm.records.laboratory import Lab
+from pbm.records.message import Annotation, Answered
 from pbm.records.plan import Plan
-from pbm.records.reading import Chunk, Reading, SetAside
+from pbm.records.reading import Chunk, Correction, Item, Message, Reading, Remark, SetAside
 from pbm.records.result import Result
-from pbm.records.snapshot import DUPLICATE, LATE, REPEAT, RERUN, Batch, Earlier, Edition, KeptResult, Snapshot
+from pbm.records.snapshot import (
+    CORRECTION,
+    DUPLICATE,
+    LATE,
+    REPEAT,
+    RERUN,
+    SENT_AGAIN,
+    Batch,
+    Earlier,
+    Edition,
+    KeptResult,
+    Snapshot,
+)
 from pbm.records.stream import RERUN_HOURS, StreamName
 from pbm.stages.estimate import WINDOW
 from pbm.stages.monitor import StreamMonitor
@@ -27,6 +40,7 @@ from pbm.stages.reading import Reader
 
 SLACK = 90 * 60_000_000  # microseconds; more than the hour that clocks are put back
 NEWEST = 5
+REUSED_NUMBER = "a control id met before, with other content: taken as a new message"
 _HOUR = 3_600_000_000
 
 
@@ -158,17 +172,49 @@ class _Work:
         self._positions: dict[str, str] = {}
         self._delivered: Counter[str] = Counter()
         self._moved: dict[StreamName, LiveStream] = {}
+        self._messages: list[Answered] = []
+        self._numbers = {key[:2] for key in earlier.answered}  # sender and control id
+        self._annotations: list[Annotation] = []
+        self._remarks: list[tuple[str, Remark]] = []
 
     def take(self, chunk: Chunk) -> None:
         edition = Edition(chunk.source, chunk.edition)
-        for item in chunk.items:
+        for item in self._not_taken_before(chunk):
             if isinstance(item, Result):
                 self._take_result(item, edition)
             elif isinstance(item, SetAside):
                 self._tallies[item.reason] += 1
                 self._set_aside.append((chunk.source, item))
+            elif isinstance(item, Annotation):
+                self._tallies[CORRECTION] += 1
+                self._annotations.append(item)
+            elif isinstance(item, Remark):
+                self._remarks.append((chunk.source, item))
         self._positions[chunk.source] = chunk.position
         self._delivered[chunk.source] += len(chunk.items)
+
+    def _not_taken_before(self, chunk: Chunk) -> Sequence[Item]:
+        """The items but for those of messages that were answered before."""
+        if not chunk.messages:
+            return chunk.items
+        items: list[Item] = []
+        at = 0
+        for message in chunk.messages:
+            if message.key in self._earlier.answered:
+                self._tallies[SENT_AGAIN] += 1
+            else:
+                items += self._remember(message)
+                items += chunk.items[at : at + message.items]
+            at += message.items
+        return items + list(chunk.items[at:])
+
+    def _remember(self, message: Message) -> list[Item]:
+        """Answer a message from now on as it is answered now; what is to be told of its number."""
+        self._messages.append(Answered(message.key, message.code, message.at))
+        met = message.key[:2] in self._numbers
+        self._numbers.add(message.key[:2])
+        self._earlier.answered[message.key] = message.code
+        return [Remark(message.place, REUSED_NUMBER, message.key.control_id)] if met else []
 
     def _take_result(self, result: Result, edition: Edition) -> None:
         reason = self._copy_of_another(result, edition)
@@ -227,4 +273,6 @@ class _Work:
 def read_chunk(chunk: Chunk, reader: Reader) -> Chunk:
     """The chunk with its readings made into results, or set aside."""
     items = [reader.read(item) if isinstance(item, Reading) else item for item in chunk.items]
-    return Chunk(chunk.source, chunk.edition, items, chunk.position)
+    if chunk.messages:
+        items = [reader.annotation(one, chunk.source) if isinstance(one, Correction) else one for one in items]
+    return replace(chunk, items=items)

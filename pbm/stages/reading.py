@@ -6,6 +6,7 @@ as its first passage: only the order of arrival counts, and either reading is th
 """
 
 import math
+from collections.abc import Collection
 from datetime import datetime, timedelta
 from functools import lru_cache
 from hashlib import blake2b
@@ -13,7 +14,8 @@ from typing import Literal
 
 from pbm.records.as_written import EARLIEST, LATEST, read_time, read_value
 from pbm.records.laboratory import Analyte, Lab
-from pbm.records.reading import Reading, SetAside
+from pbm.records.message import Annotation
+from pbm.records.reading import Correction, Reading, SetAside
 from pbm.records.result import Result
 from pbm.records.sex_and_age import read_age_band, read_sex
 from pbm.records.stream import LONGEST_ANALYSER, POOLED, StreamName
@@ -43,6 +45,8 @@ class Reader:
         How the feed writes numbers and times; without a format, times are in ISO 8601.
     units_given, kinds_given
         Whether every reading of the feed says its unit, and its kind.
+    patient_kinds
+        What says that a result is a patient's; `extract.patient_kinds` if not given.
     patient_key
         Key of the tokens that stand for patients.
     """
@@ -55,6 +59,7 @@ class Reader:
         *,
         units_given: bool = True,
         kinds_given: bool = False,
+        patient_kinds: Collection[str] | None = None,
         patient_key: bytes = b"",
     ) -> None:
         self._zone = lab.laboratory.zone
@@ -63,6 +68,7 @@ class Reader:
         self._units = {key: set(one.known_units()) for key, one in lab.analytes.items()}
         self._time_format = time_format
         self._units_given, self._kinds_given = units_given, kinds_given
+        self._patient_kinds = self._extract.patient_kinds if patient_kinds is None else patient_kinds
         self._streams: dict[tuple[str, str], StreamName] = {}
         self._token = lru_cache(_KNOWN_TEXTS)(
             lambda text: blake2b(text.encode(), digest_size=8, key=patient_key).hexdigest()
@@ -77,6 +83,26 @@ class Reader:
         except ReadingError as error:
             return SetAside(reading.place, error.reason, error.found[:_LONGEST_FOUND], self._name(reading))
 
+    def annotation(self, correction: Correction, source: str) -> Annotation | SetAside:
+        """What a correction says of which result, or why it cannot be known; its value is not judged."""
+        reading = Reading(correction.reading.place, *map(str.strip, correction.reading[1:]))
+        try:
+            stream, time = self._stream_of(reading)[0], self._time(reading.time)
+        except ReadingError as error:
+            return SetAside(reading.place, error.reason, error.found[:_LONGEST_FOUND], self._name(reading))
+        return Annotation(
+            stream=stream,
+            specimen=reading.specimen,
+            time=time,
+            status=correction.status,
+            value=reading.value
+            if reading.unit in self._units[stream.analyte]
+            else f"{reading.value} {reading.unit}".strip(),
+            at=correction.at,
+            source=source,
+            place=reading.place,
+        )
+
     def _name(self, reading: Reading) -> str:
         """The stream a reading belongs to; "" where it does not say."""
         known = self._analytes.get(reading.analyte.strip())
@@ -84,6 +110,16 @@ class Reader:
         return f"{known[0]}@{analyser[:LONGEST_ANALYSER]}" if known and analyser else ""
 
     def _result(self, reading: Reading) -> Result:
+        stream, analyte = self._stream_of(reading)
+        value, censor = self._number(reading.value)
+        self._check_unit(reading.unit, stream.analyte, analyte)
+        time = self._time(reading.time)
+        self._check_plausible(value, analyte)
+        patient = self._token(reading.patient) if reading.patient and analyte.repeat_hours else ""
+        sex, age = self._sex(reading.sex), self._age(reading.age)
+        return Result(time, stream, value, censor, reading.specimen, reading.ward, patient, sex, age)
+
+    def _stream_of(self, reading: Reading) -> tuple[StreamName, Analyte]:
         self._check_it_is_data(reading)
         known = self._analytes.get(reading.analyte)
         if known is None:
@@ -91,21 +127,14 @@ class Reader:
         key, analyte = known
         if reading.ward in analyte.leave_out_wards:
             raise ReadingError("ward is left out", reading.ward)
-        stream = self._streams.get((key, reading.analyser)) or self._stream(key, reading.analyser)
-        value, censor = self._number(reading.value)
-        self._check_unit(reading.unit, key, analyte)
-        time = self._time(reading.time)
-        self._check_plausible(value, analyte)
-        patient = self._token(reading.patient) if reading.patient and analyte.repeat_hours else ""
-        sex, age = self._sex(reading.sex), self._age(reading.age)
-        return Result(time, stream, value, censor, reading.specimen, reading.ward, patient, sex, age)
+        return self._streams.get((key, reading.analyser)) or self._stream(key, reading.analyser), analyte
 
     def _check_it_is_data(self, reading: Reading) -> None:
         if not (reading.time or reading.analyte or reading.value):
             raise ReadingError("blank line")
         if reading.analyte == self._extract.analyte and reading.value == self._extract.value:
             raise ReadingError("repeated header line")
-        if (reading.kind or self._kinds_given) and reading.kind not in self._extract.patient_kinds:
+        if (reading.kind or self._kinds_given) and reading.kind not in self._patient_kinds:
             raise ReadingError("not a patient result", reading.kind)
 
     def _stream(self, key: str, analyser: str) -> StreamName:
