@@ -45,8 +45,8 @@ class Preparation:
     def _admit_par(self) -> tuple[float, float, float]:
         return (float(self.low), float(self.high), float(self.winsorize))
 
-    def one(self, x: float, censor: int, ward: str = "", hour: int = 0) -> float:
-        """The value for one result; not a number if it is dropped. Ward and hour of the week matter with a baseline only."""
+    def one(self, x: float, censor: int, ward: str = "", hour: int = 0, sex: str = "", age: str = "") -> float:
+        """The value for one result; not a number if it is dropped. Whose it is and when matters with a baseline only."""
         admitted = admit(x, float(censor), self._admit_par)
         if math.isnan(admitted):
             return math.nan
