@@ -24,6 +24,10 @@ class FeedError(PbmError):
     """The live feed or its store cannot go on; nothing that was acknowledged is lost."""
 
 
+class StoreWaits(FeedError):
+    """The store cannot take anything now (its disk is full, or it is locked); the same may be tried again when that has passed."""
+
+
 def one_line(error: Exception) -> str:
     """The text of a library's error on one line, to stand inside a paragraph."""
     return " ".join(str(error).split())

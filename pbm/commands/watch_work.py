@@ -19,6 +19,7 @@ from pbm.io.ndjson import alarm_text
 from pbm.io.patient_key import patient_key
 from pbm.io.plan_file import plan_fingerprint, read_plan
 from pbm.io.store import Store
+from pbm.io.store_place import store_place
 from pbm.records.alarm import Alarm
 from pbm.records.laboratory import Lab
 from pbm.records.reading import Chunk
@@ -49,7 +50,7 @@ def watch_feed(folder: LabFolder, source: str, *, json: bool, once: bool, speed:
         raise PlanError(f"There is no {folder.plan}, so nothing can be watched. `pbm tune` makes it from the history.")
     lab, plan, fingerprint = read_checked_lab(folder.lab), read_plan(folder.plan), plan_fingerprint(folder.plan)
     live = Live(lab, plan, fingerprint)
-    with Store(folder.store) as store:
+    with Store(store_place(lab.store, folder.store)) as store:
         opened = _open(source, folder, lab, store, once=once, speed=speed)
         going_on = live.go_on(store.snapshots(), store.newest_times(), store.recent_results)
         changed = store.plan_in_force() not in ("", fingerprint)

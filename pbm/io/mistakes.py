@@ -19,6 +19,7 @@ W = TypeVar("W", bound=Written)
 Location = tuple[int | str, ...]
 _BARE_KEY = re.compile(r"^[A-Za-z0-9_-]+$")
 _PLACE = re.compile(r" \(at (line (?P<line>\d+), column \d+|end of document)\)$")
+_PASSWORD = re.compile(r"""(://[^:@"]*:).*(@)|(password=)[^&"]*""")  # in an address
 _LONGEST = 80
 
 
@@ -225,6 +226,7 @@ def _shown(value: Any) -> str:
 
 
 def _short(text: str) -> str:
+    text = _PASSWORD.sub(lambda found: f"{found[1] or found[3]}***{found[2] or ''}", text)
     return text if len(text) <= _LONGEST else text[: _LONGEST - 4] + " ..."
 
 

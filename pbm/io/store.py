@@ -1,11 +1,11 @@
 """The store as its one writer sees it: results, alarms, states of monitors and positions of feeds, in one transaction a batch.
 
-SQLite in WAL mode with synchronous=FULL: what was kept survives a kill and a power cut. Every transaction begins IMMEDIATE. The statements
-are SQLAlchemy Core; store_engine.py knows which database it is.
+What was kept survives a kill and a power cut. The statements are SQLAlchemy Core; store_engine.py knows which database it is.
 """
 
 import json
 from collections.abc import Iterable, Sequence
+from contextlib import ExitStack
 from dataclasses import asdict
 from pathlib import Path
 from types import TracebackType
@@ -17,6 +17,7 @@ from pbm.io.store_batch import BatchRows, Numbers
 from pbm.io.store_engine import writing_engine
 from pbm.io.store_errors import told
 from pbm.io.store_migrations import migrate
+from pbm.io.store_place import Place
 from pbm.io.store_schema import NAMED, SCHEMA_VERSION, UNNAMED, VISITS, audit, feeds, metadata, results, schema, streams
 from pbm.io.store_schema import heartbeat as heartbeats
 from pbm.io.writer_lock import WriterLock
@@ -38,16 +39,17 @@ class Store:
         Here and from every method: another process writes to the store, or the database cannot go on. Nothing of a batch is then kept.
     """
 
-    def __init__(self, path: Path) -> None:
-        self.path = path
-        self._lock = WriterLock(path)
-        try:
-            with told(path):
-                self._connection = writing_engine(path).connect()
+    def __init__(self, place: Place) -> None:
+        self.place = place
+        with ExitStack() as opened:
+            if isinstance(place, Path):
+                opened.callback(WriterLock(place).release)
+            with told(place):
+                engine = writing_engine(place)
+                opened.callback(engine.dispose)
+                self._connection = opened.enter_context(engine.connect())
                 self._prepare()
-        except BaseException:
-            self._lock.release()
-            raise
+            self._opened = opened.pop_all()
 
     def __enter__(self) -> "Store":
         return self
@@ -59,30 +61,28 @@ class Store:
 
     def close(self) -> None:
         """Close the database and let others write."""
-        self._connection.close()
-        self._connection.engine.dispose()
-        self._lock.release()
+        self._opened.close()
 
     def _prepare(self) -> None:
         with self._connection.begin():
             if not inspect(self._connection).has_table("schema"):
                 metadata.create_all(self._connection)
                 self._connection.execute(insert(schema).values(version=SCHEMA_VERSION))
-            migrate(self._connection, self.path)
+            migrate(self._connection, self.place)
             self._numbers = Numbers.read(self._connection)
 
     # What a batch asks before it is kept
 
     def position(self, source: str) -> str:
         """Where a feed goes on; "" for a feed never read."""
-        with told(self.path), self._connection.begin():
+        with told(self.place), self._connection.begin():
             return self._connection.execute(select(feeds.c.position).where(feeds.c.source == source)).scalar() or ""
 
     def earlier(self, some: Iterable[Result]) -> Earlier:
         """What is kept of the same specimens and patients; of results without a specimen, what is kept of the same moment."""
         asked = list(some)
         found = Earlier()
-        with told(self.path), self._connection.begin():
+        with told(self.place), self._connection.begin():
             if named := {one.specimen for one in asked if one.specimen}:
                 self._find_runs(named, found)
             if unnamed := {one.time for one in asked if not one.specimen}:
@@ -119,14 +119,14 @@ class Store:
 
     def answered(self, keys: Iterable[MessageKey]) -> dict[MessageKey, str]:
         """Of some messages those that were answered, with the code that was given."""
-        with told(self.path), self._connection.begin():
+        with told(self.place), self._connection.begin():
             return store_rows.codes_answered(self._connection, keys)
 
     # What is kept
 
     def keep(self, batch: Batch) -> None:
         """Keep a batch: all of it, on the disk, or (with an error) nothing of it; the same batch may then be tried again."""
-        with told(self.path):
+        with told(self.place):
             with self._connection.begin():
                 rows = BatchRows(self._connection, self._numbers)
                 rows.write(batch)
@@ -134,7 +134,7 @@ class Store:
 
     def beat(self, heartbeat: Heartbeat) -> None:
         """Leave a sign of life."""
-        with told(self.path), self._connection.begin():
+        with told(self.place), self._connection.begin():
             row = asdict(heartbeat)
             if self._connection.execute(update(heartbeats).values(row)).rowcount == 0:
                 self._connection.execute(insert(heartbeats), row)
@@ -143,39 +143,39 @@ class Store:
 
     def plan_in_force(self) -> str:
         """SHA-256 of the plan under which the store was last written; "" if it never was."""
-        with told(self.path), self._connection.begin():
+        with told(self.place), self._connection.begin():
             return (
                 self._connection.execute(select(audit.c.plan_after).order_by(audit.c.id.desc()).limit(1)).scalar() or ""
             )
 
     def snapshots(self) -> list[Snapshot]:
         """Every monitor as it was kept."""
-        with told(self.path), self._connection.begin():
+        with told(self.place), self._connection.begin():
             return store_rows.snapshots(self._connection)
 
     def open_alarms(self) -> list[Alarm]:
         """The alarm of every monitor whose episode is still open, the newest last."""
-        with told(self.path), self._connection.begin():
+        with told(self.place), self._connection.begin():
             return store_rows.open_alarms(self._connection)
 
     def open_notices(self) -> list[Notice]:
         """The notices that last, the newest last."""
-        with told(self.path), self._connection.begin():
+        with told(self.place), self._connection.begin():
             return store_rows.open_notices(self._connection)
 
     def events(self, count: int = 1000) -> list[LabEvent]:
         """The last laboratory events in order of arrival, the newest last."""
-        with told(self.path), self._connection.begin():
+        with told(self.place), self._connection.begin():
             return store_rows.last_events(self._connection, count)
 
     def recent_results(self, name: StreamName, count: int) -> list[Result]:
         """The last results of a stream that counted, in order of arrival."""
-        with told(self.path), self._connection.begin():
+        with told(self.place), self._connection.begin():
             return store_rows.recent_results(self._connection, name, count)
 
     def newest_times(self) -> dict[StreamName, list[int]]:
         """The newest times that the monitors of each stream have taken, ascending."""
-        with told(self.path), self._connection.begin():
+        with told(self.place), self._connection.begin():
             return {
                 StreamName(one.analyte, one.analyser): json.loads(one.newest)
                 for one in self._connection.execute(select(streams))
@@ -195,7 +195,7 @@ class Store:
         states
             Every monitor of the plan as it begins.
         """
-        with told(self.path):
+        with told(self.place):
             with self._connection.begin():
                 rows = BatchRows(self._connection, self._numbers)
                 rows.replace_states(states)

@@ -6,16 +6,16 @@ and the new number are one transaction. Stores of layout 1 are SQLite only.
 
 import time
 from collections.abc import Callable, Mapping
-from pathlib import Path
 
 from sqlalchemy import Connection, select, text, update
 
 from pbm.errors import FeedError
 from pbm.io import store_audit
+from pbm.io.store_place import Place, in_words
 from pbm.io.store_schema import SCHEMA_VERSION, schema
 
 
-def migrate(connection: Connection, path: Path) -> None:
+def migrate(connection: Connection, place: Place) -> None:
     """Bring the store to the layout of this version, in the transaction of the caller.
 
     Raises
@@ -25,7 +25,7 @@ def migrate(connection: Connection, path: Path) -> None:
     """
     found = int(connection.execute(select(schema.c.version)).scalar_one())
     if found > SCHEMA_VERSION:
-        raise newer(path, found)
+        raise newer(place, found)
     for version in range(found, SCHEMA_VERSION):
         MIGRATIONS[version](connection)
     if found < SCHEMA_VERSION:
@@ -35,7 +35,7 @@ def migrate(connection: Connection, path: Path) -> None:
         )
 
 
-def check_version(connection: Connection, path: Path) -> None:
+def check_version(connection: Connection, place: Place) -> None:
     """Refuse to read a store of another layout.
 
     Raises
@@ -45,19 +45,19 @@ def check_version(connection: Connection, path: Path) -> None:
     """
     found = int(connection.execute(select(schema.c.version)).scalar_one())
     if found > SCHEMA_VERSION:
-        raise newer(path, found)
+        raise newer(place, found)
     if found < SCHEMA_VERSION:
         raise FeedError(
-            f"The store {path} has layout {found}, and this version of pbm reads layout {SCHEMA_VERSION}. `pbm watch` brings it forward, "
-            "with all that it holds, when it is started the next time."
+            f"The store {in_words(place)} has layout {found}, and this version of pbm reads layout {SCHEMA_VERSION}. `pbm watch` brings "
+            "it forward, with all that it holds, when it is started the next time."
         )
 
 
-def newer(path: Path, found: int) -> FeedError:
+def newer(place: Place, found: int) -> FeedError:
     """The error for a store of a later version."""
     return FeedError(
-        f"The store {path} has layout {found}, and this version of pbm knows layouts up to {SCHEMA_VERSION}. A later version wrote it: use "
-        "that version, or move the store away to start afresh."
+        f"The store {in_words(place)} has layout {found}, and this version of pbm knows layouts up to {SCHEMA_VERSION}. A later version "
+        "wrote it: use that version, or move the store away to start afresh."
     )
 
 

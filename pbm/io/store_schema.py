@@ -196,7 +196,7 @@ _NEVER_CHANGED_IN_POSTGRESQL = (
 )
 for _dialect, _statements in (("sqlite", _NEVER_CHANGED), ("postgresql", _NEVER_CHANGED_IN_POSTGRESQL)):
     for _statement in _statements:
-        event.listen(audit, "after_create", DDL(_statement).execute_if(dialect=_dialect))
+        event.listen(audit, "after_create", DDL(_statement).execute_if(dialect=_dialect))  # type: ignore[no-untyped-call]
 
 audit_head = Table(
     "audit_head",

@@ -2,7 +2,7 @@
 
 from collections.abc import Iterable, Iterator, Mapping
 from typing import Annotated, Literal, get_args
-from urllib.parse import urlsplit
+from urllib.parse import parse_qs, urlsplit
 from zoneinfo import ZoneInfo, available_timezones
 
 from pydantic import AfterValidator, Field, model_validator
@@ -34,10 +34,12 @@ def _known_zone(name: str) -> str:
 
 def _known_store(address: str) -> str:
     parts = urlsplit(address)
-    if parts.scheme != "postgresql" or not parts.path.strip("/"):
+    if parts.scheme != "postgresql" or not parts.path.strip("/") or "password" in parse_qs(parts.query):
         raise ValueError(
-            'expected the address of a PostgreSQL database such as "postgresql://watch@localhost/laboratory"'
+            'expected the address of a PostgreSQL database such as "postgresql://watch@localhost:5432/laboratory"'
         )
+    if parts.port == 0:  # asking for it finds out that it is no number
+        raise ValueError("expected a port of at least 1")
     return address
 
 
@@ -392,7 +394,7 @@ class Lab(Written):
     events: EventRules = EventRules()
     feed: FeedSettings = FeedSettings()
     analytes: dict[str, Analyte] = Field(min_length=1)
-    store: Annotated[str, AfterValidator(_known_store), Field(repr=False)] | None = None
+    store: Annotated[str, AfterValidator(_known_store)] | None = Field(default=None, repr=False)
 
     @model_validator(mode="after")
     def _names_are_unambiguous(self) -> "Lab":
