@@ -29,7 +29,7 @@ class Snapshot:
     state
         Everything the monitor needs to go on, as bytes.
     taken, admitted
-        Results offered to the monitor, and those of them that its statistic took.
+        Results offered to the monitor, and those that its statistic took since it began, or began afresh after an event.
     needed
         Admitted results before the statistic is judged.
     value
@@ -107,7 +107,7 @@ class Batch:
     positions
         Feed -> where it goes on.
     delivered
-        Feed -> pieces that it brought: results, copies of results and what was set aside.
+        Feed -> results and pieces set aside that it brought, copies of results among them; nothing of a message sent again.
     messages
         Answered once the batch is kept.
     annotations

@@ -178,8 +178,8 @@ class _Work:
         self._remarks: list[tuple[str, Remark]] = []
 
     def take(self, chunk: Chunk) -> None:
-        edition = Edition(chunk.source, chunk.edition)
-        for item in self._not_taken_before(chunk):
+        edition, items = Edition(chunk.source, chunk.edition), self._not_taken_before(chunk)
+        for item in items:
             if isinstance(item, Result):
                 self._take_result(item, edition)
             elif isinstance(item, SetAside):
@@ -191,7 +191,7 @@ class _Work:
             elif isinstance(item, Remark):
                 self._remarks.append((chunk.source, item))
         self._positions[chunk.source] = chunk.position
-        self._delivered[chunk.source] += len(chunk.items)
+        self._delivered[chunk.source] += sum(isinstance(item, Result | SetAside) for item in items)
 
     def _not_taken_before(self, chunk: Chunk) -> Sequence[Item]:
         """The items but for those of messages that were answered before."""
@@ -267,6 +267,9 @@ class _Work:
             tallies=dict(self._tallies),
             positions=self._positions,
             delivered=dict(self._delivered),
+            messages=self._messages,
+            annotations=self._annotations,
+            remarks=self._remarks,
         )
 
 
