@@ -1,18 +1,19 @@
 """The feeds at work: a file polled, standard input read, a history paced; what they bring is handed over while more is being read.
 
-Everything that queued while the last batch was kept goes into the next one, up to `QUEUE` chunks: nothing ever waits for a clock. SIGINT
-and SIGTERM stop the feeds; what was read by then is still handed over. This is the only module that knows asyncio.
+Everything that queued while the last batch was kept goes into the next one, up to `QUEUE` chunks: nothing ever waits for a clock. A feed is
+told when its chunk is kept. While the store cannot take a batch it is tried again and again, and nothing more is read. SIGINT and SIGTERM
+stop the feeds; what was read by then is still handed over. Only this module and feeds_mllp.py know asyncio.
 """
 
 import asyncio
 import os
 import signal
 import threading
-from collections.abc import AsyncIterator, Callable, Iterable, Iterator, Sequence
+from collections.abc import AsyncGenerator, Callable, Iterable, Iterator, Sequence
 from concurrent.futures import ThreadPoolExecutor
-from contextlib import suppress
-from typing import Protocol
+from contextlib import aclosing, suppress
 
+from pbm.errors import StoreWaits
 from pbm.io.follow import FollowedFile
 from pbm.io.ndjson import LONGEST_LINE, read_line
 from pbm.records.reading import Chunk
@@ -20,6 +21,7 @@ from pbm.records.result import Result
 
 QUEUE = 4
 POLL = 0.15  # seconds
+AGAIN = 1.0  # seconds until a batch is tried again
 _READ = 2**16
 _MICROSECONDS = 1e6
 
@@ -27,20 +29,27 @@ Prepare = Callable[[Chunk], Chunk]
 Take = Callable[[Sequence[Chunk]], None]
 
 
-class Feed(Protocol):
+class Feed:
     """Where results come from."""
 
-    def chunks(self) -> AsyncIterator[Chunk]:
+    def chunks(self) -> AsyncGenerator[Chunk]:
         """What it brings, until it ends."""
+        raise NotImplementedError
+
+    def kept(self) -> None:
+        """The oldest of its chunks that was not kept yet has been kept."""
+
+    async def end(self) -> None:
+        """All is kept that will be."""
 
 
-class FileFeed:
+class FileFeed(Feed):
     """A growing file, polled; with `once` it ends where the file ends."""
 
     def __init__(self, file: FollowedFile, *, once: bool) -> None:
         self._file, self._once = file, once
 
-    async def chunks(self) -> AsyncIterator[Chunk]:
+    async def chunks(self) -> AsyncGenerator[Chunk]:
         """Whole lines as they come."""
         while True:
             if chunk := self._file.read():
@@ -51,13 +60,13 @@ class FileFeed:
                 await asyncio.sleep(POLL)
 
 
-class PacedFeed:
+class PacedFeed(Feed):
     """Results with their times, replayed so many times faster than they happened; without `speed` as fast as it goes."""
 
     def __init__(self, chunks: Iterable[Chunk], speed: float | None) -> None:
         self._chunks, self._speed = chunks, speed
 
-    async def chunks(self) -> AsyncIterator[Chunk]:
+    async def chunks(self) -> AsyncGenerator[Chunk]:
         """Each chunk when its first result is due."""
         clock, begun, first = asyncio.get_running_loop().time, asyncio.get_running_loop().time(), None
         for chunk in self._chunks:
@@ -68,7 +77,7 @@ class PacedFeed:
             yield chunk
 
 
-class LineFeed:
+class LineFeed(Feed):
     """NDJSON from an open file descriptor, such as standard input, until it ends.
 
     Parameters
@@ -85,7 +94,7 @@ class LineFeed:
         self._source, self._descriptor = source, descriptor
         self._edition = int(position or 0) + 1
 
-    async def chunks(self) -> AsyncIterator[Chunk]:
+    async def chunks(self) -> AsyncGenerator[Chunk]:
         """Lines as they come."""
         loop, queue = asyncio.get_running_loop(), asyncio.Queue[list[bytes] | None](1)
 
@@ -137,58 +146,80 @@ def run(feeds: Sequence[Feed], prepare: Prepare, take: Take) -> None:
     prepare
         Called with each chunk as it comes, while the batch before is being kept.
     take
-        Called in a thread of its own, one call at a time, with the prepared chunks that queued meanwhile; its errors end the run.
+        Called in a thread of its own, one call at a time, with the prepared chunks that queued meanwhile. If it raises `StoreWaits` it is
+        called again with the same ones until it does not, or until a signal comes; its other errors end the run.
     """
-    asyncio.run(_run(feeds, prepare, take))
+    asyncio.run(_Run(feeds, prepare, take).until_the_end())
 
 
-async def _run(feeds: Sequence[Feed], prepare: Prepare, take: Take) -> None:
-    queue = asyncio.Queue[Chunk | None](QUEUE)
-    reading = asyncio.create_task(_read_until_stopped(feeds, prepare, queue))
-    loop = asyncio.get_running_loop()
-    with ThreadPoolExecutor(1) as worker:
+class _Run:
+    """One run of the feeds."""
+
+    def __init__(self, feeds: Sequence[Feed], prepare: Prepare, take: Take) -> None:
+        self._feeds, self._prepare, self._take = feeds, prepare, take
+        self._queue = asyncio.Queue[tuple[Feed, Chunk] | None](QUEUE)
+        self._stopped = asyncio.Event()
+
+    async def until_the_end(self) -> None:
+        for number in (signal.SIGINT, signal.SIGTERM):
+            asyncio.get_running_loop().add_signal_handler(number, self._stopped.set)
+        reading = asyncio.create_task(self._read_until_stopped())
+        with ThreadPoolExecutor(1) as worker:
+            try:
+                while batch := await self._queued():
+                    await self._keep(worker, [chunk for _, chunk in batch])
+                    for feed, _ in batch:
+                        feed.kept()
+            except BaseException:
+                reading.cancel()
+                with suppress(BaseException):
+                    await reading
+                raise
+            finally:
+                for feed in self._feeds:
+                    await feed.end()
+        await reading
+
+    async def _keep(self, worker: ThreadPoolExecutor, chunks: Sequence[Chunk]) -> None:
+        """Have a batch kept, however long the store cannot take it."""
+        while True:
+            try:
+                return await asyncio.get_running_loop().run_in_executor(worker, self._take, chunks)
+            except StoreWaits:
+                if self._stopped.is_set():
+                    raise
+                with suppress(TimeoutError):
+                    await asyncio.wait_for(self._stopped.wait(), AGAIN)
+
+    async def _queued(self) -> list[tuple[Feed, Chunk]]:
+        """What is queued, at least one chunk; nothing when all has been read."""
+        batch: list[tuple[Feed, Chunk]] = []
+        given = await self._queue.get()
+        while given is not None:
+            batch.append(given)
+            if self._queue.empty() or len(batch) == QUEUE:
+                return batch
+            given = self._queue.get_nowait()
+        self._queue.put_nowait(None)  # met again when this batch is done
+        return batch
+
+    async def _read_until_stopped(self) -> None:
+        """Fill the queue until every feed has ended, one has failed, or a signal came; then mark its end."""
+        stop = asyncio.create_task(self._stopped.wait())
+        readers: asyncio.Future[list[None]] = asyncio.gather(*map(self._fill, self._feeds))
         try:
-            while batch := await _queued(queue):
-                await loop.run_in_executor(worker, take, batch)
-        except BaseException:
-            reading.cancel()
-            with suppress(BaseException):
-                await reading
-            raise
-    await reading
+            ended, _ = await asyncio.wait((stop, readers), return_when=asyncio.FIRST_COMPLETED)
+        finally:
+            stop.cancel()
+            readers.cancel()
+            await asyncio.gather(
+                readers, return_exceptions=True
+            )  # what was stopped is no error, and is not told as one
+        await self._queue.put(None)
+        if readers in ended:
+            readers.result()  # raises what a feed raised
 
-
-async def _queued(queue: asyncio.Queue[Chunk | None]) -> list[Chunk]:
-    """What is queued, at least one chunk; nothing when all has been read."""
-    batch: list[Chunk] = []
-    chunk = await queue.get()
-    while chunk is not None:
-        batch.append(chunk)
-        if queue.empty() or len(batch) == QUEUE:
-            return batch
-        chunk = queue.get_nowait()
-    queue.put_nowait(None)  # met again when this batch is done
-    return batch
-
-
-async def _read_until_stopped(feeds: Sequence[Feed], prepare: Prepare, queue: asyncio.Queue[Chunk | None]) -> None:
-    """Fill the queue until every feed has ended, one has failed, or a signal came; then mark its end."""
-    stopped = asyncio.Event()
-    for number in (signal.SIGINT, signal.SIGTERM):
-        asyncio.get_running_loop().add_signal_handler(number, stopped.set)
-    stop = asyncio.create_task(stopped.wait())
-    readers: asyncio.Future[list[None]] = asyncio.gather(*(_fill(feed, prepare, queue) for feed in feeds))
-    try:
-        ended, _ = await asyncio.wait((stop, readers), return_when=asyncio.FIRST_COMPLETED)
-    finally:
-        stop.cancel()
-        readers.cancel()
-        await asyncio.gather(readers, return_exceptions=True)  # what was stopped is no error, and is not told as one
-    await queue.put(None)
-    if readers in ended:
-        readers.result()  # raises what a feed raised
-
-
-async def _fill(feed: Feed, prepare: Prepare, queue: asyncio.Queue[Chunk | None]) -> None:
-    async for chunk in feed.chunks():
-        await queue.put(prepare(chunk))
+    async def _fill(self, feed: Feed) -> None:
+        async with aclosing(feed.chunks()) as chunks:
+            async for chunk in chunks:
+                await self._queue.put((feed, self._prepare(chunk)))

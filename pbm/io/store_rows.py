@@ -74,13 +74,15 @@ def snapshots(connection: Connection) -> list[Snapshot]:
 
 
 def codes_answered(connection: Connection, keys: Iterable[MessageKey]) -> dict[MessageKey, str]:
-    """Of some messages those that were answered, with the code."""
-    asked = {(one.sender, one.control_id, bytes.fromhex(one.sha256)): one for one in keys}
-    same = messages.c.control_id.in_({control_id for _, control_id, _ in asked})
-    rows = connection.execute(
-        select(messages).where(messages.c.sender.in_({sender for sender, _, _ in asked}), same)
-    ).all()
-    return {asked[key]: row.code for row in rows if (key := (row.sender, row.control_id, row.sha256)) in asked}
+    """The messages answered that have sender and control id in common with some, with the code."""
+    asked = {(one.sender, one.control_id) for one in keys}
+    same = messages.c.control_id.in_({control_id for _, control_id in asked})
+    rows = connection.execute(select(messages).where(messages.c.sender.in_({sender for sender, _ in asked}), same))
+    return {
+        MessageKey(row.sender, row.control_id, row.sha256.hex()): row.code
+        for row in rows
+        if (row.sender, row.control_id) in asked
+    }
 
 
 def last_annotations(connection: Connection, count: int) -> list[Annotation]:
@@ -158,6 +160,7 @@ def alarm_row(alarm: Alarm) -> dict[str, Any]:
         "shown",
         "shown_limit",
         "last_control",
+        "last_control_passed",
         "plan_sha256",
         "shadow",
     )
@@ -185,6 +188,7 @@ def _alarm(row: Row[Any]) -> Alarm:
         shown_limit=row.shown_limit,
         estimate=None if row.onset is None else OnsetEstimate(**{name: row._mapping[name] for name in _ESTIMATE}),
         last_control=row.last_control,
+        last_control_passed=row.last_control_passed,
         plan_sha256=row.plan_sha256,
         shadow=row.shadow,
     )

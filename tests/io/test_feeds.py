@@ -4,14 +4,14 @@ import os
 import signal
 import threading
 import time
-from collections.abc import AsyncIterator, Sequence
+from collections.abc import AsyncGenerator, Sequence
 from dataclasses import replace
 from pathlib import Path
 
 import pytest
 
 from pbm.errors import FeedError, InputError
-from pbm.io.feeds import QUEUE, FileFeed, LineFeed, PacedFeed, run
+from pbm.io.feeds import QUEUE, Feed, FileFeed, LineFeed, PacedFeed, run
 from pbm.io.follow import FollowedFile
 from pbm.io.ndjson import LONGEST_LINE
 from pbm.records.reading import Chunk, Reading, SetAside
@@ -28,13 +28,13 @@ def as_it_is(chunk: Chunk) -> Chunk:
     return chunk
 
 
-class Listed:
+class Listed(Feed):
     """A feed that brings what it is given."""
 
     def __init__(self, items: Sequence[Chunk | Exception], then: threading.Event | None = None) -> None:
         self.items, self.then = items, then
 
-    async def chunks(self) -> AsyncIterator[Chunk]:
+    async def chunks(self) -> AsyncGenerator[Chunk]:
         import asyncio
 
         for item in self.items:
