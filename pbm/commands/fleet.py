@@ -36,7 +36,7 @@ def share_fleet_budget(
     relimit = partial(tune_stream, lab=lab, seed=seed, kept=dict(tuned), budgets=budgets)
     limited = over_streams(folder.history, names, relimit, workers, "Setting limits")
     report_failures(limited)
-    tuned |= {str(done.name): done.result for done in limited if done.result is not None}
+    tuned |= {str(done.name): done.result.plan for done in limited if done.result is not None}
     return {name: share for name, share in shares.items() if tuned[name].monitors}
 
 

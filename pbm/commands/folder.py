@@ -77,6 +77,11 @@ class LabFolder:
         return self.root / "reports"
 
     @property
+    def tuning(self) -> Path:
+        """Why the monitors of plan.toml are what they are."""
+        return self.reports / "tuning.json"
+
+    @property
     def store(self) -> Path:
         """What `pbm watch` writes."""
         return self.root / "watch.sqlite"

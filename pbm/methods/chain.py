@@ -133,6 +133,14 @@ class Tracker:
         """Every parameter by its name in the table."""
         return dict(zip(self.law.parameters, self.par, strict=True))
 
+    def admissible(self, limits: Limits) -> Limits:
+        """The limits, the nearer one moved out where the statistic does not bear them so uneven."""
+        below, above = limits.centre - limits.low, limits.high - limits.centre
+        if max(below, above) <= self.law.most_uneven * min(below, above):
+            return limits
+        least = max(below, above) / self.law.most_uneven
+        return limits._replace(**({"low": limits.centre - least} if below < above else {"high": limits.centre + least}))
+
     def start(self) -> list[float]:
         """The state before the first value, for the live monitor."""
         return self.law.start(self.par, self.centre)

@@ -18,6 +18,8 @@ State: [C+, C-]. Parameters: [k, level, spread].
 
 from pbm.methods.jit import Parameters, State
 
+MOST_UNEVEN = 2.0  # how many times as far out as the other one limit may lie, without the smaller sum hiding a crossing
+
 
 def start(par: Parameters, centre: float) -> list[float]:
     """Both sums at 0; the centre is not used."""

@@ -208,7 +208,7 @@ def calibrated_limits(
         return None
     ends = {side: _side_limit(path, centre, side, found, allowed[side]) for side, found in drawn.items()}
     intervals = {side: _side_interval(centre, side, found, allowed[side]) for side, found in drawn.items()}
-    limits = Limits(ends.get(-1, -math.inf), ends.get(1, math.inf), centre, REARM)
+    limits = tracker.admissible(Limits(ends.get(-1, -math.inf), ends.get(1, math.inf), centre, REARM))
     return CalibratedLimits(limits, intervals.get(-1), intervals.get(1), count_episodes(path, limits))
 
 

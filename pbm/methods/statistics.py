@@ -11,6 +11,7 @@ Names of parameters, the same everywhere:
     exponent    P, of the batch-weighted mean
 """
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Literal
@@ -39,6 +40,8 @@ class Statistic:
         Where the centre stands before the statistic was seen: at the level or spread of the values, or at zero.
     settles
         Whether the centre is then moved to the mean of the in-control path (or stays where it began).
+    most_uneven
+        How many times as far from the centre as the other one limit may lie.
     """
 
     name: str
@@ -49,6 +52,7 @@ class Statistic:
     step: Step
     begins: Literal["level", "spread", "zero"]
     settles: bool
+    most_uneven: float = math.inf
 
     @property
     def parameter(self) -> str:
@@ -78,7 +82,7 @@ STATISTICS = {
         Statistic("share", "moving share", ("window", "low", "high"), "shift seen in the tails",
                   moving_share.start, moving_share.step, "zero", True),
         Statistic("cusum", "CUSUM", ("reference", "level", "spread"), "small sustained shift",
-                  cusum.start, cusum.step, "zero", False),
+                  cusum.start, cusum.step, "zero", False, most_uneven=cusum.MOST_UNEVEN),
         Statistic("batch", "batch-weighted mean", ("window", "exponent"), "shift of indices such as MCV",
                   batch_mean.start, batch_mean.step, "level", True),
     )

@@ -5,7 +5,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 from pbm.errors import InputError
-from pbm.methods.candidates import PARAMETERS, Candidate, candidates
+from pbm.methods.candidates import FAMILIES, Candidate, Family, candidates
 from pbm.methods.chain import Preparation
 from pbm.methods.statistics import STATISTICS
 from pbm.records.plan import Admit
@@ -24,7 +24,7 @@ class ByHand:
     statistic
         A statistic among those that are searched.
     parameter
-        Its window or weight.
+        Its window, weight or reference.
     baseline
         With (True) or without (False) the patient-mix baseline.
     """
@@ -41,22 +41,30 @@ class ByHand:
         Raises
         ------
         InputError
-            If a statistic is not among those searched, or a window or weight stands without its statistic or out of range.
+            If a statistic is not among those searched, or its parameter stands without it or out of range.
         """
-        if self.statistic is not None and self.statistic not in PARAMETERS:
-            raise InputError(f'"{self.statistic}" is not a statistic that tune chooses among: {", ".join(PARAMETERS)}.')
+        if self.statistic is not None and self.statistic not in FAMILIES:
+            raise InputError(f'"{self.statistic}" is not a statistic that tune chooses among: {", ".join(FAMILIES)}.')
         if self.parameter is not None and self.statistic is None:
-            raise InputError(
-                "A weight or a window goes with --statistic: ewma takes --weight, mean and median take --window."
-            )
+            taken = "; ".join(f"{name} takes --{STATISTICS[name].parameter}" for name in FAMILIES)
+            raise InputError(f"A weight, a window or a reference goes with --statistic: {taken}.")
         if self.parameter is not None and self.statistic is not None:
             self._check(STATISTICS[self.statistic].parameter, self.parameter)
 
     def _check(self, name: str, value: float) -> None:
-        fits = 0 < value <= 1 if name == "weight" else value >= 2 and value == int(value)
+        fits, expected = {
+            "weight": (0 < value <= 1, "a weight above 0 and at most 1"),
+            "window": (value >= 2 and value == int(value), "a window of at least 2 results"),
+            "reference": (0 <= value < 10, "a reference of at least 0 SD and below 10"),
+        }[name]
         if not fits:
-            expected = "a weight above 0 and at most 1" if name == "weight" else "a window of at least 2 results"
             raise InputError(f"{self.statistic} takes {expected}, not {value:g}.")
+
+    def among(self, families: Sequence[Family]) -> "ByHand":
+        """The same without a statistic that is not among these families: it belongs to the stream's other monitor."""
+        if self.statistic in (None, *(family.statistic for family in families)):
+            return self
+        return replace(self, statistic=None, parameter=None)
 
     def preparations(self, choices: Sequence[Preparation]) -> list[Preparation]:
         """The choices for truncation and transform that fit.
@@ -80,11 +88,17 @@ class ByHand:
             chosen = list(dict.fromkeys(replace(p, low=low, high=high, winsorize=winsorize) for p in chosen))
         return chosen
 
-    def candidates(self, of: list[Preparation], longest: int) -> list[Candidate]:
-        """The candidates that fit."""
-        if self.statistic is not None and self.parameter is not None:
-            return [Candidate(preparation, self.statistic, self.parameter) for preparation in of]
-        return [c for c in candidates(of, longest) if self.statistic in (None, c.statistic)]
+    def candidates(self, of: Sequence[Preparation], longest: int, families: Sequence[Family]) -> list[Candidate]:
+        """The candidates that fit, of these families of statistics."""
+        chosen = [family for family in families if self.statistic in (None, family.statistic)]
+        if self.parameter is not None:
+            return [
+                Candidate(p, family.statistic, self.parameter, more)
+                for p in of
+                for family in chosen
+                for more in family.more
+            ]
+        return list(candidates(of, longest, chosen))
 
 
 NOTHING_BY_HAND = ByHand()

@@ -10,6 +10,7 @@ from typer.testing import CliRunner, Result
 
 from pbm.commands.main import app
 from pbm.io.plan_file import read_plan
+from pbm.io.tuning_file import read_tuning
 from pbm.records.plan import MonitorPlan
 
 LAB = """
@@ -75,7 +76,7 @@ def test_keep_learns_the_limits_of_an_edited_plan_anew_and_changes_nothing_else(
     assert pbm(laboratory, "tune", "--keep").exit_code == 0
     after = monitor(laboratory)
     assert after.weight == 0.2
-    assert after.limits.high > before.limits.high
+    assert after.limits.ends[1] > before.limits.ends[1]
     assert (after.admit, after.transform, after.baseline) == (before.admit, before.transform, before.baseline)
     assert pbm(laboratory, "tune", "--keep").exit_code == 0
     assert monitor(laboratory) == after
@@ -89,12 +90,30 @@ def test_keep_learns_the_limits_of_an_edited_plan_anew_and_changes_nothing_else(
         (("--winsorize",), "--winsorize says what happens beyond --admit"),
         (("--transform", "sqrt"), "none, log or boxcox"),
         (("--weight", "0.05"), "goes with --statistic"),
+        (("--statistic", "ewma", "--weight", "0.05", "--window", "20"), "found --weight and --window"),
         (("sodium@line-9",), "There is no stream sodium@line-9"),
     ],
 )
 def test_what_cannot_be_is_said_in_one_paragraph(laboratory: Path, arguments: tuple[str, ...], said: str) -> None:
     result = pbm(laboratory, "tune", *arguments)
     assert said in str(result.exception)
+
+
+def test_a_reference_by_hand_makes_a_cusum(laboratory: Path) -> None:
+    assert pbm(laboratory, "tune", "--statistic", "cusum", "--reference", "0.4", "--no-mix", "--quick").exit_code == 2
+    by_hand = ("--admit", "125:155", "--statistic", "cusum", "--reference", "0.4", "--no-mix")
+    assert pbm(laboratory, "tune", *by_hand).exit_code == 0
+    assert (monitor(laboratory).statistic, monitor(laboratory).reference) == ("cusum", 0.4)
+
+
+def test_why_a_monitor_was_chosen_stands_beside_the_plan(laboratory: Path) -> None:
+    assert pbm(laboratory, "tune", "--quick", "--no-mix").exit_code == 0
+    found = read_tuning(laboratory / "reports" / "tuning.json")
+    assert found is not None
+    (stream,) = found.streams.values()
+    assert stream.searches[0].candidates > 90
+    assert pbm(laboratory, "tune", "--keep").exit_code == 0
+    assert read_tuning(laboratory / "reports" / "tuning.json") == found, "no search, no new reasons"
 
 
 def test_a_stream_that_fails_says_why_and_leaves_with_two(laboratory: Path) -> None:
@@ -116,7 +135,7 @@ def test_a_fleet_budget_is_shared_told_and_stands_in_the_plan(laboratory: Path, 
     shared = monitor(tmp_path / "lab")
     assert shared.budget_per_day == pytest.approx(0.01)
     assert pbm(laboratory, "tune", *by_hand).exit_code == 0
-    assert shared.limits.high > monitor(laboratory).limits.high
+    assert shared.limits.ends[1] > monitor(laboratory).limits.ends[1]
 
 
 @pytest.mark.parametrize("arguments", [("appraise",), ("tune", "--keep")])

@@ -7,7 +7,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from pbm.methods.candidates import PARAMETERS, Candidate, candidates, preparations
+from pbm.methods.candidates import BY_ORDER, FAMILIES, WHOLE_GRID, Candidate, candidates, preparations
 from pbm.methods.chain import Preparation
 from pbm.methods.jit import Floats
 from pbm.methods.reported_step import multiples
@@ -45,13 +45,49 @@ def test_truncation_limits_hold_their_share_of_the_results_and_go_outwards_to_th
     }
 
 
+def test_skewed_results_are_also_truncated_on_their_long_side_alone() -> None:
+    x = results(0.1)
+    for given_, sign in ((x, 1), (100 - x, -1)):
+        found = [p for p in offered(given_, 0.1) if math.isinf(p.low) != math.isinf(p.high)]
+        assert {p.winsorize for p in found} == {False, True}
+        assert all(math.isfinite(p.high if sign > 0 else p.low) for p in found)
+    assert not [p for p in offered(results(1.0, skewed=False), 1.0) if math.isinf(p.low) != math.isinf(p.high)]
+
+
+def test_fences_lie_so_many_quartile_distances_outside_the_quartiles() -> None:
+    """Of 0 ... 100 the quartiles are 25 and 75; the fences at 1.5 distances are -50 and 150, at 3 they are -125 and 225."""
+    found = {(p.low, p.high, p.winsorize) for p in offered(np.arange(101.0), 1.0)}
+    assert {(low, high, w) for low, high in ((-50.0, 150.0), (-125.0, 225.0)) for w in (False, True)} <= found
+
+
+def test_a_stream_of_any_kind_has_700_choices_or_more() -> None:
+    for skewed in (False, True):
+        for watches, least in (("shift", 700), ("imprecision", 250)):
+            of = offered(results(1.0, skewed), 1.0)
+            assert len(list(candidates(of, 2_000, WHOLE_GRID.watching(watches)))) >= least
+
+
+def test_a_statistic_that_goes_by_order_is_not_tried_on_a_transform() -> None:
+    found = list(candidates(offered(results(0.1), 0.1), 2_000, WHOLE_GRID.shift))
+    assert {c.preparation.transform for c in found if c.statistic in BY_ORDER} == {"none"}
+    assert {c.preparation.transform for c in found if c.statistic not in BY_ORDER} == {"none", "log", "boxcox"}
+
+
+def test_a_moving_share_counts_beyond_quantiles_of_the_values_that_it_takes() -> None:
+    z = np.append(np.arange(1001.0), np.nan)
+    tracker = Candidate(Preparation(), "share", 50, (("beyond", 0.05),)).tracker(z)
+    assert tracker.named == {"window": 50, "low": 50.0, "high": 950.0}
+    batch = Candidate(Preparation(), "batch", 10, (("exponent", 0.5),)).tracker(z)
+    assert batch.named == {"window": 10, "exponent": 0.5}
+
+
 def test_no_preparation_is_offered_twice_and_none_winsorizes_at_infinity() -> None:
     for x in (results(1.0), np.append(np.full(6000, 7.0), 9.0), np.tile([4.0, 5.0], 3000)):
         found = offered(x, 1.0)
         assert len(found) == len(set(found))
         assert found[0] == Preparation(), "all results as they are come first"
         assert all(p.low < p.high for p in found)
-        assert not any(p.winsorize and math.isinf(p.low) for p in found)
+        assert not any(p.winsorize and math.isinf(p.low) and math.isinf(p.high) for p in found)
 
 
 @pytest.mark.parametrize(
@@ -85,11 +121,14 @@ def test_lambda_is_the_one_that_makes_the_results_normal() -> None:
 
 @given(st.integers(1, 400))
 def test_no_window_is_longer_than_allowed(longest: int) -> None:
-    given_ = list(candidates([Preparation()], longest))
-    assert all((c.parameter if c.statistic != "ewma" else 2 / c.parameter) <= longest for c in given_)
-    everything = [(name, value) for name, values in PARAMETERS.items() for value in values]
-    left_out = [pair for pair in everything if pair not in [(c.statistic, c.parameter) for c in given_]]
-    assert all((value if name != "ewma" else 2 / value) > longest for name, value in left_out)
+    def remembered(statistic: str, parameter: float) -> float:
+        return {"ewma": 2 / parameter, "cusum": 1}.get(statistic, parameter)
+
+    offered_ = {(c.statistic, c.parameter) for c in candidates([Preparation()], longest, WHOLE_GRID.shift)}
+    for family in WHOLE_GRID.shift:
+        for parameter in family.parameters:
+            fits = remembered(family.statistic, parameter) <= longest
+            assert ((family.statistic, parameter) in offered_) == fits
 
 
 def test_the_simplest_candidate_has_no_baseline_no_transform_and_no_truncation() -> None:
@@ -102,3 +141,7 @@ def test_the_simplest_candidate_has_no_baseline_no_transform_and_no_truncation()
     ]
     assert all(plain.complexity < other.complexity for other in less_simple)
     assert less_simple[1].complexity < less_simple[2].complexity < less_simple[3].complexity < less_simple[0].complexity
+
+
+def test_the_order_of_simplicity_begins_with_what_is_easiest_to_explain() -> None:
+    assert FAMILIES[:3] == ("ewma", "mean", "median")

@@ -248,3 +248,19 @@ def test_the_predictive_limit_is_right_on_average_for_exponential_excesses() -> 
     excess = child(10, "excess").exponential(beta, (200_000, m)).mean(axis=1)
     rates = [m * math.exp(-(Tail(0.0, m, e).limit(expected)) / beta) for e in excess.tolist()]
     assert np.mean(rates) == pytest.approx(expected, abs=4 * np.std(rates) / math.sqrt(len(rates)))
+
+
+def test_limits_of_a_cusum_are_never_so_uneven_that_one_sum_could_hide_the_other() -> None:
+    """A skewed history wants a far upper limit; the lower one moves out to half of it, and so alarms less often than it may."""
+    z = np.random.default_rng(3).gamma(0.5, 2, 20_000)
+    tracker = tracker_for(z, "cusum", 0.3)
+    uneven = Limits(-2.0, 9.0, 0.0, 0.5)
+    assert tracker.admissible(uneven) == Limits(-4.5, 9.0, 0.0, 0.5)
+    assert tracker.admissible(Limits(-9.0, 2.0, 0.0, 0.5)) == Limits(-9.0, 4.5, 0.0, 0.5)
+    assert tracker.admissible(Limits(-2.0, 4.0, 0.0, 0.5)) == Limits(-2.0, 4.0, 0.0, 0.5)
+    mean = tracker_for(z, "mean", 20)
+    assert mean.admissible(uneven) == uneven
+    found = calibrated_limits(tracker, z, np.arange(0, 20_001, 500), 2.0, np.random.default_rng(4), draws=20)
+    assert found is not None
+    below, above = -found.limits.low, found.limits.high
+    assert max(below, above) <= 2 * min(below, above) * (1 + 1e-12)

@@ -14,7 +14,7 @@ from pbm.methods.chain import Preparation, Tracker, tracker_for
 from pbm.methods.faults import Fault
 from pbm.methods.jit import Floats
 from pbm.methods.limits import quick_limits
-from pbm.methods.search import Runner, best_of, limited, scores, simplest_near_best
+from pbm.methods.search import Runner, best_of, first_of, limited, scores, simplest_near_best
 from pbm.methods.trials import alarm_and_stop, trial
 from tests import naive
 from tests.methods import exposed
@@ -112,5 +112,33 @@ def test_with_a_single_onset_only_an_equal_score_is_near() -> None:
 def test_the_best_are_those_with_the_lowest_mean(score: Floats, count: int) -> None:
     kept = best_of(RUNNERS, score, count)
     means = dict(zip(RUNNERS, score.mean(axis=1).tolist(), strict=True))
-    assert len(kept) == min(count, 5)
-    assert sorted(means[r] for r in kept) == sorted(means.values())[:count]
+    assert sorted(means[r] for r in kept[:count]) == sorted(means.values())[:count]
+
+
+@given(SCORES, st.integers(1, 7))
+def test_the_best_of_every_family_is_kept_with_them(score: Floats, count: int) -> None:
+    kept = best_of(RUNNERS, score, count)
+    means = dict(zip(RUNNERS, score.mean(axis=1).tolist(), strict=True))
+    assert len(set(kept)) == len(kept)
+    for family in ("ewma", "mean", "median"):
+        best = min(means[r] for r in RUNNERS if r.candidate.statistic == family)
+        assert best in [means[r] for r in kept if r.candidate.statistic == family]
+    assert all(
+        [r.candidate.statistic for r in kept].count(late.candidate.statistic) == 1 for late in kept[min(count, 5) :]
+    )
+
+
+def test_of_monitors_that_watch_together_the_first_alarm_counts() -> None:
+    one, other = np.array([5, 0, 9, 0]), np.array([7, 3, 2, 0])
+    assert first_of([one, other]).tolist() == [5, 3, 2, 0]
+    assert first_of([one]).tolist() == one.tolist()
+
+
+def test_a_team_is_scored_by_its_first_alarm() -> None:
+    history = stretch(3000)
+    followed = onsets(history, [500, 900, 1400, 2000], length=400)
+    runners = limited(history, CANDIDATES[:2], 3.0)
+    tried = trial(history, Fault("shift", 1.0, "TEa"), followed, np.ones(5))
+    stop = partial(alarm_and_stop, lag_results=0, lag_microseconds=0, time=history.time)
+    first, second, both = scores(history, runners, [(tried, 1.0)], stop, teams=[(0,), (1,), (0, 1)])
+    assert both.tolist() == np.minimum(first, second).tolist()

@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from pbm.methods.baseline import Mix
-from pbm.methods.candidates import candidates, preparations
+from pbm.methods.candidates import WHOLE_GRID, candidates, preparations
 from pbm.methods.chain import Tracker
 from pbm.methods.expected import follow
 from pbm.methods.faults import Chance, Fault, Reporting
@@ -34,7 +34,7 @@ def chosen_for(shift: float) -> Runner:
         Reporting(0.001),
         Chance.draw(RESULTS, random),
     )
-    given = list(candidates(preparations(value, 0.001, random), longest=2_000))
+    given = list(candidates(preparations(value, 0.001, random), 2_000, WHOLE_GRID.shift))
     runners = limited(stretch, given, RESULTS / ARL)
     at = draw_onsets(1_000, RESULTS - 3_000, onsets_for(1), random)
     onsets = follow(at, at + 3_000, np.zeros(0, dtype=np.int64), 1)

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from pbm.errors import InputError
-from pbm.methods.candidates import PARAMETERS, preparations
+from pbm.methods.candidates import WHOLE_GRID, preparations
 from pbm.methods.chain import Preparation
 from pbm.methods.seeds import child
 from pbm.records.plan import Admit
@@ -23,7 +23,9 @@ def choices(x: np.ndarray, step: float) -> list[Preparation]:
 def test_nothing_by_hand_leaves_every_candidate() -> None:
     given = choices(SKEWED, 0.1)
     assert NOTHING_BY_HAND.preparations(given) == given
-    assert {c.statistic for c in NOTHING_BY_HAND.candidates(given, 1_000)} == set(PARAMETERS)
+    assert {c.statistic for c in NOTHING_BY_HAND.candidates(given, 1_000, WHOLE_GRID.shift)} == {
+        family.statistic for family in WHOLE_GRID.shift
+    }
 
 
 def test_truncation_limits_by_hand_replace_all_others_on_every_transform() -> None:
@@ -42,13 +44,26 @@ def test_a_box_cox_by_hand_is_refused_where_no_lambda_is_estimated() -> None:
 
 
 def test_a_weight_by_hand_need_not_be_among_those_searched() -> None:
-    (candidate,) = ByHand(statistic="ewma", parameter=0.123).candidates([Preparation()], 1_000)
+    (candidate,) = ByHand(statistic="ewma", parameter=0.123).candidates([Preparation()], 1_000, WHOLE_GRID.shift)
     assert (candidate.statistic, candidate.parameter) == ("ewma", 0.123)
 
 
 def test_a_statistic_by_hand_leaves_its_parameter_to_the_search() -> None:
-    found = ByHand(statistic="mean").candidates([Preparation()], 1_000)
-    assert [c.parameter for c in found] == [float(n) for n in PARAMETERS["mean"]]
+    found = ByHand(statistic="mean").candidates([Preparation()], 1_000, WHOLE_GRID.shift)
+    (family,) = (one for one in WHOLE_GRID.shift if one.statistic == "mean")
+    assert [c.parameter for c in found] == list(family.parameters)
+
+
+def test_a_window_by_hand_leaves_the_second_parameter_to_the_search() -> None:
+    found = ByHand(statistic="batch", parameter=33).candidates([Preparation()], 1_000, WHOLE_GRID.shift)
+    assert [(c.parameter, dict(c.more)["exponent"]) for c in found] == [(33, 0.5), (33, 1.0)]
+
+
+def test_a_statistic_by_hand_says_nothing_of_the_monitor_that_does_not_use_it() -> None:
+    admit = Admit(low=125)
+    given = ByHand(admit=admit, statistic="sd", parameter=50)
+    assert given.among(WHOLE_GRID.imprecision) == given
+    assert given.among(WHOLE_GRID.shift) == ByHand(admit=admit)
 
 
 @pytest.mark.parametrize(
@@ -58,6 +73,7 @@ def test_a_statistic_by_hand_leaves_its_parameter_to_the_search() -> None:
         ("ewma", 50, "a weight above 0 and at most 1, not 50"),
         ("mean", 0.5, "a window of at least 2 results, not 0.5"),
         ("mean", 20.5, "a window of at least 2"),
+        ("cusum", 12, "a reference of at least 0 SD and below 10, not 12"),
         ("sum", None, '"sum" is not a statistic'),
     ],
 )

@@ -10,14 +10,19 @@ from typing import Any
 import numpy as np
 import pytest
 
+from pbm.errors import InputError
 from pbm.methods.alarm import episodes
+from pbm.methods.candidates import QUICK_GRID
 from pbm.methods.clock_time import local_days
 from pbm.methods.intervals import poisson_interval
+from pbm.records.laboratory import Lab
 from pbm.records.plan import MonitorPlan, StreamPlan
 from pbm.records.stream import StreamHistory, StreamName
+from pbm.records.tuning import StreamTuning
+from pbm.stages import tune
+from pbm.stages.by_hand import NOTHING_BY_HAND, ByHand
 from pbm.stages.from_plan import limits, preparation, tracker
 from pbm.stages.surroundings import Surroundings
-from pbm.stages.tune import tune_stream
 from tests.stages.offline import DAY, SODIUM, START, history, laboratory, sodium, times
 
 DAYS, PER_DAY = 24, 45
@@ -27,6 +32,11 @@ RANDOM = np.random.default_rng(5)
 SODIUM_HISTORY = sodium(DAYS, PER_DAY)
 NORMAL = np.rint(RANDOM.normal(139, 3, N))
 LOGNORMAL = np.round(np.exp(RANDOM.normal(0.3, 0.6, N)), 2).clip(0.01)
+
+
+def tune_stream(given: StreamHistory, lab: Lab, seed: int, by_hand: ByHand = NOTHING_BY_HAND) -> StreamPlan:
+    """The plan, from the quick search."""
+    return tune.tune_stream(given, lab, seed, by_hand, grid=QUICK_GRID).plan
 
 
 @cache
@@ -231,3 +241,94 @@ def test_a_lag_in_minutes_is_taken() -> None:
         tune_stream(sodium(DAYS, PER_DAY), laboratory({}, lag=lag), 1).reason for lag in ("600 min", "1 min")
     )
     assert gain_told(slow) < gain_told(quick)
+
+
+SHIFTS = {"kind": "shift", "sizes": [0.5, 1, 2], "unit": "TEa"}
+NOISE = {"kind": "noise", "sizes": [3, 4], "weight": 3}
+BUSY = sodium(30, 200)
+
+
+@cache
+def both_looked_for() -> tuple[StreamPlan, StreamTuning]:
+    found = tune.tune_stream(BUSY, laboratory(faults=[SHIFTS, NOISE]), 1, grid=QUICK_GRID)
+    assert found.reasons is not None
+    return found.plan, found.reasons
+
+
+def test_where_noise_is_guarded_against_a_second_monitor_watches_for_it_with_its_part_of_the_budget() -> None:
+    plan, reasons = both_looked_for()
+    shift, imprecision = plan.monitors
+    assert (shift.watches, imprecision.watches) == ("shift", "imprecision")
+    assert imprecision.statistic in {"sd", "ewsd"}
+    assert imprecision.limits.low is None and imprecision.limits.high is not None
+    assert imprecision.limits_interval is not None and imprecision.limits_interval.low is None
+    assert shift.budget_per_day + imprecision.budget_per_day == pytest.approx(1 / 30)
+    assert "pays" in reasons.together and "does not" not in reasons.together
+    assert [search.watches for search in reasons.searches] == ["shift", "imprecision"]
+
+
+def test_a_second_monitor_that_hardly_gains_is_not_taken_and_that_is_told() -> None:
+    hardly = {"kind": "noise", "sizes": [1.05], "weight": 0.01}
+    found = tune.tune_stream(BUSY, laboratory(faults=[SHIFTS, hardly]), 1, grid=QUICK_GRID)
+    assert [one.watches for one in found.plan.monitors] == ["shift"]
+    assert found.plan.monitors[0].budget_per_day == pytest.approx(1 / 30)
+    assert found.reasons is not None and "does not pay" in found.reasons.together
+
+
+def test_where_only_noise_is_guarded_against_the_one_monitor_watches_for_imprecision() -> None:
+    plan = tune_stream(BUSY, laboratory(faults=[NOISE]), 1)
+    assert [one.watches for one in plan.monitors] == ["imprecision"]
+    assert "4 times the analytic SD" in plan.reason
+
+
+def test_two_monitors_that_are_kept_get_new_limits_and_keep_their_parts_of_the_budget() -> None:
+    plan, _ = both_looked_for()
+    lab = laboratory(faults=[SHIFTS, NOISE])
+    name = str(SODIUM)
+    again = tune.tune_stream(BUSY, lab, 1, kept={name: plan}, budgets={name: 1 / 15}).plan
+    assert [one.statistic for one in again.monitors] == [one.statistic for one in plan.monitors]
+    for before, after in zip(plan.monitors, again.monitors, strict=True):
+        assert after.budget_per_day == pytest.approx(2 * before.budget_per_day)
+        assert after.limits.ends[1] < before.limits.ends[1]
+
+
+def test_more_alarms_buy_fewer_unreliable_results_with_two_monitors_too() -> None:
+    plan, _ = both_looked_for()
+    curve = tune.trade_off(BUSY, laboratory(faults=[SHIFTS, NOISE]), 1, {str(SODIUM): plan})
+    assert (np.diff(curve.budget) > 0).all()
+    assert curve.cost[-1] < curve.cost[0]
+
+
+def test_a_statistic_for_imprecision_by_hand_needs_noise_among_the_errors() -> None:
+    with pytest.raises(InputError, match=r"sd is not tried for sodium.*\[analytes.sodium\] lists under faults"):
+        tune_stream(BUSY, laboratory(faults=[SHIFTS]), 1, ByHand(statistic="sd"))
+    plan = tune_stream(BUSY, laboratory(faults=[SHIFTS, NOISE]), 1, ByHand(statistic="sd", parameter=40))
+    assert [(one.statistic, one.window) for one in plan.monitors if one.watches == "imprecision"] == [("sd", 40)]
+
+
+def test_the_reasons_hold_everything_that_was_tried_and_what_the_runners_up_would_have_cost() -> None:
+    _, reasons = both_looked_for()
+    shift, _ = reasons.searches
+    scored = [score for surface in shift.surfaces for row in surface.scores for score in row if score is not None]
+    assert len(scored) == shift.candidates == shift.rounds[0][0]
+    assert shift.rounds[0][0] > shift.rounds[-1][0] and shift.rounds[0][1] < shift.rounds[-1][1]
+    assert {surface.statistic for surface in shift.surfaces} == {"EWMA", "moving mean", "moving median"}
+    assert len(shift.runners_up) == 2
+    assert all(one.score == pytest.approx(shift.score * (1 + one.costs), rel=0.01) for one in shift.runners_up)
+    assert [one.score for one in shift.runners_up] == sorted(one.score for one in shift.runners_up)
+    assert shift.score < shift.schedule_alone
+    assert {row for surface in shift.surfaces for row in surface.rows} <= set(range(len(reasons.truncations)))
+
+
+def test_the_reasons_say_what_each_truncation_keeps_and_how_much_of_a_shift_it_lets_through() -> None:
+    _, reasons = both_looked_for()
+    stretch = Surroundings.of(SODIUM, laboratory(), 1).stretch(BUSY.rows(slice(0, 20 * 200)))
+    for one in reasons.truncations:
+        inside = np.ones(len(stretch.value), dtype=bool)
+        if one.mode == "truncate":
+            inside &= stretch.value >= (-math.inf if one.low is None else one.low)
+            inside &= stretch.value <= (math.inf if one.high is None else one.high)
+        assert one.keeps == pytest.approx(inside.mean(), abs=6e-4)
+    none, *others = sorted(reasons.truncations, key=lambda one: -one.moves)
+    assert none.low is None and none.moves == pytest.approx(1, abs=0.02)
+    assert min(one.moves for one in others) < 0.8
