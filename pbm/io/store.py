@@ -78,11 +78,15 @@ class Store:
         with told(self.place), self._connection.begin():
             return self._connection.execute(select(feeds.c.position).where(feeds.c.source == source)).scalar() or ""
 
-    def earlier(self, some: Iterable[Result]) -> Earlier:
-        """What is kept of the same specimens and patients; of results without a specimen, what is kept of the same moment."""
+    def earlier(self, some: Iterable[Result], messages: Iterable[MessageKey] = ()) -> Earlier:
+        """What is kept of the same specimens and patients; of results without a specimen, what is kept of the same moment.
+
+        Of messages, those with the same sender and number that were answered.
+        """
         asked = list(some)
         found = Earlier()
         with told(self.place), self._connection.begin():
+            found.answered.update(store_rows.codes_answered(self._connection, messages))
             if named := {one.specimen for one in asked if one.specimen}:
                 self._find_runs(named, found)
             if unnamed := {one.time for one in asked if not one.specimen}:
@@ -116,11 +120,6 @@ class Store:
             select(r.stream, r.patient, r.time).where(VISITS, r.patient.in_(patients), counted)
         ):
             found.visits.setdefault((names[stream], patient), []).append(time)
-
-    def answered(self, keys: Iterable[MessageKey]) -> dict[MessageKey, str]:
-        """Of some messages those that were answered, with the code that was given."""
-        with told(self.place), self._connection.begin():
-            return store_rows.codes_answered(self._connection, keys)
 
     # What is kept
 

@@ -74,14 +74,16 @@ def snapshots(connection: Connection) -> list[Snapshot]:
 
 
 def codes_answered(connection: Connection, keys: Iterable[MessageKey]) -> dict[MessageKey, str]:
-    """The messages answered that have sender and control id in common with some, with the code."""
-    asked = {(one.sender, one.control_id) for one in keys}
-    same = messages.c.control_id.in_({control_id for _, control_id in asked})
-    rows = connection.execute(select(messages).where(messages.c.sender.in_({sender for sender, _ in asked}), same))
+    """Messages that were answered and have sender and number of one of those given, with the code; the content may be another."""
+    numbers = {(one.sender, one.control_id) for one in keys}
+    asked = select(messages.c.sender, messages.c.control_id, messages.c.sha256, messages.c.code).where(
+        messages.c.sender.in_({sender for sender, _ in numbers}),
+        messages.c.control_id.in_({control_id for _, control_id in numbers}),
+    )
     return {
-        MessageKey(row.sender, row.control_id, row.sha256.hex()): row.code
-        for row in rows
-        if (row.sender, row.control_id) in asked
+        MessageKey(sender, control_id, sha256.hex()): code
+        for sender, control_id, sha256, code in (connection.execute(asked) if numbers else ())
+        if (sender, control_id) in numbers
     }
 
 

@@ -152,14 +152,17 @@ BEAT = Heartbeat(START, START + 1, 42, None, None)
 
 def test_a_message_is_answered_once_the_batch_that_holds_it_is_kept(place: Place) -> None:
     other = KEY._replace(sha256="cd" * 32)
+    asked = [other, KEY._replace(sender="another"), KEY._replace(control_id="000124")]
     with begun(place) as store:
-        assert store.answered([KEY]) == {}
+        assert store.earlier([], [KEY]).answered == {}
         store.keep(batch(messages=[Answered(KEY, "AA", 5)]))
-        assert store.answered([KEY, other, KEY._replace(sender="another")]) == {KEY: "AA"}
+        assert store.earlier([], asked).answered == {KEY: "AA"}, "by its number, whatever it holds"
         with pytest.raises(FeedError):
             store.keep(batch(results=results_kept(90), alarms=[], set_aside=[], messages=[Answered(KEY, "AA", 6)]))
         assert len(store.recent_results(SODIUM, 99)) == 3
-    assert tables(place)["messages"] == [("LIS^TERN BAY", "000123", bytes.fromhex("ab" * 32), "AA", 5, 3)]
+        store.keep(Batch(messages=[Answered(other, "AE", 7)]))
+        assert store.earlier([], [KEY]).answered == {KEY: "AA", other: "AE"}
+    assert tables(place)["messages"][0] == ("LIS^TERN BAY", "000123", bytes.fromhex("ab" * 32), "AA", 5, 3)
 
 
 def test_annotations_events_and_notices_come_back_as_they_were(place: Place) -> None:
