@@ -52,11 +52,14 @@ class Alarm:
     estimate
         Onset and size; None where the statistic does not tell to which side results have moved.
     last_control
-        UTC microseconds of the last control event scheduled before the alarm; None where the schedule goes by counts or is not given.
+        UTC microseconds of the last control event before the alarm: the last one recorded, else the last one scheduled; None where none is
+        recorded and the schedule goes by counts or is not given.
     plan_sha256
         Which plan was in force.
     shadow
         Whether it is kept off the bench: the watch ran on trial.
+    last_control_passed
+        Whether its controls were accepted; None where its outcome is not known.
     """
 
     stream: StreamName
@@ -73,3 +76,4 @@ class Alarm:
     last_control: int | None = None
     plan_sha256: str = ""
     shadow: bool = False
+    last_control_passed: bool | None = None
