@@ -24,6 +24,7 @@ import numpy as np
 
 from pbm.methods.alarm import REARM, Limits, count_episodes, episodes
 from pbm.methods.chain import Tracker
+from pbm.methods.intervals import poisson_mixture_interval
 from pbm.methods.jit import Floats, Integers
 from pbm.methods.lattice import lattice_of
 
@@ -135,12 +136,19 @@ class CalibratedLimits:
     episodes
         Episodes of the training path at these limits. A statistic on a lattice may stay well below what the budget allows, since its
         limits can only lie between lattice points.
+    rates
+        Episodes at these limits in a history of the same length, as each pseudo-history would have it.
     """
 
     limits: Limits
     low_interval: tuple[float, float] | None
     high_interval: tuple[float, float] | None
     episodes: int
+    rates: tuple[float, ...]
+
+    def predicted(self, length: float) -> tuple[int, int]:
+        """90 % interval of the episodes in later days, as many as `length` times the training days; the limit's uncertainty included."""
+        return poisson_mixture_interval([rate * length for rate in self.rates])
 
 
 def _resampled_days(z: Floats, first: Integers, random: np.random.Generator) -> Floats:
@@ -198,18 +206,26 @@ def calibrated_limits(
     tails = {side: tail for side, count in allowed.items() if (tail := tail_of(path, centre, side, count)) is not None}
     if len(tails) < len(allowed):
         return None
-    drawn: dict[int, list[Tail]] = {side: [] for side in tails}
+    drawn: dict[int, list[Tail | None]] = {side: [] for side in tails}
     for _ in range(draws):
         pseudo = tracker.path(_resampled_days(z, day_starts, random))
         for side, tail in tails.items():
-            if (again := _tail_beyond(side * (pseudo - centre), tail.threshold)) is not None:
-                drawn[side].append(again)
-    if not all(drawn.values()):
+            drawn[side].append(_tail_beyond(side * (pseudo - centre), tail.threshold))
+    told = {side: [tail for tail in again if tail is not None] for side, again in drawn.items()}
+    if not all(told.values()):
         return None
-    ends = {side: _side_limit(path, centre, side, found, allowed[side]) for side, found in drawn.items()}
-    intervals = {side: _side_interval(centre, side, found, allowed[side]) for side, found in drawn.items()}
+    ends = {side: _side_limit(path, centre, side, found, allowed[side]) for side, found in told.items()}
+    intervals = {side: _side_interval(centre, side, found, allowed[side]) for side, found in told.items()}
     limits = tracker.admissible(Limits(ends.get(-1, -math.inf), ends.get(1, math.inf), centre, REARM))
-    return CalibratedLimits(limits, intervals.get(-1), intervals.get(1), count_episodes(path, limits))
+    episodes_now = count_episodes(path, limits)
+    return CalibratedLimits(limits, intervals.get(-1), intervals.get(1), episodes_now, _rates(drawn, limits))
+
+
+def _rates(drawn: dict[int, list[Tail | None]], limits: Limits) -> tuple[float, ...]:
+    """Episodes of each pseudo-history beyond the limits, both sides together; a side that shows no tail has none."""
+    distance = {-1: limits.centre - limits.low, 1: limits.high - limits.centre}
+    sides = [[tail.rate(distance[side]) if tail else 0.0 for tail in again] for side, again in drawn.items()]
+    return tuple(map(sum, zip(*sides, strict=True)))
 
 
 def _side_limit(path: Floats, centre: float, side: int, tails: list[Tail], expected: float) -> float:

@@ -145,12 +145,15 @@ class HeldOut(Written):
         Exact 90 % Poisson interval of the expected count.
     kept
         The budget lies inside the interval or the count is below it.
+    predicted
+        Between which counts the training days expected the alarms of these days, with 90 %, the uncertainty of the limits included.
     """
 
     days: int
     episodes: int
     interval: Interval
     kept: bool
+    predicted: tuple[int, int] | None = None
 
 
 def _only(known: tuple[str, ...], effects: dict[str, float]) -> dict[str, float]:

@@ -31,4 +31,7 @@ def monitor_in_plan(ground: ProvingGround, whole: Stretch, member: Member, limit
 def _held_out(ground: ProvingGround, whole: Stretch, member: Member, limits: CalibratedLimits) -> HeldOut:
     path = member.runner.tracker.path(whole.prepared(member.runner.candidate.preparation))
     found = held_out_alarms(path, limits.limits, ground.split, member.budget)
-    return HeldOut(days=found.days, episodes=found.episodes, interval=found.interval, kept=found.kept)
+    predicted = limits.predicted(found.days / ground.split.training_days)
+    return HeldOut(
+        days=found.days, episodes=found.episodes, interval=found.interval, kept=found.kept, predicted=predicted
+    )
