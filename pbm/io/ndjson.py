@@ -1,8 +1,10 @@
-"""NDJSON: one result a line in, one alarm a line out.
+"""NDJSON: one result or laboratory event a line in, one alarm a line out.
 
 {"time":"2031-03-02T07:14:05Z","analyte":"sodium","analyser":"line-2","value":"138","unit":"mmol/L","specimen":"24-118233","ward":"ED"}
 
-and where they are known `"sex":"F","age":"67"`, `kind` and `patient`.
+and where they are known `"sex":"F","age":"67"`, `kind` and `patient`. A line with the key `event` is a laboratory event:
+
+{"time":"2031-03-02T10:00:00Z","event":"reagent lot","analyte":"sodium","analyser":"line-2","detail":"lot 4711"}
 """
 
 import json
@@ -12,15 +14,16 @@ from datetime import UTC, datetime
 from typing import Any
 
 from pbm.records.alarm import Alarm
-from pbm.records.reading import Reading, SetAside
+from pbm.records.reading import EventReading, Reading, SetAside
 
 LONGEST_LINE = 2**16
 _FIELDS = ("time", "analyte", "analyser", "value", "unit", "specimen", "ward", "kind", "patient", "sex", "age")
+_EVENT_FIELDS = ("time", "event", "analyte", "analyser", "detail")
 _TIMES = ("time", "onset", "onset_low", "onset_high", "last_control")
 _WITHOUT_BOUND = (math.inf, -math.inf)
 
 
-def read_line(place: int, line: bytes) -> Reading | SetAside:
+def read_line(place: int, line: bytes) -> Reading | EventReading | SetAside:
     """A line of a feed.
 
     Parameters
@@ -32,8 +35,8 @@ def read_line(place: int, line: bytes) -> Reading | SetAside:
 
     Returns
     -------
-    Reading or SetAside
-        Other keys than those of a result are ignored; `value` may be a number.
+    Reading, EventReading or SetAside
+        Other keys than those of a result or event are ignored; `value` may be a number.
     """
     if not line.strip():
         return SetAside(place, "blank line")
@@ -48,11 +51,12 @@ def read_line(place: int, line: bytes) -> Reading | SetAside:
         return SetAside(place, "not JSON")
     if not isinstance(given, dict):
         return SetAside(place, "not a JSON object")
-    texts = ["" if (text := given.get(name)) is None else text for name in _FIELDS]
-    wrong = next((name for name, text in zip(_FIELDS, texts, strict=True) if not isinstance(text, str)), None)
+    kind, fields = (EventReading, _EVENT_FIELDS) if "event" in given else (Reading, _FIELDS)
+    texts = ["" if (text := given.get(name)) is None else text for name in fields]
+    wrong = next((name for name, text in zip(fields, texts, strict=True) if not isinstance(text, str)), None)
     if wrong:
         return SetAside(place, "neither text nor a number", wrong)
-    return Reading(place, *texts) if _is_unicode(texts) else SetAside(place, "not Unicode text")
+    return kind(place, *texts) if _is_unicode(texts) else SetAside(place, "not Unicode text")
 
 
 def _is_unicode(texts: list[str]) -> bool:

@@ -6,6 +6,7 @@
 - Results are taken in order of arrival and never held back: an alarm must not wait for a later result, and neighbours may swap without
   harm to a statistic. One that is older than the stream's newest results by more than `SLACK` is late: it is kept, and no monitor takes it.
   The bar is the fifth newest time, so that a few times that lie in the future do not shut out what follows.
+- Laboratory events reach the monitors that they are about (events.py); what comes, and when, says who is quiet (liveness.py, skew.py).
 """
 
 from bisect import insort
@@ -15,10 +16,12 @@ from dataclasses import replace
 
 from pbm.errors import PlanError
 from pbm.records.alarm import Alarm
+from pbm.records.event import EventKind, LabEvent
 from pbm.records.laboratory import Lab
 from pbm.records.message import Annotation, Answered
+from pbm.records.notice import Notice
 from pbm.records.plan import Plan
-from pbm.records.reading import Chunk, Correction, Item, Message, Reading, Remark, SetAside
+from pbm.records.reading import Chunk, Correction, EventReading, Item, Message, Reading, Remark, SetAside
 from pbm.records.result import Result
 from pbm.records.snapshot import (
     CORRECTION,
@@ -35,8 +38,12 @@ from pbm.records.snapshot import (
 )
 from pbm.records.stream import RERUN_HOURS, StreamName
 from pbm.stages.estimate import WINDOW
+from pbm.stages.event_reading import read_event
+from pbm.stages.events import EventDesk
+from pbm.stages.liveness import CLOCK, Liveness
 from pbm.stages.monitor import StreamMonitor
 from pbm.stages.reading import Reader
+from pbm.stages.skew import ClockSkew
 
 SLACK = 90 * 60_000_000  # microseconds; more than the hour that clocks are put back
 NEWEST = 5
@@ -67,6 +74,19 @@ class LiveStream:
         del self.newest[:-NEWEST]
         return [alarm for monitor in self.monitors if (alarm := monitor.take(result))]
 
+    def note(self, time: int, kind: EventKind) -> int:
+        """Hand a laboratory event to the monitors; how many they are."""
+        for monitor in self.monitors:
+            monitor.note(time, kind)
+        return len(self.monitors)
+
+    def said(self) -> list[Notice]:
+        """What the monitors have to say since this was last asked."""
+        said = [notice for monitor in self.monitors for notice in monitor.said]
+        for monitor in self.monitors:
+            monitor.said.clear()
+        return said
+
 
 class Live:
     """The streams of a plan on the live feed.
@@ -75,6 +95,15 @@ class Live:
     ----------
     streams
         Those with a monitor.
+    liveness
+        Who is quiet.
+
+    Parameters
+    ----------
+    lab, plan, plan_sha256
+        The laboratory, the plan, and the hash by which alarms name it.
+    shadow
+        Whether alarms are marked as those of a watch on trial.
 
     Raises
     ------
@@ -82,7 +111,8 @@ class Live:
         If the plan watches what the laboratory does not describe, or describes in another unit.
     """
 
-    def __init__(self, lab: Lab, plan: Plan, plan_sha256: str) -> None:
+    def __init__(self, lab: Lab, plan: Plan, plan_sha256: str, *, shadow: bool = False) -> None:
+        self._shadow = shadow
         self._repeats = {key: one.repeat_hours for key, one in lab.analytes.items() if one.repeat_hours}
         self.streams: dict[StreamName, LiveStream] = {}
         for text, stream in plan.streams.items():
@@ -92,6 +122,8 @@ class Live:
                 self.streams[name] = LiveStream(
                     [StreamMonitor(name, i, one, lab, plan_sha256) for i, one in enumerate(stream.monitors)]
                 )
+        self.liveness, self.skew = Liveness(plan, lab.laboratory.zone), ClockSkew()
+        self.desk = EventDesk(lab.events, self.streams)
 
     @property
     def monitors(self) -> list[StreamMonitor]:
@@ -103,6 +135,9 @@ class Live:
         kept: Iterable[Snapshot],
         newest: Mapping[StreamName, Sequence[int]],
         recent: Callable[[StreamName, int], list[Result]],
+        events: Iterable[LabEvent] = (),
+        clock: str = "",
+        notices: Sequence[Notice] = (),
     ) -> list[StreamMonitor]:
         """Go on from the states that were kept; a monitor whose settings have changed begins afresh.
 
@@ -114,6 +149,12 @@ class Live:
             The newest times that each stream has taken, ascending.
         recent
             The last results of a stream that counted, at most so many, in order of arrival.
+        events
+            The laboratory events that were kept.
+        clock
+            Position of the feed "clock": when everything was last heard.
+        notices
+            Those that are open.
 
         Returns
         -------
@@ -121,6 +162,9 @@ class Live:
             The monitors that go on.
         """
         states = {(one.stream, one.settings): one.state for one in kept}
+        self.desk.go_on(events)
+        self.liveness.go_on(clock, notices)
+        self.skew.go_on(notices)
         going_on = []
         for name, stream in self.streams.items():
             stream.newest = list(newest.get(name, ()))
@@ -140,10 +184,24 @@ class Live:
         earlier
             What is kept of the same specimens; results taken here are added to it.
         """
-        work = _Work(self.streams, self._repeats, earlier)
+        work = _Work(self, earlier)
         for chunk in chunks:
             work.take(chunk)
         return work.batch()
+
+    def tick(self, now: int) -> Batch:
+        """Nothing came until `now`, by the clock of the computer: what there is to tell of that."""
+        self.liveness.tick(now)
+        return _Work(self, Earlier()).batch()
+
+    def alarms(self, result: Result) -> list[Alarm]:
+        """Take a result that counts; the alarms that it opens."""
+        raised = self.streams[result.stream].take(result)
+        return [replace(alarm, shadow=True) for alarm in raised] if self._shadow else raised
+
+    def repeat_hours(self, name: StreamName) -> float:
+        """Hours within which a patient's results count once; 0 where all count."""
+        return self._repeats.get(name.analyte, 0.0)
 
 
 def _check_it_fits(lab: Lab, name: StreamName, unit: str) -> None:
@@ -161,10 +219,8 @@ def _check_it_fits(lab: Lab, name: StreamName, unit: str) -> None:
 class _Work:
     """One batch in the making."""
 
-    def __init__(
-        self, streams: Mapping[StreamName, LiveStream], repeats: Mapping[str, float], earlier: Earlier
-    ) -> None:
-        self._streams, self._repeats, self._earlier = streams, repeats, earlier
+    def __init__(self, live: Live, earlier: Earlier) -> None:
+        self._live, self._streams, self._earlier = live, live.streams, earlier
         self._results: list[KeptResult] = []
         self._alarms: list[tuple[int, Alarm]] = []
         self._set_aside: list[tuple[str, SetAside]] = []
@@ -176,12 +232,19 @@ class _Work:
         self._numbers = {key[:2] for key in earlier.answered}  # sender and control id
         self._annotations: list[Annotation] = []
         self._remarks: list[tuple[str, Remark]] = []
+        self._events: list[tuple[int, LabEvent]] = []
+        self._last = 0
 
     def take(self, chunk: Chunk) -> None:
         edition, items = Edition(chunk.source, chunk.edition), self._not_taken_before(chunk)
+        if chunk.arrived is not None:
+            self._live.liveness.tick(chunk.arrived)
+            self._last = chunk.arrived
         for item in items:
             if isinstance(item, Result):
-                self._take_result(item, edition)
+                self._take_result(item, edition, chunk.arrived)
+            elif isinstance(item, LabEvent):
+                self._take_event(item)
             elif isinstance(item, SetAside):
                 self._tallies[item.reason] += 1
                 self._set_aside.append((chunk.source, item))
@@ -216,11 +279,27 @@ class _Work:
         self._earlier.answered[message.key] = message.code
         return [Remark(message.place, REUSED_NUMBER, message.key.control_id)] if met else []
 
-    def _take_result(self, result: Result, edition: Edition) -> None:
+    def _take_event(self, event: LabEvent) -> None:
+        taken = self._live.desk.take(event)
+        if taken is None:
+            self._tallies[DUPLICATE] += 1
+            return
+        self._events.append((len(self._results), taken[0]))
+        self._moved |= {name: self._streams[name] for name in taken[1]}
+
+    def _hear(self, result: Result, arrived: int | None) -> None:
+        """A sign of life."""
+        liveness = self._live.liveness
+        liveness.hear(result.stream, liveness.believed(result.time) if arrived is None else arrived)
+        if arrived is not None:
+            self._live.skew.hear(result.stream.analyser, result.time, arrived)
+
+    def _take_result(self, result: Result, edition: Edition, arrived: int | None) -> None:
         reason = self._copy_of_another(result, edition)
         if reason == DUPLICATE:
             self._tallies[DUPLICATE] += 1
             return
+        self._hear(result, arrived)
         stream = self._streams.get(result.stream)
         if not reason and result.patient:
             reason = self._repeat(result)
@@ -232,7 +311,7 @@ class _Work:
             self._tallies[reason] += 1
         elif stream is not None:
             self._moved[result.stream] = stream
-            self._alarms += [(len(self._results) - 1, alarm) for alarm in stream.take(result)]
+            self._alarms += [(len(self._results) - 1, alarm) for alarm in self._live.alarms(result)]
 
     def _copy_of_another(self, result: Result, edition: Edition) -> str:
         """Why a result does not count; "" if it does. It is remembered for those that follow."""
@@ -251,13 +330,19 @@ class _Work:
 
     def _repeat(self, result: Result) -> str:
         counted = self._earlier.visits.setdefault((result.stream, result.patient), [])
-        within = self._repeats.get(result.stream.analyte, 0.0) * _HOUR
+        within = self._live.repeat_hours(result.stream) * _HOUR
         if any(abs(result.time - time) <= within for time in counted):
             return REPEAT
         counted.append(result.time)
         return ""
 
     def batch(self) -> Batch:
+        """What is to be kept."""
+        live = self._live
+        said = [notice for stream in self._moved.values() for notice in stream.said()]
+        notices = [*said, *live.liveness.said(), *live.skew.judge(self._last)]
+        if live.liveness.places and (self._positions or notices):
+            self._positions[CLOCK] = live.liveness.state
         return Batch(
             results=self._results,
             alarms=self._alarms,
@@ -270,12 +355,20 @@ class _Work:
             messages=self._messages,
             annotations=self._annotations,
             remarks=self._remarks,
+            events=self._events,
+            notices=notices,
         )
 
 
 def read_chunk(chunk: Chunk, reader: Reader) -> Chunk:
-    """The chunk with its readings made into results, or set aside."""
+    """The chunk with its readings made into results and events, or set aside."""
     items = [reader.read(item) if isinstance(item, Reading) else item for item in chunk.items]
+    if any(isinstance(item, EventReading) for item in items):
+        made = (
+            read_event(one, reader.lab, chunk.source, chunk.arrived) if isinstance(one, EventReading) else one
+            for one in items
+        )
+        items = list(made)
     if chunk.messages:
         items = [reader.annotation(one, chunk.source) if isinstance(one, Correction) else one for one in items]
     return replace(chunk, items=items)

@@ -27,6 +27,7 @@ _SECOND = 1_000_000
 GRACE = 120 * _SECOND
 UNNOTICED = 60 * _SECOND  # the watch looks at the clock far more often
 BACK = 2 * _SECOND  # smaller corrections of a clock are none of anybody's business
+FAR, SURE = 24 * 3600 * _SECOND, 5
 _NEVER = 2**63
 
 
@@ -83,7 +84,7 @@ class Liveness:
             name: Place(name.analyte, name.analyser, rhythm, zone) for name, rhythm in named.items() if rhythm
         }
         self._said: list[Notice] = []
-        self._clock, self._looked, self._next, self._judged_from = 0, False, 0, 0
+        self._clock, self._far, self._looked, self._next, self._judged_from = 0, 0, False, 0, 0
 
     @property
     def places(self) -> list[Place]:
@@ -106,12 +107,17 @@ class Liveness:
     def state(self) -> str:
         """When each place was last heard, as text; with the open notices it is all that is needed to go on."""
         heard = {place.name: place.heard for place in self.places if place.heard is not None}
-        return json.dumps({"clock": self._clock, "heard": heard}, separators=(",", ":"))
+        return json.dumps({"clock": self._clock, "far": self._far, "heard": heard}, separators=(",", ":"))
+
+    def believed(self, time: int) -> int:
+        """The clock of a replay at a result with this time: one that is far ahead is believed when `SURE` in a row are."""
+        self._far = self._far + 1 if self._clock and time > self._clock + FAR else 0
+        return time if self._far in (0, SURE) else self._clock
 
     def go_on(self, state: str, open_notices: Iterable[Notice]) -> None:
         """Go on from a state and the notices that were open then; "" to begin. A notice of a place that is no longer watched is closed."""
-        kept: dict[str, Any] = json.loads(state) if state else {"clock": 0, "heard": {}}
-        self._clock, self._next = kept["clock"], 0
+        kept: dict[str, Any] = json.loads(state) if state else {"clock": 0, "far": 0, "heard": {}}
+        self._clock, self._far, self._next = kept["clock"], kept["far"], 0
         quiet = {(one.analyte, one.analyser): one for one in open_notices if one.kind == QUIET}
         for place in self.places:
             place.heard = kept["heard"].get(place.name)

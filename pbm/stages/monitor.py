@@ -30,6 +30,7 @@ from pbm.records.result import Result
 from pbm.records.snapshot import Snapshot
 from pbm.records.stream import StreamName
 from pbm.stages.estimate import TELL_THE_SIDE, WINDOW, Estimator, Offered
+from pbm.stages.events import ALWAYS_RESTART
 from pbm.stages.from_plan import error_model, in_control, limits, preparation, tracker
 from pbm.stages.recentring import SIZE, Centre
 
@@ -38,7 +39,6 @@ STATE_VERSION = 2
 # value, the last control event and its outcome; then those floats, the centre, and the events that wait.
 _HEAD = struct.Struct("<HbIQQQQdqb")
 _NO_CONTROL = -(2**63)
-ALWAYS_RESTART = ("restart", "keep the old centre")
 _OUTCOME: dict[str, bool] = {"control accepted": True, "control rejected": False}
 RELEARNED = "centre learned again"
 # Settings that only tell where the others came from, or what an alarm is worth, do not interrupt a state.

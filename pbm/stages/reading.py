@@ -62,7 +62,7 @@ class Reader:
         patient_kinds: Collection[str] | None = None,
         patient_key: bytes = b"",
     ) -> None:
-        self._zone = lab.laboratory.zone
+        self.lab, self._zone = lab, lab.laboratory.zone
         self._extract = lab.extract
         self._analytes = {name: (key, lab.analytes[key]) for name, key in lab.spellings().items()}
         self._units = {key: set(one.known_units()) for key, one in lab.analytes.items()}
