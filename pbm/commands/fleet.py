@@ -4,7 +4,7 @@ from functools import partial
 from typing import TYPE_CHECKING
 
 from pbm.commands.folder import LabFolder
-from pbm.commands.work import over_streams, report_failures
+from pbm.commands.work import Workers, over_streams, report_failures
 
 if TYPE_CHECKING:
     from pbm.methods.fleet import Share
@@ -13,7 +13,7 @@ if TYPE_CHECKING:
 
 
 def share_fleet_budget(
-    folder: LabFolder, lab: "Lab", seed: int, workers: int | None, tuned: "dict[str, StreamPlan]"
+    folder: LabFolder, lab: "Lab", seed: int, workers: Workers, tuned: "dict[str, StreamPlan]"
 ) -> "dict[str, Share]":
     """Share the budget, and put the plans with their new limits in place of those in `tuned`; what each stream got.
 

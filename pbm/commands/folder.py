@@ -16,6 +16,12 @@ JsonOption = Annotated[bool, typer.Option("--json", help="Print JSON for a progr
 WorkersOption = Annotated[
     int | None, typer.Option("--workers", min=1, help="Processes to use.", show_default="one per processor")
 ]
+ClusterOption = Annotated[
+    str | None,
+    typer.Option(
+        "--cluster", metavar="ADDRESS", help="Scheduler of a dask cluster whose workers do the work: tcp://HOST:PORT."
+    ),
+]
 SeedOption = Annotated[int, typer.Option("--seed", min=0, help="Master seed; the same seed gives the same figures.")]
 
 
@@ -80,6 +86,11 @@ class LabFolder:
     def tuning(self) -> Path:
         """Why the monitors of plan.toml are what they are."""
         return self.reports / "tuning.json"
+
+    @property
+    def finished(self) -> Path:
+        """Streams that `pbm tune` has finished, until all are."""
+        return self.root / ".pbm-tune"
 
     @property
     def store(self) -> Path:

@@ -4,7 +4,7 @@ from typing import Annotated
 
 import typer
 
-from pbm.commands.folder import JsonOption, LabFolder, LabOption, SeedOption, WorkersOption
+from pbm.commands.folder import ClusterOption, JsonOption, LabFolder, LabOption, SeedOption, WorkersOption
 
 StreamsArgument = Annotated[
     list[str] | None, typer.Argument(metavar="[STREAM...]", help="Streams such as sodium@line-2.", show_default="all")
@@ -39,6 +39,7 @@ def tune(
     streams: StreamsArgument = None,
     lab: LabOption = None,
     workers: WorkersOption = None,
+    cluster: ClusterOption = None,
     seed: SeedOption = 1,
     admit: AdmitOption = None,
     winsorize: WinsorizeOption = False,
@@ -63,7 +64,9 @@ def tune(
     """
     from pbm.commands.tune_by_hand import read_by_hand
     from pbm.commands.tune_work import tune_folder
+    from pbm.commands.work import chosen_workers
 
     parameters = {"weight": weight, "window": window, "reference": reference}
     by_hand = read_by_hand(admit, winsorize, transform, statistic, parameters, mix)
-    tune_folder(LabFolder.find(lab), streams, by_hand, workers=workers, seed=seed, keep=keep, quick=quick, json=json)
+    crew = chosen_workers(workers, cluster)
+    tune_folder(LabFolder.find(lab), streams, by_hand, workers=crew, seed=seed, keep=keep, quick=quick, json=json)

@@ -9,17 +9,18 @@ from pbm import __version__
 from pbm.commands.fleet import share_fleet_budget, told_shares
 from pbm.commands.folder import LabFolder
 from pbm.commands.lab import read_checked_lab
+from pbm.commands.resume import FinishedStreams
 from pbm.commands.rhythms import with_rhythms
 from pbm.commands.tune_text import told
 from pbm.commands.versions import versions
-from pbm.commands.work import chosen_streams, over_streams, report_failures
+from pbm.commands.work import Workers, chosen_streams, over_streams, report_failures
 from pbm.io.history import history_mark
 from pbm.io.lab_file import lab_fingerprint
-from pbm.io.plan_file import read_plan, write_plan
+from pbm.io.plan_file import plan_fingerprint, read_plan, write_plan
 from pbm.io.tuning_file import read_tuning, write_tuning
 from pbm.methods.candidates import QUICK_GRID, WHOLE_GRID
 from pbm.records.plan import Made, Plan, StreamPlan
-from pbm.records.tuning import StreamTuning, Tuning
+from pbm.records.tuning import StreamTuning, Tuned, Tuning
 from pbm.stages.by_hand import ByHand
 from pbm.stages.tune import tune_stream
 
@@ -29,7 +30,7 @@ def tune_folder(
     streams: list[str] | None,
     by_hand: ByHand,
     *,
-    workers: int | None,
+    workers: Workers,
     seed: int,
     keep: bool,
     quick: bool,
@@ -41,7 +42,8 @@ def tune_folder(
     kept = read_plan(folder.existing_plan()).streams if keep else None
     grid = QUICK_GRID if quick else WHOLE_GRID
     task = partial(tune_stream, lab=laboratory, seed=seed, by_hand=by_hand, kept=kept, grid=grid)
-    done = over_streams(folder.history, names, task, workers, "Tuning")
+    finished = FinishedStreams(folder.finished, Tuned, _decided_by(folder, by_hand, seed=seed, keep=keep, quick=quick))
+    done = over_streams(folder.history, names, task, workers, "Tuning", finished)
     found = {str(d.name): d.result for d in done if d.result is not None}
     tuned = {name: one.plan for name, one in found.items()}
     shares = {} if keep else share_fleet_budget(folder, laboratory, seed, workers, tuned)
@@ -54,6 +56,18 @@ def tune_folder(
         text = told(folder.plan, {name: plan.streams[name] for name in tuned}) + told_shares(laboratory, shares)
         typer.echo(plan.model_dump_json(indent=2) if json else text)
     report_failures(done)
+    finished.remove(names)
+
+
+def _decided_by(folder: LabFolder, by_hand: ByHand, *, seed: int, keep: bool, quick: bool) -> dict[str, str]:
+    """What decides a stream's monitors beside its history; all of it, or an interrupted tune would go on with what is no longer so."""
+    return {
+        "lab.toml": lab_fingerprint(folder.lab),
+        "seed": str(seed),
+        "by hand": repr(by_hand),
+        "kept plan": plan_fingerprint(folder.plan) if keep else "",
+        "quick": str(quick),
+    }
 
 
 def _merged(folder: LabFolder, tuned: dict[str, StreamPlan], seed: int, *, keep_others: bool) -> Plan:
