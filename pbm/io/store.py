@@ -12,12 +12,13 @@ from types import TracebackType
 
 from sqlalchemy import insert, inspect, select, update
 
-from pbm.io import store_audit, store_rows
+from pbm.io import store_audit, store_retention, store_rows
 from pbm.io.store_batch import BatchRows, Numbers
 from pbm.io.store_engine import writing_engine
 from pbm.io.store_errors import told
 from pbm.io.store_migrations import migrate
 from pbm.io.store_place import Place
+from pbm.io.store_retention import Sweep
 from pbm.io.store_schema import NAMED, SCHEMA_VERSION, UNNAMED, VISITS, audit, feeds, metadata, results, schema, streams
 from pbm.io.store_schema import heartbeat as heartbeats
 from pbm.io.writer_lock import WriterLock
@@ -130,6 +131,19 @@ class Store:
                 rows = BatchRows(self._connection, self._numbers)
                 rows.write(batch)
             self._numbers = rows.numbers
+
+    def remove_old(self, sweep: Sweep, at: int) -> Sweep | None:
+        """Go one step further in removing what is old; the sweep as it stands then, None when it is done.
+
+        Parameters
+        ----------
+        sweep
+            As this returned it; `Sweep(before)` to begin.
+        at
+            Now, UTC microseconds.
+        """
+        with told(self.place), self._connection.begin():
+            return store_retention.step(self._connection, sweep, at)
 
     def beat(self, heartbeat: Heartbeat) -> None:
         """Leave a sign of life."""
