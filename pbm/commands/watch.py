@@ -7,11 +7,12 @@ import typer
 from pbm.commands.folder import JsonOption, LabFolder, LabOption
 
 FromOption = Annotated[
-    str,
+    list[str],
     typer.Option(
         "--from",
         metavar="SOURCE",
-        help="A CSV file that grows, - for NDJSON on standard input, or history to replay history/.",
+        help="mllp://HOST:PORT for HL7 messages (mllps:// with certificates), a CSV file that grows, - for NDJSON on standard input, or "
+        "history to replay history/. May be given several times.",
         show_default=False,
     ),
 ]

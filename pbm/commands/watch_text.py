@@ -6,12 +6,13 @@ from collections.abc import Iterable, Iterator
 from pbm.commands.tables import table
 from pbm.records.laboratory import Lab
 from pbm.records.plan import Plan, StreamPlan
-from pbm.records.snapshot import DUPLICATE, Batch
+from pbm.records.snapshot import CORRECTION, DUPLICATE, SENT_AGAIN, Batch
 from pbm.records.stream import StreamName
 from pbm.stages.live import Live
 from pbm.stages.monitor import StreamMonitor
 from pbm.stages.words import monitor_in_words
 
+_ORDINARY = (DUPLICATE, SENT_AGAIN)  # counted, not told one by one
 CAUTION = (
     "The monitors supplement control materials and never replace them; limits and actions are the laboratory director's decision. "
     "No alarm does not prove that there is no error."
@@ -51,6 +52,7 @@ class Account:
         self._live = live
         self._taken = self._unwatched = self._alarms = 0
         self._left: Counter[str] = Counter()
+        self._remarked: set[str] = set()
 
     def add(self, batch: Batch) -> list[str]:
         """Count a batch that was kept; a line for each reason that was not met before."""
@@ -58,9 +60,17 @@ class Account:
         self._taken += len(counted)
         self._unwatched += sum(stream not in self._live.streams for stream in counted)
         self._alarms += len(batch.alarms)
-        new = [reason for reason in batch.tallies if reason not in self._left and reason != DUPLICATE]
+        new = [reason for reason in batch.tallies if reason not in self._left and reason not in _ORDINARY]
         self._left.update(batch.tallies)
-        return [_first_of(reason, batch) for reason in new]
+        return [*(_first_of(reason, batch) for reason in new), *self._remarks(batch)]
+
+    def _remarks(self, batch: Batch) -> Iterator[str]:
+        """Each text of a remark when it is first met."""
+        for source, remark in batch.remarks:
+            if remark.text not in self._remarked:
+                self._remarked.add(remark.text)
+                found = f" ({_plain(remark.found)})" if remark.found else ""
+                yield f"{source}, {_piece(source)} {remark.place}: {remark.text}{found}. More of the kind are not told."
 
     @property
     def brief(self) -> str:
@@ -77,10 +87,21 @@ def _first_of(reason: str, batch: Batch) -> str:
     for source, item in batch.set_aside:
         if item.reason == reason:
             found = f" ({_plain(item.found)})" if item.found else ""
-            return f"{source}, line {item.place}: {reason}{found}. Set aside; more of the kind are counted."
+            return f"{source}, {_piece(source)} {item.place}: {reason}{found}. Set aside; more of the kind are counted."
+    for word in batch.annotations:
+        if reason == CORRECTION:
+            return (
+                f"{word.stream}, specimen {_plain(word.specimen) or 'not given'}: a later word on a result (OBX-11 {word.status}). The "
+                "result stays as it was taken; the word is kept beside it. More of the kind are counted."
+            )
     result = next(one.result for one in batch.results if one.left_out == reason)
     specimen = _plain(result.specimen) or "not given"
     return f"{result.stream}, specimen {specimen}: {reason}. No monitor takes it; more of the kind are counted."
+
+
+def _piece(source: str) -> str:
+    """What a place counts in a feed."""
+    return "message" if source.startswith("mllp") else "line"
 
 
 def _plain(text: str) -> str:

@@ -30,26 +30,31 @@ _EDITION = 1  # messages are known again by their numbers, so there is no other 
 _TOLD = {"outside": "bytes outside any message", "broken off": "a message that was broken off"}
 
 
-def listen(address: str) -> socket.socket:
-    """A socket at HOST:PORT; without a host only this computer can reach it.
+def listen(address: str, settings: FeedSettings) -> socket.socket:
+    """A socket at `mllp://HOST:PORT`; without a host only this computer can reach it.
 
     Raises
     ------
     InputError
-        If it is no address, or cannot be used.
+        If it is no address, cannot be used, or would be open to anybody.
     """
     parts = urlsplit(address)
     try:
         host, port = parts.hostname or "127.0.0.1", parts.port
     except ValueError:
-        port = None
-    if port is None or parts.path not in ("", "/") or parts.query or parts.username:
+        host, port = "", None
+    if port is None or parts.path not in ("", "/") or parts.query or parts.fragment or parts.username:
         raise InputError(
-            f'"{address}" is no address to listen at; expected {parts.scheme}://HOST:PORT, such as mllp://127.0.0.1:2575.'
+            f'"{address}" is no address to listen at. Give {parts.scheme}://HOST:PORT, such as {parts.scheme}://127.0.0.1:2575.'
         )
     try:
-        family = socket.getaddrinfo(host, port, type=socket.SOCK_STREAM, flags=socket.AI_PASSIVE)[0][0]
-        return socket.create_server((host, port), family=family, backlog=128)
+        family, _, _, _, place = socket.getaddrinfo(host, port, type=socket.SOCK_STREAM, flags=socket.AI_PASSIVE)[0]
+        if not (ip_address(place[0]).is_loopback or settings.peers or parts.scheme == "mllps"):
+            raise InputError(
+                f"{address} can be reached from other computers, and feed.peers in lab.toml does not say from which. Name them there "
+                f'(peers = ["10.1.2.3"]), or listen at {parts.scheme}://127.0.0.1:{port}.'
+            )
+        return socket.create_server((str(place[0]), port), family=family, backlog=128)
     except OSError as error:
         raise InputError(
             f"Nothing can listen at {address}: {error.strerror}. Another program may use the port, or the address is not of this computer."
@@ -97,6 +102,12 @@ class MllpFeed(Feed):
         self._waiting: deque[tuple[Connection, Event]] = deque()
         self._unanswered: deque[list[tuple[Connection, int, Sequence[bytes]]]] = deque()
         self.connections: set[Connection] = set()
+
+    @property
+    def address(self) -> str:
+        """Where it listens."""
+        host, port = self._socket.getsockname()[:2]
+        return f"{host}:{port}"
 
     async def chunks(self) -> AsyncGenerator[Chunk]:
         """What arrived since the last one was asked for."""

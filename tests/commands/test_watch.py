@@ -347,7 +347,7 @@ def test_a_new_plan_restarts_only_the_monitors_that_changed_and_leaves_a_mark(fo
     ("arguments", "told"),
     [
         (("--from", "nowhere.csv"), "nowhere.csv cannot be read: No such file"),
-        (("--from", "mllp://127.0.0.1:2575"), "is no feed that this version reads"),
+        (("--from", "http://127.0.0.1:2575"), "is no feed that this version reads"),
         (("--from", "live.csv", "--speed", "60"), "--speed paces the replay of a history"),
         (("--from", "history"), "There is no history"),
     ],
@@ -410,7 +410,7 @@ def test_it_loads_neither_compiler_nor_statistics_nor_plots(folder: Path) -> Non
         "import sys\n"
         "from pathlib import Path\n"
         "from pbm.commands.watch import watch\n"
-        f"watch(from_={str(folder / 'live.csv')!r}, lab=Path({str(folder)!r}), once=True)\n"
+        f"watch(from_=[{str(folder / 'live.csv')!r}], lab=Path({str(folder)!r}), once=True)\n"
         "print(sorted(sys.modules), file=sys.stderr)\n"
     )
     done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
