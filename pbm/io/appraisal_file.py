@@ -1,6 +1,9 @@
 """`reports/appraisal.json`: an appraisal as JSON, keys in the record's order, floats exact, written whole or not at all."""
 
+import json
+from collections.abc import Iterator
 from pathlib import Path
+from typing import Any
 
 from pydantic import BaseModel, ValidationError
 
@@ -18,8 +21,10 @@ class _Version(BaseModel):
 
 
 def write_appraisal(path: Path, appraisal: Appraisal) -> None:
-    """Write `appraisal.json`; the same appraisal gives the same bytes, and `read_appraisal` gives back an equal one."""
-    replace_file(path, f"{appraisal.model_dump_json(indent=1)}\n".encode())
+    """Write `appraisal.json`, a stream a line; the same appraisal gives the same bytes, and `read_appraisal` gives back an equal one."""
+    streams = ",\n".join(one.model_dump_json() for one in appraisal.streams)
+    head = appraisal.model_dump_json(exclude={"streams"}).removesuffix("}")
+    replace_file(path, f'{head},"streams":[\n{streams}\n]}}\n'.encode())
 
 
 def read_appraisal(path: Path) -> Appraisal:
@@ -39,6 +44,36 @@ def read_appraisal(path: Path) -> Appraisal:
         return Appraisal.model_validate_json(content, strict=True)
     except ValidationError as error:
         raise InputError(_told(path, error)) from None
+
+
+def differences(one: Appraisal, other: Appraisal) -> list[str]:
+    """Every entry in which two appraisals differ, with both values; streams and faults are told by their names."""
+    return list(_differing("", one.model_dump(mode="json"), other.model_dump(mode="json")))
+
+
+def _differing(place: str, one: Any, other: Any) -> Iterator[str]:
+    if isinstance(one, dict) and isinstance(other, dict):
+        for key in dict.fromkeys([*one, *other]):
+            yield from _differing(f"{place}.{key}" if place else str(key), one.get(key), other.get(key))
+    elif isinstance(one, list) and isinstance(other, list) and len(one) == len(other):
+        for number, (left, right) in enumerate(zip(one, other, strict=True), 1):
+            yield from _differing(f"{place}[{_named(left, number)}]", left, right)
+    elif one != other:
+        yield f"{place}: {_short(one)} -> {_short(other)}"
+
+
+def _named(entry: Any, number: int) -> str:
+    """What an entry of a list is called: a stream or a fault by its name, others by their place from 1."""
+    told = (
+        (entry.get(key) for key in ("stream", "label", "name", "when", "controls")) if isinstance(entry, dict) else ()
+    )
+    return next((str(name) for name in told if name), str(number))
+
+
+def _short(value: Any) -> str:
+    if isinstance(value, dict | list):
+        return f"{len(value)} entries"
+    return json.dumps(value, ensure_ascii=False)
 
 
 def _too_new(path: Path, version: int) -> str:

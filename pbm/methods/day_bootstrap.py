@@ -19,6 +19,8 @@ from pbm.methods.jit import Floats, Integers
 Mask = npt.NDArray[np.bool_]
 LEVEL = 0.9
 GRID = 256  # places at which the distribution of results until detection is drawn
+NEGLIGIBLE = 1e-15  # chances far below it are denormal numbers, which are slow
+TIE = 1e-9  # shares that differ by less are the same but for rounding
 _THURSDAY, _WEEK, _SATURDAY = 3, 7, 5  # 1970-01-01 was a Thursday; Monday is 0
 
 
@@ -133,38 +135,33 @@ class DayBootstrap:
 
     def percentiles(self, found: Detection, shares: Sequence[float]) -> list[tuple[float | None, ...]]:
         """By when these shares of all faults are found: the figure and its interval; None for never within the horizon."""
-        grid, reached = self._distribution(found)
-        reached = np.column_stack([reached, np.full(len(reached), np.inf)])  # never
-        ends_at = np.append(grid, np.inf)
-        told: list[tuple[float | None, ...]] = []
-        for share in shares:
-            value = found.quantile(share)
-            drawn = np.sort(ends_at[(reached >= share - 1e-9).argmax(axis=1)])
-            low, high = (float(drawn[round(end * (len(drawn) - 1))]) for end in ((1 - LEVEL) / 2, (1 + LEVEL) / 2))
-            at = np.inf if value is None else value
-            told.append(tuple(None if x == np.inf else x for x in (at, min(low, at), max(high, at))))
-        return told
+        which = found.chance.ravel() > NEGLIGIBLE
+        delay, chance = found.delay.ravel()[which], found.chance.ravel()[which]
+        order = np.argsort(delay, kind="stable")
+        delay, chance = delay[order], chance[order]
+        day = np.repeat(self.day, found.chance.shape[1])[which][order]
+        told = np.cumsum(chance) / len(self.day)
+        grid, reached = self._drawn_on_grid(delay, chance, told, day)
+        return [
+            _percentile(share, np.append(delay, np.inf), told, np.append(grid, np.inf), reached) for share in shares
+        ]
 
-    def _distribution(self, found: Detection) -> tuple[Floats, Floats]:
-        """Places on a grid (g,), and the share found by each place in each draw (b, g)."""
-        grid = _grid(found.delay.ravel(), found.chance.ravel())
-        place = np.minimum(np.searchsorted(grid, found.delay), len(grid) - 1)
-        cell = self.day[:, None] * len(grid) + place
+    def _drawn_on_grid(self, delay: Floats, chance: Floats, told: Floats, day: Integers) -> tuple[Floats, Floats]:
+        """Delays spread evenly over their chances (g,), and the share found by each of them in each draw (b, g)."""
+        if not len(delay):
+            return delay, np.zeros((len(self.taken), 0))
+        place = np.searchsorted(told, np.linspace(0, told[-1], GRID))
+        grid = np.unique(delay[np.minimum(place, len(delay) - 1)])
+        cell = day * len(grid) + np.minimum(np.searchsorted(grid, delay), len(grid) - 1)
         days = self.taken.shape[1]
-        mass = np.bincount(cell.ravel(), weights=found.chance.ravel(), minlength=days * len(grid)).reshape(
-            days, len(grid)
-        )
-        onsets = self._drawn(np.ones(len(self.day)))
-        return grid, (self.taken @ mass.cumsum(axis=1)) / onsets[:, None]
+        mass = np.bincount(cell, weights=chance, minlength=days * len(grid)).reshape(days, len(grid))
+        return grid, (self.taken @ mass.cumsum(axis=1)) / self._drawn(np.ones(len(self.day)))[:, None]
 
 
-def _grid(points: Floats, chances: Floats) -> Floats:
-    """All different points that have a chance, or as many of them spread evenly over their chances."""
-    points, chances = points[chances > 0], chances[chances > 0]
-    ordered = np.unique(points) if len(points) else np.zeros(1)
-    if len(ordered) <= GRID:
-        return ordered
-    order = np.argsort(points, kind="stable")
-    reached = np.cumsum(chances[order])
-    place = np.searchsorted(reached, np.linspace(0, reached[-1], GRID))
-    return np.unique(points[order][np.minimum(place, len(points) - 1)])
+def _percentile(share: float, delay: Floats, told: Floats, grid: Floats, reached: Floats) -> tuple[float | None, ...]:
+    """A percentile and its interval; `delay` and `grid` end with infinity, for never."""
+    value = float(delay[np.searchsorted(told, share - TIE)])
+    within = np.column_stack([reached >= share - TIE, np.ones(len(reached), dtype=bool)])
+    drawn = np.sort(grid[within.argmax(axis=1)])
+    low, high = (float(drawn[round(end * (len(drawn) - 1))]) for end in ((1 - LEVEL) / 2, (1 + LEVEL) / 2))
+    return tuple(None if x == np.inf else x for x in (value, min(low, value), max(high, value)))

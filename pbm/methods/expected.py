@@ -61,6 +61,16 @@ class Onsets:
         return Onsets(self.at[which], self.end[which], self.edges[which])
 
 
+def instants_of_events(onsets: Onsets, event_positions: Integers, event_times: Integers) -> Integers:
+    """When the events after each onset take place, shape (r, k), UTC microseconds; of those beyond the history the last is told."""
+    if not len(event_times):
+        return np.zeros_like(onsets.edges)
+    first = np.searchsorted(event_positions, onsets.at, side="right")
+    place = first[:, None] + np.arange(onsets.edges.shape[1])[None, :]
+    instants: Integers = event_times[np.minimum(place, len(event_times) - 1)]
+    return instants
+
+
 def follow(at: Integers, end: Integers, event_positions: Integers, events: int) -> Onsets:
     """Onsets with the control events after each.
 
@@ -116,6 +126,10 @@ class Exposure:
         """N_uf of each onset, shape (r,), if the alarm comes with affected result `alarm`."""
         return self.final_before[np.arange(len(alarm)), self._brackets_before(alarm)]
 
+    def under(self, onsets: Onsets, passed: Floats) -> "Exposure":
+        """The same affected results under another control schedule: the same onsets with its events, and its chances."""
+        return _along(onsets, passed, self.sums, self.starts)
+
     def _brackets_before(self, result: Integers) -> Integers:
         """Brackets that were closed before an affected result, shape (r,)."""
         counted: Integers = (self.onsets.counts < result[:, None]).sum(axis=1)
@@ -136,7 +150,10 @@ def exposure(onsets: Onsets, p: Floats, passed: Floats) -> Exposure:
     """
     sums = _so_far(np.atleast_2d(p))
     starts = np.arange(len(sums)) * sums.shape[1] if p.ndim == 2 else onsets.at
-    sums = sums.ravel()
+    return _along(onsets, passed, sums.ravel(), starts)
+
+
+def _along(onsets: Onsets, passed: Floats, sums: Floats, starts: Integers) -> Exposure:
     each = np.broadcast_to(passed, (len(onsets.at), passed.shape[-1]))
     inside = np.diff(sums[starts[:, None] + np.column_stack([np.zeros_like(onsets.at), onsets.counts])], axis=1)
     return Exposure(onsets, each, sums, starts, _so_far(each[:, :-1] * inside), _so_far(each[:, 1:] * inside))

@@ -60,7 +60,9 @@ class Fault:
     def __str__(self) -> str:
         if self.kind == "noise":
             return f"noise x{self.size:g}"
-        return f"{self.kind} {self.sign * self.size:+g} {self.unit}"
+        grown = f" over {self.over} results" if self.kind == "drift" else ""
+        hit = f" in {self.share:g} of results" if self.kind == "sporadic" else ""
+        return f"{self.kind} {self.sign * self.size:+g} {self.unit}{grown}{hit}"
 
     @property
     def multiple(self) -> float:

@@ -3,13 +3,15 @@
 This is also the documented content of `reports/appraisal.json`; `version` rises when its shape changes.
 """
 
-from typing import Annotated
+from typing import Annotated, Literal
 
 from pydantic import Field
 
 from pbm.records.figures import AloneAndWith, Figure, Found
 from pbm.records.judged import FalseAlarms, Judged
 from pbm.records.plan import Verdict
+
+PeersTried = Literal["none", "quick", "all"]
 
 
 class Trace(Found):
@@ -161,6 +163,8 @@ class Appraisal(Found):
         In which its days and hours are told.
     seed
         Master seed.
+    peers_tried
+        Which other monitors were tried beside those of the plan: none, those that are quick, or all.
     history_sha256, plan_sha256, lab_sha256
         What was judged: the history, `plan.toml` and `lab.toml`.
     onset_times
@@ -177,6 +181,7 @@ class Appraisal(Found):
     laboratory: str
     time_zone: str
     seed: int
+    peers_tried: PeersTried
     history_sha256: str
     plan_sha256: str
     lab_sha256: str

@@ -41,7 +41,7 @@ class FaultAppraisal(Found):
     Attributes
     ----------
     label
-        The fault in words; no two of a stream have the same.
+        The fault in words.
     kind
         "shift", "drift", "noise" or "sporadic".
     size, unit
@@ -120,7 +120,7 @@ class FalseAlarms(Found):
     a_month
         Alarms in 30 days, with the exact interval.
     in_alarm
-        Share of the held-out time that is spent in an open alarm.
+        Share of the held-out time that is spent in an open alarm; none for a detector that begins afresh after each alarm.
     """
 
     days: int
@@ -129,7 +129,7 @@ class FalseAlarms(Found):
     interval: tuple[float, float]
     kept: bool
     a_month: Figure
-    in_alarm: Figure
+    in_alarm: Figure | None
 
 
 class NoFault(Found):

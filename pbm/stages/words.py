@@ -54,6 +54,13 @@ def controls_in_words(controls: Controls) -> str:
     """A control schedule, such as "at 06:00, 14:00, 22:00; rules 1-3s, 2-2s; 2 levels"."""
     if not controls.levels or not controls.rules:
         return "no control schedule given"
-    when = f"every {controls.every} results" if controls.every is not None else f"at {', '.join(controls.times or ())}"
-    when += f" on {', '.join(controls.weekdays)}" if controls.weekdays else ""
-    return f"{when}; rules {', '.join(controls.rules)}; {len(controls.levels)} levels"
+    return f"{events_in_words(controls)}; rules {', '.join(controls.rules)}; {len(controls.levels)} levels"
+
+
+def events_in_words(controls: Controls) -> str:
+    """When control events come, such as "at 06:00, 14:00, 22:00" or "every 100 results"."""
+    if controls.every is not None:
+        return f"every {controls.every} results"
+    return f"at {', '.join(controls.times or ())}" + (
+        f" on {', '.join(controls.weekdays)}" if controls.weekdays else ""
+    )

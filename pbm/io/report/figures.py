@@ -19,8 +19,10 @@ from matplotlib.ticker import FuncFormatter, MaxNLocator, NullLocator
 from pbm.io.report import seen, words
 from pbm.io.report.groups import FaultGroup
 from pbm.io.report.labels import Line, Points, write_names
+from pbm.io.report.shown import ShownMonitor
 from pbm.io.report.svg import LOOK, Album
-from pbm.records.appraisal import FaultAppraisal, Figure, MonitorAppraisal, ResultsUntil
+from pbm.records.figures import Figure, Until
+from pbm.records.judged import FaultAppraisal
 
 _INCHES = (4.3, 3.05)
 _FRAME = (0.158, 0.165, 0.815, 0.8)
@@ -61,17 +63,19 @@ def drawing() -> Iterator[None]:
         yield
 
 
-def trace_plot(album: Album, monitor: MonitorAppraisal, unit: str) -> Markup:
+def trace_plot(album: Album, monitor: ShownMonitor, unit: str) -> Markup:
     """The statistic on held-out days with its limits; where it leaves them is marked."""
     canvas, axes = _sheet("day of the held-out history", _scale_in_words(monitor, unit))
     days, low, high = (np.array(one) for one in (monitor.trace.day, monitor.trace.lowest, monitor.trace.highest))
     axes.fill_between(days, low, high, color=_INK, linewidth=0.5, alpha=0.75)
     marked = _mark_beyond(axes, days, low, high, monitor.limits)
-    width = monitor.limits[1] - monitor.limits[0]
+    ends = [one for one in monitor.limits if math.isfinite(one)]
+    width = max(high.max(), *ends) - min(low.min(), *ends)
     axes.set_xlim(days[0], days[-1] if days[-1] > days[0] else days[0] + 1)
-    axes.set_ylim(min(low.min(), monitor.limits[0]) - 0.14 * width, max(high.max(), monitor.limits[1]) + 0.14 * width)
+    axes.set_ylim(min(low.min(), *ends) - 0.14 * width, max(high.max(), *ends) + 0.14 * width)
     for value, name, up in ((monitor.limits[0], "lower limit", False), (monitor.limits[1], "upper limit", True)):
-        _limit(axes, value, f"{name} {words.level(value, *monitor.limits)}", up, _freest(marked[up], days))
+        if math.isfinite(value):
+            _limit(axes, value, f"{name} {words.level(value, *monitor.limits)}", up, _freest(marked[up], days))
     axes.axhline(monitor.scale_centre, color=_MUTED, linewidth=0.9, linestyle=(0, (1, 2)))
     axes.yaxis.set_major_locator(MaxNLocator(6, steps=_STEPS))
     return album.inline(canvas, seen.trace(monitor, unit))
@@ -83,7 +87,7 @@ def _freest(marked: Points, days: Points) -> tuple[str, float]:
     return min(_NAME_PLACES, key=lambda place: int((abs(along - place[2]) < 0.17).sum()))[:2]
 
 
-def _scale_in_words(monitor: MonitorAppraisal, unit: str) -> str:
+def _scale_in_words(monitor: ShownMonitor, unit: str) -> str:
     return f"statistic, {unit}" if monitor.limits == (monitor.low, monitor.high) else "statistic, transformed scale"
 
 
@@ -147,7 +151,7 @@ def first_event_plot(album: Album, group: FaultGroup) -> Markup:
 def until_plot(album: Album, group: FaultGroup, horizon_days: float) -> Markup:
     """Affected results until detection: the median and up to the 95th percentile, by the controls, the monitor, and both."""
     canvas, axes = _sheet(group.axis, "affected results until detection")
-    ways: tuple[tuple[Look, Callable[[FaultAppraisal], ResultsUntil]], ...] = (
+    ways: tuple[tuple[Look, Callable[[FaultAppraisal], Until]], ...] = (
         (ALONE, lambda fault: fault.until.schedule),
         (MONITOR, lambda fault: fault.until.monitor),
         (BOTH, lambda fault: fault.until.both),
@@ -174,8 +178,8 @@ class _UntilScale:
     used: bool
 
     @classmethod
-    def over(cls, untils: Sequence[ResultsUntil]) -> "_UntilScale":
-        counts = [count for until in untils for count in (until.median, until.p95)]
+    def over(cls, untils: Sequence[Until]) -> "_UntilScale":
+        counts = [count for until in untils for count in (until.median.value, until.p95.value)]
         top = 1.6 * max([10.0, *(count for count in counts if count is not None)])
         return cls(top, top * (top / _LEAST) ** (_STRIP / 2), None in counts)
 
@@ -206,13 +210,13 @@ def _until_line(
     axes: Axes,
     group: FaultGroup,
     look: Look,
-    which: Callable[[FaultAppraisal], ResultsUntil],
+    which: Callable[[FaultAppraisal], Until],
     aside: float,
     scale: _UntilScale,
 ) -> tuple[Line, Points]:
     xs = np.array(group.sizes) + aside
-    median = np.array([scale.height(which(fault).median) for fault in group.faults])
-    p95 = np.array([scale.height(which(fault).p95) for fault in group.faults])
+    median = np.array([scale.height(which(fault).median.value) for fault in group.faults])
+    p95 = np.array([scale.height(which(fault).p95.value) for fault in group.faults])
     axes.vlines(xs, median, p95, color=look.colour, linewidth=1.0, alpha=0.8)
     axes.plot(xs, p95, linestyle="none", marker="_", markersize=5, color=look.colour)
     parts = _draw(axes, group, look, xs, median)

@@ -4,15 +4,10 @@ from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass
 
 from pbm.io.report import words
-from pbm.records.appraisal import (
-    AloneAndWith,
-    Appraisal,
-    FalseAlarms,
-    FaultAppraisal,
-    MonitorAppraisal,
-    StreamAppraisal,
-    WorstCase,
-)
+from pbm.io.report.shown import ShownMonitor, shown
+from pbm.records.appraisal import Appraisal, StreamAppraisal
+from pbm.records.figures import AloneAndWith, WorstCase
+from pbm.records.judged import FalseAlarms, FaultAppraisal
 
 MONTH = 30
 _LITTLE = 0.1
@@ -34,7 +29,7 @@ class FleetRow:
     """
 
     stream: StreamAppraisal
-    monitor: MonitorAppraisal | None
+    monitor: ShownMonitor | None
     anchor: str
     number: int = 1
     of: int = 1
@@ -68,7 +63,7 @@ def _rows(appraisal: Appraisal) -> Iterator[FleetRow]:
     for place, stream in enumerate(appraisal.streams):
         if not stream.monitors:
             yield FleetRow(stream, None, anchor(place))
-        for number, monitor in enumerate(stream.monitors, 1):
+        for number, monitor in enumerate(shown(stream), 1):
             yield FleetRow(stream, monitor, anchor(place), number, len(stream.monitors))
 
 
@@ -150,14 +145,14 @@ def _verdict_and_reason(streams: Iterable[StreamAppraisal]) -> Iterator[tuple[st
 
 def _budgets_not_kept(streams: Iterable[StreamAppraisal]) -> Iterator[tuple[str, str]]:
     for stream in streams:
-        for alarms in (monitor.false_alarms for monitor in stream.monitors):
+        for alarms in (monitor.false_alarms for monitor in shown(stream)):
             if not alarms.kept:
                 yield stream.stream, f"{words.whole(alarms.episodes)} alarms, {words.expected(alarms.allowed)} allowed"
 
 
 def _worst_case_hardly_lower(streams: Iterable[StreamAppraisal]) -> Iterator[tuple[str, str]]:
     for stream in streams:
-        for worst in (monitor.worst_unreliable for monitor in stream.monitors):
+        for worst in (monitor.worst_unreliable for monitor in shown(stream)):
             if _hardly_lower(worst):
                 alone, beside = words.expected(worst.alone.value), words.expected(worst.with_monitor.value)
                 yield stream.stream, f"{alone} alone, {beside} with the monitor"
@@ -168,10 +163,10 @@ def _hardly_lower(found: AloneAndWith | WorstCase) -> bool:
 
 
 def _errors(
-    streams: Iterable[StreamAppraisal], which: Callable[[MonitorAppraisal], list[FaultAppraisal]]
+    streams: Iterable[StreamAppraisal], which: Callable[[ShownMonitor], list[FaultAppraisal]]
 ) -> Iterator[tuple[str, str]]:
     for stream in streams:
-        for faults in filter(None, map(which, stream.monitors)):
+        for faults in filter(None, map(which, shown(stream))):
             yield stream.stream, listed(faults, stream.unit)
 
 
@@ -182,7 +177,7 @@ def _not_tried(judged: list[StreamAppraisal]) -> Iterator[tuple[str, str]]:
         without = tuple(
             one.stream
             for one in judged
-            if kind not in {fault.kind for monitor in one.monitors for fault in monitor.faults}
+            if kind not in {fault.kind for monitor in shown(one) for fault in monitor.faults}
         )
         if without:
             missing.setdefault(without, []).append(name)
@@ -190,7 +185,7 @@ def _not_tried(judged: list[StreamAppraisal]) -> Iterator[tuple[str, str]]:
         yield "all streams" if len(streams) == len(judged) else ", ".join(streams), ", ".join(kinds)
 
 
-def where_it_does_not_help(stream: StreamAppraisal, monitor: MonitorAppraisal) -> Iterator[str]:
+def where_it_does_not_help(stream: StreamAppraisal, monitor: ShownMonitor) -> Iterator[str]:
     """Errors for which a monitor saves little, or that are mostly not found even with it."""
     if faults := little_helped(monitor):
         yield f"Saves less than a tenth of the unreliable results at: {listed(faults, stream.unit)}."
@@ -198,12 +193,12 @@ def where_it_does_not_help(stream: StreamAppraisal, monitor: MonitorAppraisal) -
         yield f"More than half never found within {words.days(stream.horizon_days)}, even with the monitor: {listed(faults, stream.unit)}."
 
 
-def never_found(monitor: MonitorAppraisal) -> list[FaultAppraisal]:
+def never_found(monitor: ShownMonitor) -> list[FaultAppraisal]:
     """Errors of which controls and monitor together do not find half within the horizon."""
     return [fault for fault in monitor.faults if fault.until.both.median is None]
 
 
-def little_helped(monitor: MonitorAppraisal) -> list[FaultAppraisal]:
+def little_helped(monitor: ShownMonitor) -> list[FaultAppraisal]:
     """Errors for which the monitor saves less than a tenth of the unreliable results."""
     return [fault for fault in monitor.faults if _hardly_lower(fault.unreliable)]
 
@@ -223,7 +218,7 @@ def _sizes(faults: list[FaultAppraisal]) -> str:
     return f"±{size[1:]}" if {fault.sign for fault in faults} == {-1, 1} else size
 
 
-def named(monitor: MonitorAppraisal, label: str, analyte_unit: str) -> str:
+def named(monitor: ShownMonitor, label: str, analyte_unit: str) -> str:
     """The error that a label stands for, in the words used everywhere else on the page."""
     return next((words.fault_in_words(fault, analyte_unit) for fault in monitor.faults if fault.label == label), label)
 
@@ -236,7 +231,7 @@ def judged_on(appraisal: Appraisal) -> str:
     return f"Judged on the laboratory’s own results of {first} to {last}, days on which no monitor was chosen or tuned."
 
 
-def simulated(monitor: MonitorAppraisal) -> str:
+def simulated(monitor: ShownMonitor) -> str:
     """How exact the chances of the control rules are."""
     error = max((fault.schedule_error for fault in monitor.faults), default=0.0)
     if error == 0:

@@ -5,7 +5,7 @@ from dataclasses import dataclass
 from itertools import pairwise
 
 from pbm.io.report import words
-from pbm.records.appraisal import FaultAppraisal
+from pbm.records.judged import FaultAppraisal
 
 
 @dataclass(frozen=True, slots=True)

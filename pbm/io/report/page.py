@@ -12,8 +12,10 @@ from markupsafe import Markup
 from pbm.io.atomic import replace_file
 from pbm.io.report import figures, fleet, words
 from pbm.io.report.groups import FaultGroup, fault_groups
+from pbm.io.report.shown import ShownMonitor, shown
 from pbm.io.report.svg import Album
-from pbm.records.appraisal import Appraisal, FaultAppraisal, MonitorAppraisal, StreamAppraisal
+from pbm.records.appraisal import Appraisal, StreamAppraisal
+from pbm.records.judged import FaultAppraisal
 
 _HERE = Path(__file__).parent
 
@@ -32,7 +34,7 @@ class DrawnGroup:
 class DrawnMonitor:
     """A monitor and its plots; no trace where the appraisal holds none."""
 
-    appraisal: MonitorAppraisal
+    appraisal: ShownMonitor
     trace: Markup | None
     groups: tuple[DrawnGroup, ...]
 
@@ -83,10 +85,10 @@ def report(appraisal: Appraisal) -> str:
 
 def _sections(album: Album, appraisal: Appraisal) -> Iterator[Section]:
     for place, stream in enumerate(appraisal.streams):
-        yield Section(fleet.anchor(place), stream, tuple(_drawn(album, stream, monitor) for monitor in stream.monitors))
+        yield Section(fleet.anchor(place), stream, tuple(_drawn(album, stream, monitor) for monitor in shown(stream)))
 
 
-def _drawn(album: Album, stream: StreamAppraisal, monitor: MonitorAppraisal) -> DrawnMonitor:
+def _drawn(album: Album, stream: StreamAppraisal, monitor: ShownMonitor) -> DrawnMonitor:
     unit = words.in_a_plot(stream.unit)
     trace = figures.trace_plot(album, monitor, unit) if monitor.trace.day else None
     groups = fault_groups(monitor.faults, unit)

@@ -3,10 +3,12 @@
 from collections.abc import Callable, Sequence
 
 from pbm.io.report import words
-from pbm.records.appraisal import FaultAppraisal, Figure, MonitorAppraisal, ResultsUntil
+from pbm.io.report.shown import ShownMonitor
+from pbm.records.figures import Figure, Until
+from pbm.records.judged import FaultAppraisal
 
 
-def trace(monitor: MonitorAppraisal, unit: str) -> str:
+def trace(monitor: ShownMonitor, unit: str) -> str:
     """The in-control trace."""
     low, high = monitor.limits
     outside = sum(
@@ -64,10 +66,8 @@ def _range(faults: Sequence[FaultAppraisal], which: Callable[[FaultAppraisal], F
     return f"{words.percent(min(shares))} to {words.percent(max(shares))}"
 
 
-def _medians(
-    faults: Sequence[FaultAppraisal], which: Callable[[FaultAppraisal], ResultsUntil], horizon_days: float
-) -> str:
-    medians = [which(fault).median for fault in faults]
+def _medians(faults: Sequence[FaultAppraisal], which: Callable[[FaultAppraisal], Until], horizon_days: float) -> str:
+    medians = [which(fault).median.value for fault in faults]
     found = [one for one in medians if one is not None]
     never = f"more than half never found within {words.days(horizon_days)}"
     if not found:

@@ -1,8 +1,10 @@
 """How the report writes numbers, shares, intervals, errors and days: three significant digits, the same everywhere."""
 
+import math
 import re
 
-from pbm.records.appraisal import FaultAppraisal, Figure, ResultsUntil
+from pbm.records.figures import Figure, Until
+from pbm.records.judged import FaultAppraisal
 
 _RAISED = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 _NARROW = "\u202f"  # narrow no-break space: groups digits and stands before the per cent sign
@@ -74,7 +76,9 @@ def fewer(alone: float, beside: float) -> str:
 
 def level(value: float, low: float, high: float) -> str:
     """A centre or limit with as many decimals as show three digits of the distance between the limits."""
-    width = high - low
+    width = high - low if math.isfinite(high - low) else abs(value) or 1.0
+    if not math.isfinite(value):
+        return NONE
     power = int(f"{width:.2e}".split("e")[1])
     return fixed(value, max(0, 2 - power)) if -7 < power < 6 else number(value)
 
@@ -116,9 +120,9 @@ def results_until(count: float | None, horizon_days: float) -> str:
     return number(count) if count is not None else f"over {days(horizon_days)}"
 
 
-def mean_in_words(until: ResultsUntil) -> str:
+def mean_in_words(until: Until, never: float) -> str:
     """The mean, said to be a lower bound where some errors are never found."""
-    return f"{'at least ' if until.never > 0 else ''}{number(until.mean)}"
+    return f"{'at least ' if never > 0 else ''}{number(until.mean.value)}"
 
 
 def days(count: float) -> str:
