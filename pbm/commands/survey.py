@@ -58,19 +58,22 @@ class _Task:
     def __call__(self, history: "StreamHistory") -> "StreamSurvey":
         from pbm.stages.survey import survey_stream
 
-        return survey_stream(history, _patients(self.folder, history.name), self.lab, self.seed)
+        patient, _ = _encoded(self.folder, history.name, "patient")
+        lot, lots = _encoded(self.folder, history.name, "lot")
+        return survey_stream(history, patient, self.lab, self.seed, lot, lots)
 
 
-def _patients(folder: Path, name: "StreamName") -> "Integers":
-    """A number for each patient of a stream, -1 where not known."""
+def _encoded(folder: Path, name: "StreamName", column: str) -> "tuple[Integers, list[str]]":
+    """A number for each result of a stream, -1 where the column is empty, and the texts that the numbers stand for."""
     import numpy as np
 
     from pbm.io.history import read_results
 
-    encoded = read_results(folder, name, ["patient"])["patient"].combine_chunks().dictionary_encode()
+    encoded = read_results(folder, name, [column])[column].combine_chunks().dictionary_encode()
     codes: Integers = encoded.indices.to_numpy(zero_copy_only=False).astype(np.int64)
-    unknown = [place for place, token in enumerate(encoded.dictionary.to_pylist()) if not token]
-    return np.where(np.isin(codes, unknown), -1, codes)
+    texts: list[str] = encoded.dictionary.to_pylist()
+    unknown = [place for place, text in enumerate(texts) if not text]
+    return np.where(np.isin(codes, unknown), -1, codes), texts
 
 
 def _survey(folder: LabFolder, lab: "Lab", seed: int, streams: "list[StreamSurvey]") -> "Survey":

@@ -21,7 +21,7 @@ import pyarrow.compute as pc
 import pyarrow.parquet as pq
 
 from pbm.errors import InputError, one_line
-from pbm.records.intake import COVARIATES, TakenExtract
+from pbm.records.intake import COVARIATES, RESULT_SCHEMA, TakenExtract
 from pbm.records.plan import HistoryMark
 from pbm.records.sex_and_age import read_age_band, read_sex
 from pbm.records.stream import StreamHistory, StreamName
@@ -33,8 +33,9 @@ PATIENT_KEY = "patient.key"
 _PREFIX = "stream="
 _UNSAFE = re.compile(r'[\x00-\x1f\x7f<>:"/\\|?*%]|^[ .]|[ .]$')
 
-# The mark of a history leaves out where a row came from, and the tokens for patients, whose key differs from history to history.
-_MARKED = ("time", "value", "censor", *(name for name in COVARIATES if name != "patient"))
+# The mark of a history leaves out where a row came from, the tokens for patients, whose key differs from history to history, and what only
+# the survey tells of.
+_MARKED = ("time", "value", "censor", *(name for name in COVARIATES if name not in ("patient", "lot")))
 
 
 def stream_folder(name: StreamName) -> str:
@@ -119,13 +120,21 @@ def read_results(folder: Path, name: StreamName, columns: list[str] | None = Non
     path = folder / stream_folder(name) / RESULTS
     try:
         # partitioning=None: else pyarrow reads a column "stream" out of the folder's name.
-        return pq.read_table(path, columns=columns, partitioning=None)
+        table = pq.read_table(path, columns=columns, partitioning=None)
     except FileNotFoundError:
         raise InputError(_no_such_stream(folder, name)) from None
     except (pa.ArrowInvalid, OSError) as error:
         raise InputError(
             f"{path} cannot be read ({one_line(error)}). Delete {folder} and take the extracts again with `pbm intake`."
         ) from None
+    return _with_lots(table, columns or RESULT_SCHEMA.names)
+
+
+def _with_lots(table: pa.Table, columns: list[str]) -> pa.Table:
+    """The table with these columns; a history taken by an earlier version knows no lots."""
+    if "lot" not in columns or "lot" in table.column_names:
+        return table
+    return table.append_column("lot", pa.array([""] * len(table), pa.string())).select(columns)
 
 
 def stream_sizes(folder: Path) -> dict[StreamName, int]:

@@ -10,7 +10,7 @@ import pyarrow as pa
 
 from pbm.records.stream import StreamName
 
-COVARIATES = ("specimen", "ward", "sex", "age", "priority", "patient")
+COVARIATES = ("specimen", "ward", "sex", "age", "priority", "lot", "patient")
 ROLES = ("time", "analyte", "value", "analyser", "unit", *COVARIATES, "kind")
 
 RESULT_SCHEMA = pa.schema(

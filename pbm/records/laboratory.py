@@ -88,6 +88,8 @@ class Extract(Written):
         For patient mix; an age such as "67", "67 y" or "3 m" is read, never a birth date, and a band of ages is kept.
     priority
         Kept beside the result.
+    lot
+        Lot of the reagent; `pbm survey` then tells how the level moved from lot to lot.
     patient
         Kept as a keyed one-way token only; for `repeat_hours`.
     kind
@@ -114,6 +116,7 @@ class Extract(Written):
     sex: str | None = None
     age: str | None = None
     priority: str | None = None
+    lot: str | None = None
     patient: str | None = None
     kind: str | None = None
     time_format: str | None = None

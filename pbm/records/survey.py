@@ -249,6 +249,35 @@ class Month(Found):
     spread: float | None
 
 
+class Lot(Found):
+    """One reagent lot, of the results that the suggested truncation admits.
+
+    Attributes
+    ----------
+    lot
+        As the extract names it.
+    first_day, last_day
+        Days of its first and last result.
+    results
+        How many.
+    median, mean
+        Of its results.
+    step
+        Its mean less that of the lot before, in TEa at the median of all; none for the first.
+    step_interval
+        90 % interval of it; days are drawn again as wholes.
+    """
+
+    lot: str
+    first_day: str
+    last_day: str
+    results: int
+    median: float
+    mean: float
+    step: float | None
+    step_interval: tuple[float, float] | None
+
+
 class LaterThird(Found):
     """The last third of the days, which `pbm tune` holds out, against what came before.
 
@@ -389,6 +418,8 @@ class StreamSurvey(Found):
         For each calendar day from the first; none on days with fewer than five results.
     months
         Month by month.
+    lots
+        Reagent lot by reagent lot, in order of first use; none where the history does not tell them.
     pattern, dependence
         Of the results with the suggested preparation; none where they are too few or do not vary.
     later_third
@@ -416,6 +447,7 @@ class StreamSurvey(Found):
     steady: tuple[Steady, ...]
     daily_medians: tuple[float | None, ...]
     months: tuple[Month, ...]
+    lots: tuple[Lot, ...]
     pattern: Pattern | None
     dependence: Dependence | None
     later_third: LaterThird | None
@@ -443,7 +475,7 @@ class Survey(Found):
         The streams.
     """
 
-    version: Annotated[int, Field(ge=1)] = 1
+    version: Annotated[int, Field(ge=1)] = 2
     made_by: str
     laboratory: str
     seed: int

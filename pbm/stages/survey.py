@@ -1,6 +1,7 @@
 """Survey: what each stream's results look like, what is odd about them, and a first judgement of whether a monitor is likely to pay."""
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -8,7 +9,7 @@ import numpy as np
 
 from pbm.errors import InputError
 from pbm.methods.autocorrelation import autocorrelation, effective_size
-from pbm.methods.candidates import preparations
+from pbm.methods.candidates import QUICK_GRID, preparations
 from pbm.methods.chain import Preparation
 from pbm.methods.clock_time import HOURS_A_WEEK
 from pbm.methods.jit import Floats, Integers
@@ -34,7 +35,14 @@ from pbm.stages.survey_words import first_judgement, oddities
 LARGEST = 1e60  # its fourth power is still a number
 
 
-def survey_stream(history: StreamHistory, patient: Integers, lab: Lab, seed: int) -> StreamSurvey:
+def survey_stream(
+    history: StreamHistory,
+    patient: Integers,
+    lab: Lab,
+    seed: int,
+    lot: Integers | None = None,
+    lots: Sequence[str] = (),
+) -> StreamSurvey:
     """Look at one stream.
 
     Parameters
@@ -43,6 +51,10 @@ def survey_stream(history: StreamHistory, patient: Integers, lab: Lab, seed: int
         All results of the stream, at least one.
     patient : (n,)
         A number for each patient, below 0 where not known.
+    lot : (n,), optional
+        Place in `lots` of each result's reagent lot, below 0 where not known.
+    lots
+        Names of the lots.
     lab
         The laboratory.
     seed
@@ -65,7 +77,8 @@ def survey_stream(history: StreamHistory, patient: Integers, lab: Lab, seed: int
         )
     around = Surroundings.of(history.name, lab, seed)
     seen = Observed.of(history, around.analyte, lab.laboratory.zone)
-    return _Survey(around, seen, around.stretch(history)).of_stream(patient)
+    known = np.full(len(history), -1) if lot is None else lot
+    return _Survey(around, seen, around.stretch(history)).of_stream(patient, known, lots)
 
 
 @dataclass(frozen=True)
@@ -76,14 +89,17 @@ class _Survey:
     seen: Observed
     stretch: Stretch
 
-    def of_stream(self, patient: Integers) -> StreamSurvey:
+    def of_stream(self, patient: Integers, lot: Integers, names: Sequence[str]) -> StreamSurvey:
         unit, medians = self.around.analyte.unit, self.seen.daily_medians()
         volume, distribution, performance = self.seen.volume(), self.seen.distribution(), self.seen.performance()
         gaps, slips, steady = tuple(self.seen.gaps()), tuple(self.seen.slips(medians)), tuple(self.seen.steady())
         months, repeats, needed = tuple(self.seen.months(self._admitted)), self.seen.repeats(patient), self._needed()
         pattern, dependence, later = self._pattern(), self._dependence(), self._later_third()
+        lots = tuple(self.seen.lots(lot, names, self._admitted, self.around.random("lots")))
         judged = first_judgement(volume, distribution, performance, needed, unit)
-        odd = oddities(volume, distribution, gaps, slips, steady, repeats, pattern, dependence, later, months, unit)
+        odd = oddities(
+            volume, distribution, gaps, slips, steady, repeats, pattern, dependence, later, months, lots, unit
+        )
         return StreamSurvey(
             stream=str(self.around.name),
             unit=unit,
@@ -100,6 +116,7 @@ class _Survey:
             steady=steady,
             daily_medians=tuple(None if math.isnan(median) else median for median in medians.tolist()),
             months=months,
+            lots=lots,
             pattern=pattern,
             dependence=dependence,
             later_third=later,
@@ -119,7 +136,7 @@ class _Survey:
         if len(x) < FEWEST_ADMITTED or np.ptp(x) == 0:
             return []
         per_day = len(x) / float(days.max() - days.min() + 1)
-        given = preparations(x, self.around.analyte.step, self.around.random("transform"))
+        given = preparations(x, self.around.analyte.step, self.around.random("transform"), QUICK_GRID)
         return choices(self.stretch, given, per_day / self._budget)
 
     @cached_property

@@ -1,7 +1,7 @@
 """What a survey reads off the results themselves, before any judgement: volume, gaps, distribution, repeats, slips, runs, months."""
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from datetime import date, datetime, timedelta
 from functools import cached_property
@@ -12,6 +12,7 @@ from scipy.stats import skew
 
 from pbm.methods.clock_time import MICROSECONDS_PER_DAY, local_microseconds
 from pbm.methods.jit import Floats, Integers
+from pbm.methods.lot_steps import lot_steps
 from pbm.methods.repeats import count_repeats
 from pbm.methods.steady_runs import find_steady_runs
 from pbm.methods.steps import quantiles_within_steps, reported_step
@@ -24,6 +25,7 @@ from pbm.records.survey import (
     Distribution,
     Gap,
     Histogram,
+    Lot,
     Month,
     PatientRepeats,
     Performance,
@@ -183,6 +185,30 @@ class Observed:
                 median=float(np.median(x)),
                 mean=float(x.mean()),
                 spread=float(x.std(ddof=1)) if len(x) > 1 else None,
+            )
+
+    def lots(
+        self,
+        lot: Integers,
+        names: Sequence[str],
+        admitted: np.ndarray[tuple[int], np.dtype[np.bool_]],
+        random: np.random.Generator,
+    ) -> Iterator[Lot]:
+        """Reagent lot by reagent lot, of the admitted results; `lot` (n,) is the place in `names` of each result's."""
+        x, days = self.history.value[admitted], self.days[admitted]
+        if not len(x):
+            return
+        tea = float(error_model(self.analyte).tea(np.array(np.median(x))))
+        for one in lot_steps(x, lot[admitted], days, random):
+            yield Lot(
+                lot=names[one.code],
+                first_day=iso_day(int(days[one.at[0]])),
+                last_day=iso_day(int(days[one.at[-1]])),
+                results=len(one.at),
+                median=float(np.median(x[one.at])),
+                mean=float(x[one.at].mean()),
+                step=one.step / tea if one.step is not None and tea > 0 else None,
+                step_interval=(one.interval[0] / tea, one.interval[1] / tea) if one.interval and tea > 0 else None,
             )
 
 

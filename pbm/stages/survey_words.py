@@ -14,6 +14,7 @@ from pbm.records.survey import (
     Distribution,
     Gap,
     LaterThird,
+    Lot,
     Month,
     Needed,
     Oddity,
@@ -29,6 +30,7 @@ FEWEST_DAYS, FEWEST_RESULTS = 20, 1_000  # below these `pbm tune` chooses nothin
 GOOD_DAYS, GOOD_RESULTS = 90, 5_000
 MUCH_CENSORED, MANY_REPEATS, MUCH_PATTERN = 0.05, 0.2, 0.1
 MORE_ALARMS = 1.5
+WORTH_TELLING = 0.1  # TEa, of a step between reagent lots
 
 
 class Judged(NamedTuple):
@@ -79,12 +81,14 @@ def oddities(
     dependence: Dependence | None,
     later: LaterThird | None,
     months: Sequence[Month],
+    lots: Sequence[Lot],
     unit: str,
 ) -> Iterator[Oddity]:
     """What to look at, the gravest first."""
     yield from _of_units(distribution, slips, unit)
     yield from _of_runs(steady, unit)
     yield from _of_later_third(later, months, unit)
+    yield from _of_lots(lots)
     yield from _of_gaps(gaps)
     yield from _of_history(volume, distribution)
     yield from _of_patients(repeats, pattern, dependence)
@@ -139,6 +143,28 @@ def _of_later_third(later: LaterThird | None, months: Sequence[Month], unit: str
         f"{later.alarms_at_least:.2g} times). Find out why (population, method, lot, an error) before they go to the bench, "
         "or learn on later days only.",
     )
+
+
+def _of_lots(lots: Sequence[Lot]) -> Iterator[Oddity]:
+    """Steps between lots of which even the nearer end of the interval is beyond what is worth telling."""
+    moved = [
+        after
+        for after in lots
+        if after.step_interval is not None
+        and (after.step_interval[0] >= WORTH_TELLING or after.step_interval[1] <= -WORTH_TELLING)
+    ]
+    if moved:
+        told = "; ".join(
+            f"{one.step:+.2f} TEa with lot {one.lot} from {one.first_day} (90 % interval {one.step_interval[0]:+.2f} to "
+            f"{one.step_interval[1]:+.2f})"
+            for one in moved[:3]
+            if one.step is not None and one.step_interval is not None
+        )
+        yield Oddity(
+            short=f"lots {len(moved)}",
+            words=f"The level moved with a reagent lot: {told}{_and_more(moved)}. Patients or the season may have their part in it. "
+            "A monitor on the live feed takes a new lot as an event and can learn its centre anew.",
+        )
 
 
 def _of_gaps(gaps: Sequence[Gap]) -> Iterator[Oddity]:

@@ -19,6 +19,7 @@ from pbm.io.history import (
     RESULTS,
     history_mark,
     read_history,
+    read_results,
     read_streams,
     stream_folder,
     stream_sizes,
@@ -41,6 +42,7 @@ def put(folder: Path, name: StreamName, rows: int = 3, changed: dict[str, Any] |
         "sex": ["F"] * rows,
         "age": ["61"] * rows,
         "priority": [""] * rows,
+        "lot": [""] * rows,
         "patient": ["µ" * i for i in range(rows)],
         "file": ["export.csv"] * rows,
         "line": list(range(2, rows + 2)),
@@ -63,6 +65,15 @@ def test_a_stream_comes_back_as_it_was_laid_down(tmp_path: Path) -> None:
     assert list(stream.specimen) == ["S-0", "S-1", "S-2"]
     assert list(stream.ward) == ["", "ED", ""]
     assert (list(stream.sex), list(stream.age)) == (["F"] * 3, ["60-74"] * 3)
+
+
+def test_a_history_of_before_lots_were_kept_is_read_with_none_and_has_the_same_mark(tmp_path: Path) -> None:
+    put(tmp_path, SODIUM)
+    mark, path = history_mark(tmp_path), tmp_path / stream_folder(SODIUM) / RESULTS
+    pq.write_table(pq.read_table(path, partitioning=None).drop_columns(["lot"]), path)
+    assert read_results(tmp_path, SODIUM).schema.names == RESULT_SCHEMA.names
+    assert read_results(tmp_path, SODIUM, ["lot"])["lot"].to_pylist() == ["", "", ""]
+    assert history_mark(tmp_path) == mark
 
 
 def test_sex_and_age_of_an_older_history_which_holds_them_as_written_are_read(tmp_path: Path) -> None:

@@ -23,7 +23,7 @@ def test_what_is_written_is_the_record_and_is_read_back_as_it_was(tmp_path: Path
     path = tmp_path / "survey.json"
     write_survey(path, survey())
     assert Survey.model_validate_json(path.read_bytes(), strict=True) == survey()
-    assert json.loads(path.read_text())["version"] == 1
+    assert json.loads(path.read_text())["version"] == 2
 
 
 def test_the_same_survey_gives_the_same_bytes(tmp_path: Path):

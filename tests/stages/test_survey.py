@@ -245,3 +245,35 @@ def test_a_result_that_no_method_measures_is_an_error_that_says_so():
 def test_strange_streams_are_surveyed(x: np.ndarray, days: float):
     assert surveyed(x, days=days, analyte="tsh").volume.results == 3000
     assert surveyed(x, days=days, censor=np.arange(3000) % 2).volume.results == 3000
+
+
+def test_reagent_lots_are_told_with_the_step_from_the_lot_before() -> None:
+    random = np.random.default_rng(3)
+    n = 12_000
+    lot = np.repeat([1, 0], n // 2)
+    x = np.rint(random.normal(139, 3, n) + np.where(lot == 0, 2.0, 0.0))
+    time = BEGIN + np.linspace(0, 120 * MICROSECONDS_PER_DAY - 1, n).astype(np.int64)
+    words = np.full(n, "", dtype=object)
+    history = StreamHistory(
+        StreamName("sodium", "line-1"), time, x, np.zeros(n, dtype=np.int8), words, words, words, words
+    )
+    found = survey_stream(history, np.full(n, -1), LAB, 1, lot, ["R-2", "R-1"])
+    first, second = found.lots
+    assert (first.lot, first.results, first.step) == ("R-1", n // 2, None)
+    assert second.lot == "R-2" and second.step == pytest.approx(0.5, abs=0.03)
+    assert second.step_interval is not None and second.step_interval[0] < second.step < second.step_interval[1]
+    (told,) = [one.words for one in found.oddities if one.short == "lots 1"]
+    assert "TEa with lot R-2 from 2031-03-07" in told
+
+
+def test_lots_of_the_same_level_are_no_oddity() -> None:
+    n = 12_000
+    x = np.rint(np.random.default_rng(4).normal(139, 3, n))
+    time = BEGIN + np.linspace(0, 120 * MICROSECONDS_PER_DAY - 1, n).astype(np.int64)
+    words = np.full(n, "", dtype=object)
+    history = StreamHistory(
+        StreamName("sodium", "line-1"), time, x, np.zeros(n, dtype=np.int8), words, words, words, words
+    )
+    found = survey_stream(history, np.full(n, -1), LAB, 1, np.repeat([0, 1], n // 2), ["R-1", "R-2"])
+    assert len(found.lots) == 2
+    assert not [one for one in found.oddities if one.short.startswith("lots")]

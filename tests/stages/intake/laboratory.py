@@ -22,6 +22,7 @@ LAB: dict[str, Any] = {
         "ward": "location",
         "sex": "sex",
         "age": "age",
+        "lot": "reagent_lot",
         "patient": "patient",
         "kind": "kind",
     },

@@ -25,6 +25,7 @@ def table(*rows: dict[str, Any]) -> pa.Table:
         "sex": "",
         "age": "",
         "priority": "",
+        "lot": "",
         "patient": "",
         "file": "a.csv",
     }
