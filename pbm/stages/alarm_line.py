@@ -1,9 +1,10 @@
 """An alarm as one line of text: what it is, how large, since when, how many unreliable results are expected, and the last control.
 
     07:41:12  sodium line-2  HIGH  EWMA 141.6 > 141.3  about +2.1 mmol/L (0.5 TEa)  since ~07:05 (41 results)  expect 3 unreliable
-    last control 06:00
+    last control 06:00 passed
 
-One line with two spaces between its parts. Times are those of the laboratory's clocks; another day is written out. Values carry one digit
+One line with two spaces between its parts. Times are those of the laboratory's clocks; the day of the alarm is written out unless it is
+today, other days unless they are the alarm's. What became of a control event is told where it was recorded. Values carry one digit
 more than results are reported with, or as many as it takes to tell the statistic from its limit.
 """
 
@@ -19,7 +20,7 @@ from pbm.stages.estimate import WINDOW
 _MOST_DECIMALS = 12
 
 
-def alarm_line(alarm: Alarm, analyte: Analyte, zone: ZoneInfo) -> str:
+def alarm_line(alarm: Alarm, analyte: Analyte, zone: ZoneInfo, today: date | None = None) -> str:
     """The line for the bench.
 
     Parameters
@@ -30,11 +31,13 @@ def alarm_line(alarm: Alarm, analyte: Analyte, zone: ZoneInfo) -> str:
         Its analyte: unit and the step in which results are reported.
     zone
         Time zone of the laboratory.
+    today
+        The day on which the line is read; without it the line is one of a log, which may be read on any day.
     """
     raised = datetime.fromtimestamp(alarm.time / 1e6, zone)
     decimals = max(0, ceil(-log10(analyte.step))) + 1
     parts = [
-        f"{raised:%H:%M:%S}",
+        f"{raised:%H:%M:%S}" if raised.date() == today else f"{raised:%Y-%m-%d %H:%M:%S}",
         f"{alarm.stream.analyte} {alarm.stream.analyser}",
         alarm.side,
         f"{STATISTICS[alarm.statistic].title} {_crossing(alarm, decimals)}",
@@ -42,7 +45,8 @@ def alarm_line(alarm: Alarm, analyte: Analyte, zone: ZoneInfo) -> str:
     if alarm.estimate is not None:
         parts += _estimated(alarm.estimate, decimals, analyte.unit, raised.date(), zone)
     if alarm.last_control is not None:
-        parts.append(f"last control {_clock(alarm.last_control, raised.date(), zone)}")
+        outcome = {True: " passed", False: " failed", None: ""}[alarm.last_control_passed]
+        parts.append(f"last control {_clock(alarm.last_control, raised.date(), zone)}{outcome}")
     return "  ".join(parts)
 
 

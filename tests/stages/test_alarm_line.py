@@ -1,7 +1,7 @@
 """An alarm as a line of text."""
 
 from dataclasses import replace
-from datetime import datetime
+from datetime import date, datetime
 
 import pytest
 
@@ -37,7 +37,7 @@ ALARM = Alarm(
 
 
 def line(alarm: Alarm, analyte: Analyte = LAB.analytes["sodium"]) -> str:
-    return alarm_line(alarm, analyte, ZONE)
+    return alarm_line(alarm, analyte, ZONE, date(2031, 3, 2))
 
 
 def test_the_line_says_what_the_bench_needs_in_its_order() -> None:
@@ -45,6 +45,16 @@ def test_the_line_says_what_the_bench_needs_in_its_order() -> None:
         "07:41:12  sodium line-2  HIGH  EWMA 141.6 > 141.3  about +2.1 mmol/L (0.5 TEa)  since ~07:05 (41 results)  "
         "expect 3 unreliable  last control 06:00"
     )
+
+
+def test_a_line_read_on_another_day_or_in_a_log_says_its_day() -> None:
+    for today in (None, date(2031, 3, 3)):
+        assert alarm_line(ALARM, LAB.analytes["sodium"], ZONE, today).startswith("2031-03-02 07:41:12  sodium line-2")
+
+
+@pytest.mark.parametrize(("passed", "told"), [(True, "06:00 passed"), (False, "06:00 failed"), (None, "06:00")])
+def test_the_outcome_of_the_last_control_is_told_where_it_was_recorded(passed: bool | None, told: str) -> None:
+    assert line(replace(ALARM, last_control_passed=passed)).endswith(f"last control {told}")
 
 
 def test_a_low_alarm_is_below_its_limit() -> None:
