@@ -57,7 +57,8 @@ class EventDesk:
             return event, []
         reached = [name for name in about if not _is_too_old(event, self._streams[name].newest)]
         monitors = sum(self._streams[name].note(event.time, event.kind) for name in reached)
-        late = "" if len(reached) == len(about) else f"too late for {len(about) - len(reached)} streams"
+        missed = len(about) - len(reached)
+        late = f"too late for {missed} stream{'s' * (missed != 1)}" if missed else ""
         return replace(event, effect="; ".join(filter(None, (self._effect(event.kind, monitors), late)))), reached
 
     def _does_something(self, kind: EventKind) -> bool:
