@@ -119,8 +119,9 @@ def read_results(folder: Path, name: StreamName, columns: list[str] | None = Non
     """
     path = folder / stream_folder(name) / RESULTS
     try:
-        # partitioning=None: else pyarrow reads a column "stream" out of the folder's name.
-        table = pq.read_table(path, columns=columns, partitioning=None)
+        # Not read_table: it takes a column "stream" out of the folder's name, and fails where a column is not in the file.
+        with pq.ParquetFile(path) as file:
+            table = file.read(columns=columns)
     except FileNotFoundError:
         raise InputError(_no_such_stream(folder, name)) from None
     except (pa.ArrowInvalid, OSError) as error:
