@@ -61,13 +61,14 @@ class Terminal(io.StringIO):
 
 
 def test_a_terminal_shows_streams_done_and_time_left(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(sys, "stderr", Terminal())
+    stderr = Terminal()
+    monkeypatch.setattr(sys, "stderr", stderr)
     sizes = {StreamName("sodium", line): size for line, size in (("a", 900), ("b", 90), ("c", 10))}
     with Progress("Tuning", sizes, 1) as progress:
         progress.step(StreamName("sodium", "a"))
-        shown = sys.stderr.getvalue()  # type: ignore[attr-defined]
+        shown = stderr.getvalue()
         assert "90%" in shown
         assert "1 of 3 streams, about 0 s left" in shown
         progress.step(StreamName("sodium", "c"))
         progress.step(StreamName("sodium", "b"))
-    assert "3 of 3 streams" in sys.stderr.getvalue()  # type: ignore[attr-defined]
+    assert "3 of 3 streams" in stderr.getvalue()
