@@ -32,10 +32,10 @@ def with_rhythms(plan: "Plan", history: Path, lab: "Lab", tuned: Iterable[str]) 
 
 
 def _times(history: Path, names: "Iterable[StreamName]") -> "dict[str, dict[StreamName, Integers]]":
-    """When the results of each stream came, by analyser."""
-    from pbm.io.history import read_history
+    """When the results of each stream came, by analyser; nothing else of the history is read, which may be large."""
+    from pbm.io.history import read_times
 
     found: dict[str, dict[StreamName, Integers]] = defaultdict(dict)
     for name in names:
-        found[name.analyser][name] = read_history(history, name).time
+        found[name.analyser][name] = read_times(history, name)
     return found

@@ -109,6 +109,18 @@ def read_history(folder: Path, name: StreamName) -> StreamHistory:
     )
 
 
+def read_times(folder: Path, name: StreamName) -> npt.NDArray[np.int64]:
+    """When the results of one stream came, UTC microseconds, in order.
+
+    Raises
+    ------
+    InputError
+        If the history does not hold the stream, or its file cannot be read.
+    """
+    times: npt.NDArray[np.int64] = read_results(folder, name, ["time"])["time"].cast(pa.int64()).to_numpy()
+    return times
+
+
 def read_results(folder: Path, name: StreamName, columns: list[str] | None = None) -> pa.Table:
     """The table of one stream: see `records.intake.RESULT_SCHEMA`; all columns, or those named.
 

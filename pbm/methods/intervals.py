@@ -39,7 +39,8 @@ def poisson_mixture_interval(expectations: Sequence[float], level: float = 0.9) 
     """
     tail = (1 - level) / 2
     last = int(poisson.ppf(1 - tail, max(expectations))) + 1
-    reached = poisson.cdf(np.arange(last + 1)[:, None], np.asarray(expectations)[None, :]).mean(axis=1)
+    chances = np.asarray(poisson.cdf(np.arange(last + 1)[:, None], np.asarray(expectations)[None, :]))
+    reached = chances.mean(axis=1)
     return int((reached <= tail).sum()), int((reached < 1 - tail).sum())
 
 
