@@ -11,8 +11,9 @@ from hypothesis import strategies as st
 from pydantic import ValidationError
 
 from pbm.errors import InputError
-from pbm.io.appraisal_file import read_appraisal, write_appraisal
-from pbm.records.appraisal import Appraisal, Figure
+from pbm.io.appraisal_file import differences, read_appraisal, write_appraisal
+from pbm.records.appraisal import Appraisal
+from pbm.records.figures import Figure
 from tests.io.report.sample import HOSTILE, SODIUM, THREE, appraisal, hostile
 
 
@@ -70,8 +71,8 @@ def test_a_missing_file_is_told(tmp_path: Path) -> None:
         (b"\xff\xfe{}", "Invalid JSON"),
         (b"[]", "should be an object"),
         (b"{}", "version: Field required"),
-        (b'{"version": 2}', "is of version 2, written by a newer pbm; this one reads version 1"),
-        (b'{"version": 1, "laboratory": 5}', "laboratory: Input should be a valid string"),
+        (b'{"version": 3}', "is of version 3, written by a newer pbm; this one reads version 2"),
+        (b'{"version": 2, "laboratory": 5}', "laboratory: Input should be a valid string"),
         (b"[" * 100_000, "recursion"),
     ],
 )
@@ -148,3 +149,25 @@ def test_a_failed_write_leaves_the_old_file(tmp_path: Path, monkeypatch: pytest.
 def test_names_are_written_as_they_are(tmp_path: Path) -> None:
     write_appraisal(tmp_path / "appraisal.json", hostile())
     assert read_appraisal(tmp_path / "appraisal.json").laboratory == HOSTILE
+
+
+def test_an_appraisal_does_not_differ_from_itself() -> None:
+    assert differences(THREE, THREE.model_copy(deep=True)) == []
+
+
+def test_what_differs_is_told_by_stream_and_fault_with_both_values() -> None:
+    judged = SODIUM.judged
+    assert judged is not None
+    changed = judged.faults[1].model_copy(update={"weight": 3.0})
+    faults = (judged.faults[0], changed, *judged.faults[2:])
+    other = SODIUM.model_copy(update={"judged": judged.model_copy(update={"faults": faults}), "onsets": 1})
+    given = appraisal(SODIUM)
+    assert differences(given, appraisal(other).model_copy(update={"seed": 1})) == [
+        "seed: 20310302 -> 1",
+        "streams[sodium@line-2].onsets: 2000 -> 1",
+        "streams[sodium@line-2].judged.faults[shift +0.25 TEa].weight: 1.0 -> 3.0",
+    ]
+
+
+def test_streams_that_are_in_one_appraisal_only_are_counted() -> None:
+    assert "streams: 4 entries -> 1 entries" in differences(THREE, appraisal(SODIUM))
