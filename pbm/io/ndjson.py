@@ -68,9 +68,9 @@ def _is_unicode(texts: list[str]) -> bool:
     return True
 
 
-def alarm_text(alarm: Alarm) -> str:
-    """An alarm as one JSON object without line end: times in UTC, a number without bound as null."""
-    given: dict[str, Any] = asdict(alarm)
+def alarm_text(alarm: Alarm, number: int | None = None) -> str:
+    """An alarm as one JSON object without line end: its number in the store as `id`, times in UTC, a number without bound as null."""
+    given: dict[str, Any] = ({} if number is None else {"id": number}) | asdict(alarm)
     given |= {"analyte": alarm.stream.analyte, "analyser": alarm.stream.analyser, "stream": str(alarm.stream)}
     given |= given.pop("estimate") or {}
     for name in _TIMES:

@@ -18,8 +18,17 @@ from pbm.io.store_engine import writing_engine
 from pbm.io.store_errors import told
 from pbm.io.store_migrations import migrate
 from pbm.io.store_place import Place
+from pbm.io.store_questions import COUNTED_VISITS, RUNS, UNNAMED_RESULTS
 from pbm.io.store_retention import Sweep
-from pbm.io.store_schema import NAMED, SCHEMA_VERSION, UNNAMED, VISITS, audit, feeds, metadata, results, schema, streams
+from pbm.io.store_schema import (
+    SCHEMA_VERSION,
+    alarms,
+    audit,
+    feeds,
+    metadata,
+    schema,
+    streams,
+)
 from pbm.io.store_schema import heartbeat as heartbeats
 from pbm.io.writer_lock import WriterLock
 from pbm.records.alarm import Alarm
@@ -27,7 +36,7 @@ from pbm.records.event import LabEvent
 from pbm.records.message import MessageKey
 from pbm.records.notice import Heartbeat, Notice
 from pbm.records.result import Result
-from pbm.records.snapshot import LATE, RERUN, Batch, Earlier, Edition, Snapshot
+from pbm.records.snapshot import RERUN, Batch, Earlier, Edition, Snapshot
 from pbm.records.stream import StreamName
 
 
@@ -97,30 +106,26 @@ class Store:
         return found
 
     def _find_runs(self, specimens: set[str], found: Earlier) -> None:
-        r, names = results.c, {number: name for name, number in self._numbers.streams.items()}
-        asked = select(r.stream, r.specimen, r.time, r.value, r.censor, r.left_out).where(
-            NAMED, r.specimen.in_(specimens)
-        )
-        for stream, specimen, time, value, censor, left_out in self._connection.execute(asked):
+        names = self._names()
+        rows = self._connection.execute(RUNS, {"specimens": list(specimens)})
+        for stream, specimen, time, value, censor, left_out in rows:
             runs = found.runs.setdefault((names[stream], specimen), {})
             runs[time, value, censor] = left_out != RERUN
 
     def _find_unnamed(self, times: set[int], found: Earlier) -> None:
-        r, names = results.c, {number: name for name, number in self._numbers.streams.items()}
-        sources = {number: source for source, number in self._numbers.feeds.items()}
-        asked = select(r.stream, r.time, r.value, r.censor, r.feed, r.edition).where(UNNAMED, r.time.in_(times))
-        for stream, time, value, censor, feed, edition in self._connection.execute(asked):
+        names, sources = self._names(), {number: source for source, number in self._numbers.feeds.items()}
+        rows = self._connection.execute(UNNAMED_RESULTS, {"times": list(times)})
+        for stream, time, value, censor, feed, edition in rows:
             editions = found.unnamed.setdefault((names[stream], time, value, censor), set())
             editions.add(Edition(sources[feed], edition))
 
     def _find_visits(self, patients: set[str], found: Earlier) -> None:
-        r, names = results.c, {number: name for name, number in self._numbers.streams.items()}
-        # One that came too late counts for its patient all the same.
-        counted = r.left_out.in_(("", LATE))
-        for stream, patient, time in self._connection.execute(
-            select(r.stream, r.patient, r.time).where(VISITS, r.patient.in_(patients), counted)
-        ):
+        names = self._names()
+        for stream, patient, time in self._connection.execute(COUNTED_VISITS, {"patients": list(patients)}):
             found.visits.setdefault((names[stream], patient), []).append(time)
+
+    def _names(self) -> dict[int, StreamName]:
+        return {number: name for name, number in self._numbers.streams.items()}
 
     # What is kept
 
@@ -170,6 +175,16 @@ class Store:
         """The alarm of every monitor whose episode is still open, the newest last."""
         with told(self.place), self._connection.begin():
             return store_rows.open_alarms(self._connection)
+
+    def alarms_after(self, number: int) -> list[tuple[int, Alarm]]:
+        """The alarms with a higher number, with their numbers, in their order; those of a watch on trial are not among them."""
+        with told(self.place), self._connection.begin():
+            return store_rows.alarms_after(self._connection, number)
+
+    @property
+    def last_alarm(self) -> int:
+        """Number of the last alarm; 0 if there is none."""
+        return self._numbers.last[alarms]
 
     def open_notices(self) -> list[Notice]:
         """The notices that last, the newest last."""

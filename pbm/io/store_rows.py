@@ -7,13 +7,13 @@ from typing import Any
 
 from sqlalchemy import Connection, Row, and_, func, select
 
+from pbm.io.store_questions import ANSWERED
 from pbm.io.store_schema import (
     alarms,
     annotations,
     events,
     feeds,
     heartbeat,
-    messages,
     monitors,
     notices,
     results,
@@ -54,6 +54,15 @@ def last_alarms(connection: Connection, count: int) -> list[Alarm]:
     return [_alarm(row) for row in reversed(connection.execute(asked).all())]
 
 
+def alarms_after(connection: Connection, number: int) -> list[tuple[int, Alarm]]:
+    """The alarms with a higher number, with their numbers, in their order; those of a watch on trial are not among them."""
+    asked = select(alarms, streams.c.analyte, streams.c.analyser).join(streams).order_by(alarms.c.id)
+    return [
+        (row.id, _alarm(row))
+        for row in connection.execute(asked.where(alarms.c.id > number, alarms.c.shadow.is_(False)))
+    ]
+
+
 def open_alarms(connection: Connection) -> list[Alarm]:
     """The alarm of every monitor whose episode is still open, the newest last."""
     newest = select(func.max(alarms.c.id)).group_by(alarms.c.stream, alarms.c.monitor)
@@ -76,13 +85,15 @@ def snapshots(connection: Connection) -> list[Snapshot]:
 def codes_answered(connection: Connection, keys: Iterable[MessageKey]) -> dict[MessageKey, str]:
     """Messages that were answered and have sender and number of one of those given, with the code; the content may be another."""
     numbers = {(one.sender, one.control_id) for one in keys}
-    asked = select(messages.c.sender, messages.c.control_id, messages.c.sha256, messages.c.code).where(
-        messages.c.sender.in_({sender for sender, _ in numbers}),
-        messages.c.control_id.in_({control_id for _, control_id in numbers}),
-    )
+    if not numbers:
+        return {}
+    asked = {
+        "senders": list({sender for sender, _ in numbers}),
+        "control_ids": list({control_id for _, control_id in numbers}),
+    }
     return {
         MessageKey(sender, control_id, sha256.hex()): code
-        for sender, control_id, sha256, code in (connection.execute(asked) if numbers else ())
+        for sender, control_id, sha256, code in connection.execute(ANSWERED, asked)
         if (sender, control_id) in numbers
     }
 
