@@ -139,7 +139,7 @@ class BatchRows:
     def _insert_messages(self, batch: Batch) -> None:
         if batch.messages:
             rows = [store_rows.message_row(one) | {"seq": self._last[results]} for one in batch.messages]
-            self._connection.execute(insert(messages), rows)
+            self._connection.execute(_INSERT[messages], rows)
 
     def _insert_events(self, given: Sequence[tuple[int, LabEvent]], before: int) -> None:
         self._insert_numbered(events, [store_rows.event_row(one) | {"seq": before + place} for place, one in given])
@@ -159,7 +159,7 @@ class BatchRows:
         for place, row in enumerate(rows):
             row[number] = first + place
         if rows:
-            self._connection.execute(insert(table), rows)
+            self._connection.execute(_INSERT[table], rows)
         self._last[table] += len(rows)
 
     def _number_streams(self, named: Iterable[StreamName]) -> None:
@@ -177,8 +177,8 @@ class BatchRows:
         for source, position in positions.items():
             count = delivered.get(source, 0)
             if source in self._feeds:
-                moved = update(feeds).where(feeds.c.id == self._feeds[source])
-                self._connection.execute(moved.values(position=position, delivered=feeds.c.delivered + count))
+                moved = {"of": self._feeds[source], "position": position, "count": count}
+                self._connection.execute(_MOVE_FEED, moved)
             else:
                 self._feeds[source] = len(self._feeds) + 1
                 row = {"id": self._feeds[source], "source": source, "position": position}
@@ -186,8 +186,8 @@ class BatchRows:
 
     def _add_to_tallies(self, counts: Mapping[str, int]) -> None:
         for reason, count in counts.items():
-            added = update(tallies).where(tallies.c.reason == reason).values(count=tallies.c.count + count)
-            if self._connection.execute(added).rowcount == 0:
+            added = self._connection.execute(_ADD_TO_TALLY, {"of": reason, "more": count})
+            if added.rowcount == 0:
                 self._connection.execute(insert(tallies).values(reason=reason, count=count))
 
     def _update_states(self, batch: Batch) -> None:
@@ -202,5 +202,15 @@ class BatchRows:
             self._connection.execute(_UPDATE_STREAM, times)
 
 
+# Built once: building a statement costs more than running it.
+_INSERT = {table: insert(table) for table in (*_NUMBERED, messages)}
+_MOVE_FEED = (
+    update(feeds)
+    .where(feeds.c.id == bindparam("of"))
+    .values(position=bindparam("position"), delivered=feeds.c.delivered + bindparam("count"))
+)
+_ADD_TO_TALLY = (
+    update(tallies).where(tallies.c.reason == bindparam("of")).values(count=tallies.c.count + bindparam("more"))
+)
 _UPDATE_MONITOR = update(monitors).where(monitors.c.stream == bindparam("of"), monitors.c.monitor == bindparam("nth"))
 _UPDATE_STREAM = update(streams).where(streams.c.id == bindparam("of"))
