@@ -41,10 +41,12 @@ class MonitorAppraisal(Found):
         What it is meant to find: "shift" or "imprecision".
     admitted
         Share of held-out results that the statistic takes.
+    measured_in
+        What centre, low and high are told in: the result's unit where the statistic is a level; else such as "SD of one value".
     centre
-        Of the statistic, in the result's unit (transformed back).
+        Of the statistic, transformed back where it is a level.
     low, high
-        Its control limits in the result's unit; none where that side raises no alarm.
+        Its control limits, likewise; none where that side raises no alarm.
     limits
         The same on the statistic's own scale, low and high.
     scale_centre
@@ -53,12 +55,15 @@ class MonitorAppraisal(Found):
         The statistic.
     false_alarms
         Its own alarms on held-out days.
+    predicted
+        Between which counts the training days expected these alarms, with 90 %; none where the plan does not say so for as many days.
     """
 
     words: str
     brief: str
     watches: str
     admitted: float
+    measured_in: str
     centre: float
     low: float | None
     high: float | None
@@ -66,6 +71,7 @@ class MonitorAppraisal(Found):
     scale_centre: float
     trace: Trace
     false_alarms: FalseAlarms
+    predicted: tuple[int, int] | None = None
 
 
 class StreamAppraisal(Found):

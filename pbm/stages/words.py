@@ -42,6 +42,14 @@ def monitor_in_brief(monitor: MonitorPlan) -> str:
     return ", ".join(parts + ["mix"] * (monitor.baseline is not None))
 
 
+def measured_in(monitor: MonitorPlan, unit: str) -> str:
+    """What a monitor's centre and limits are told in, once a level is transformed back."""
+    law = STATISTICS[monitor.statistic]
+    if law.begins == "level" or (law.begins == "spread" and monitor.transform == "none"):
+        return unit
+    return {"share": "share of the values", "cusum": "SD of one value"}.get(law.name, "SD on the transformed scale")
+
+
 def admitted_in_words(admit: Admit, unit: str) -> str:
     """Which results a monitor takes."""
     if admit.low is None and admit.high is None:

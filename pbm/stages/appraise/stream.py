@@ -17,7 +17,7 @@ from pbm.methods.verdict import Gain
 from pbm.records.appraisal import MonitorAppraisal, PeersTried, StreamAppraisal
 from pbm.records.judged import Judged, OnsetTime, Yearly
 from pbm.records.laboratory import Lab
-from pbm.records.plan import MonitorPlan, StreamPlan
+from pbm.records.plan import HeldOut, MonitorPlan, StreamPlan
 from pbm.records.stream import StreamHistory
 from pbm.stages.appraise.false_alarms import alarms_of, no_fault, trace_of
 from pbm.stages.appraise.fault import PARTS, FaultFound, appraise_fault, average_part, onset_time
@@ -29,7 +29,7 @@ from pbm.stages.appraise.watch import Running, Watch
 from pbm.stages.appraise.written import alone_and_with, rounded, worst_case
 from pbm.stages.from_plan import faults_of
 from pbm.stages.surroundings import Surroundings
-from pbm.stages.words import controls_in_words, monitor_in_brief, monitor_in_words
+from pbm.stages.words import controls_in_words, measured_in, monitor_in_brief, monitor_in_words
 
 EPOCH = date(1970, 1, 1)
 
@@ -126,6 +126,7 @@ def _monitor(ground: Ground, monitor: MonitorPlan, running: Running) -> MonitorA
         brief=monitor_in_brief(monitor),
         watches=monitor.watches,
         admitted=rounded(float(np.isfinite(running.z[ground.held_out]).mean())),
+        measured_in=measured_in(monitor, ground.around.analyte.unit),
         centre=_in_unit(ground, running, monitor.centre),
         low=None if low is None else _in_unit(ground, running, low),
         high=None if high is None else _in_unit(ground, running, high),
@@ -133,7 +134,13 @@ def _monitor(ground: Ground, monitor: MonitorPlan, running: Running) -> MonitorA
         scale_centre=monitor.centre,
         trace=trace_of(ground, running.path),
         false_alarms=alarms_of(ground, [running], monitor.budget_per_day),
+        predicted=_predicted(monitor.held_out, ground.split.held_out_days),
     )
+
+
+def _predicted(found: HeldOut | None, days: int) -> tuple[int, int] | None:
+    """What the plan expected of as many days."""
+    return found.predicted if found is not None and found.days == days else None
 
 
 def _in_unit(ground: Ground, running: Running, s: float) -> float:

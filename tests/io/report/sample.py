@@ -284,6 +284,7 @@ def monitor(
         words=f"Exponentially weighted mean (weight 0.03) of results from {centre - 3 * tea:.4g} to {centre + 3 * tea:.4g}",
         watches="shift",
         admitted=0.943,
+        measured_in="mmol/L",
         centre=centre,
         low=centre - half,
         high=centre + 1.1 * half,
@@ -295,6 +296,7 @@ def monitor(
             highest=tuple((level + spread).tolist()),
         ),
         false_alarms=false_alarms(episodes),
+        predicted=(0, 4),
     )
     return Invented(made, judged(per_day, faults, episodes))
 
