@@ -1,8 +1,9 @@
 """The feeds at work: a file polled, standard input read, a history paced; what they bring is handed over while more is being read.
 
-Everything that queued while the last batch was kept goes into the next one, up to `QUEUE` chunks: nothing ever waits for a clock. A feed is
-told when its chunk is kept. While the store cannot take a batch it is tried again and again, and nothing more is read. SIGINT and SIGTERM
-stop the feeds; what was read by then is still handed over. Only this module and feeds_mllp.py know asyncio.
+Everything that queued while the last batch was kept goes into the next one, up to `QUEUE` chunks: nothing ever waits for a clock. When
+nothing comes for a while the taker is called with nothing, since silence may mean something too. A feed is told when its chunk is kept.
+While the store cannot take a batch it is tried again and again, and nothing more is read. SIGINT and SIGTERM stop the feeds; what was read
+by then is still handed over. Only this module and feeds_mllp.py know asyncio.
 """
 
 import asyncio
@@ -22,6 +23,7 @@ from pbm.records.result import Result
 QUEUE = 4
 POLL = 0.15  # seconds
 AGAIN = 1.0  # seconds until a batch is tried again
+IDLE = 1.0  # seconds
 _READ = 2**16
 _MICROSECONDS = 1e6
 
@@ -136,7 +138,7 @@ def _lines(descriptor: int) -> Iterator[list[bytes]]:
         yield [held]
 
 
-def run(feeds: Sequence[Feed], prepare: Prepare, take: Take) -> None:
+def run(feeds: Sequence[Feed], prepare: Prepare, take: Take, every: float = IDLE) -> None:
     """Read feeds until all have ended or a signal stops them.
 
     Parameters
@@ -148,15 +150,17 @@ def run(feeds: Sequence[Feed], prepare: Prepare, take: Take) -> None:
     take
         Called in a thread of its own, one call at a time, with the prepared chunks that queued meanwhile. If it raises `StoreWaits` it is
         called again with the same ones until it does not, or until a signal comes; its other errors end the run.
+    every
+        When no chunk came for so many seconds, `take` is called without any.
     """
-    asyncio.run(_Run(feeds, prepare, take).until_the_end())
+    asyncio.run(_Run(feeds, prepare, take, every).until_the_end())
 
 
 class _Run:
     """One run of the feeds."""
 
-    def __init__(self, feeds: Sequence[Feed], prepare: Prepare, take: Take) -> None:
-        self._feeds, self._prepare, self._take = feeds, prepare, take
+    def __init__(self, feeds: Sequence[Feed], prepare: Prepare, take: Take, every: float) -> None:
+        self._feeds, self._prepare, self._take, self._every = feeds, prepare, take, every
         self._queue = asyncio.Queue[tuple[Feed, Chunk] | None](QUEUE)
         self._stopped = asyncio.Event()
 
@@ -166,7 +170,7 @@ class _Run:
         reading = asyncio.create_task(self._read_until_stopped())
         with ThreadPoolExecutor(1) as worker:
             try:
-                while batch := await self._queued():
+                while batch := await self._queued(worker):
                     await self._keep(worker, [chunk for _, chunk in batch])
                     for feed, _ in batch:
                         feed.kept()
@@ -191,10 +195,10 @@ class _Run:
                 with suppress(TimeoutError):
                     await asyncio.wait_for(self._stopped.wait(), AGAIN)
 
-    async def _queued(self) -> list[tuple[Feed, Chunk]]:
+    async def _queued(self, worker: ThreadPoolExecutor) -> list[tuple[Feed, Chunk]]:
         """What is queued, at least one chunk; nothing when all has been read."""
         batch: list[tuple[Feed, Chunk]] = []
-        given = await self._queue.get()
+        given = await self._next(worker)
         while given is not None:
             batch.append(given)
             if self._queue.empty() or len(batch) == QUEUE:
@@ -202,6 +206,19 @@ class _Run:
             given = self._queue.get_nowait()
         self._queue.put_nowait(None)  # met again when this batch is done
         return batch
+
+    async def _next(self, worker: ThreadPoolExecutor) -> tuple[Feed, Chunk] | None:
+        """The next of the queue; while there is none, the taker is called now and then."""
+        if not self._queue.empty():
+            return self._queue.get_nowait()
+        coming = asyncio.create_task(self._queue.get())
+        try:
+            while not (await asyncio.wait({coming}, timeout=self._every))[0]:
+                await self._keep(worker, [])
+        except BaseException:
+            coming.cancel()
+            raise
+        return coming.result()
 
     async def _read_until_stopped(self) -> None:
         """Fill the queue until every feed has ended, one has failed, or a signal came; then mark its end."""

@@ -96,6 +96,19 @@ def test_an_error_while_keeping_ends_the_run() -> None:
         run([Listed(chunks(30), threading.Event())], as_it_is, full)
 
 
+def test_when_nothing_comes_the_taker_is_called_with_nothing_and_no_chunk_is_lost() -> None:
+    come, taken, idle = threading.Event(), list[Chunk](), list[int]()
+
+    def take(batch: Sequence[Chunk]) -> None:
+        taken.extend(batch)
+        if not batch:
+            idle.append(len(taken))
+            come.set()
+
+    run([Listed(chunks(3), come), Listed(chunks(2))], as_it_is, take, every=0.01)
+    assert idle and len(taken) == 5
+
+
 @pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
 def test_a_signal_ends_the_run_after_the_batch_in_hand(number: signal.Signals) -> None:
     taken: list[Chunk] = []
