@@ -1,0 +1,1 @@
+"""The stage that judges a plan on held-out days."""
