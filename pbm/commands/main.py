@@ -6,7 +6,7 @@ import sys
 import typer
 
 from pbm import __version__
-from pbm.commands import appraise, demo, intake, survey, tune, watch
+from pbm.commands import appraise, demo, intake, store, survey, tune, watch
 from pbm.errors import PbmError
 
 app = typer.Typer(
@@ -25,6 +25,7 @@ app.command("survey")(survey.survey)
 app.command("tune")(tune.tune)
 app.command("appraise")(appraise.appraise)
 app.command("watch")(watch.watch)
+app.add_typer(store.app, name="store")
 
 
 def _version(wanted: bool) -> None:

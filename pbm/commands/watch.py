@@ -25,6 +25,15 @@ SpeedOption = Annotated[
         "--speed", min=0.001, help="Replay so many times faster than it happened.", show_default="as fast as it goes"
     ),
 ]
+KeepOption = Annotated[
+    str | None,
+    typer.Option(
+        "--keep",
+        metavar="DAYS",
+        help="Remove results older than so many days, such as 90d, from the store; those that the watch or an alarm needs stay.",
+        show_default="everything",
+    ),
+]
 
 
 def watch(
@@ -33,6 +42,7 @@ def watch(
     json: JsonOption = False,
     once: OnceOption = False,
     speed: SpeedOption = None,
+    keep: KeepOption = None,
 ) -> None:
     """Watch the live feed with the monitors of plan.toml, and print a line for each alarm.
 
@@ -43,4 +53,4 @@ def watch(
     """
     from pbm.commands.watch_work import watch_feed
 
-    watch_feed(LabFolder.find(lab), from_, json=json, once=once, speed=speed)
+    watch_feed(LabFolder.find(lab), from_, json=json, once=once, speed=speed, keep=keep)

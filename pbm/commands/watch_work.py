@@ -9,6 +9,7 @@ import typer
 
 from pbm.commands.folder import LabFolder
 from pbm.commands.lab import read_checked_lab
+from pbm.commands.watch_removal import Removal
 from pbm.commands.watch_sources import Opener, Source, check_sources
 from pbm.commands.watch_text import Account, opening, what_is_watched
 from pbm.errors import FeedError, PlanError, StoreWaits
@@ -29,7 +30,9 @@ _REMIND = 60.0  # seconds until it is told again that the store cannot take anyt
 _TICK = 0.25  # seconds between two looks of the counter on a terminal
 
 
-def watch_feed(folder: LabFolder, sources: Sequence[str], *, json: bool, once: bool, speed: float | None) -> None:
+def watch_feed(
+    folder: LabFolder, sources: Sequence[str], *, json: bool, once: bool, speed: float | None, keep: str | None = None
+) -> None:
     """Watch feeds until they end or are stopped.
 
     Raises
@@ -43,9 +46,9 @@ def watch_feed(folder: LabFolder, sources: Sequence[str], *, json: bool, once: b
     if not folder.plan.is_file():
         raise PlanError(f"There is no {folder.plan}, so nothing can be watched. `pbm tune` makes it from the history.")
     lab, plan, fingerprint = read_checked_lab(folder.lab), read_plan(folder.plan), plan_fingerprint(folder.plan)
-    live = Live(lab, plan, fingerprint)
+    live, removal = Live(lab, plan, fingerprint), Removal(keep, lab)
     with Store(store_place(lab.store, folder.store)) as store:
-        work = _Work(lab, live, store, json, once)
+        work = _Work(lab, live, store, json, once, removal)
         opener = Opener(folder, lab, store, work.say)
         work.sources = [opener.open(one, once=once, speed=speed) for one in sources]
         going_on = live.go_on(store.snapshots(), store.newest_times(), store.recent_results)
@@ -74,6 +77,7 @@ class _Work:
     store: Store
     json: bool
     once: bool
+    removal: Removal
     sources: Sequence[Source] = ()
     account: Account = field(init=False)
     _in_hand: tuple[Sequence[Chunk], Batch] | None = None
@@ -99,6 +103,7 @@ class _Work:
         for _, alarm in batch.alarms:
             self._clear_tick()
             typer.echo(alarm_text(alarm) if self.json else self.line(alarm))
+        self.removal.step(self.store)
         self._tick()
 
     def _taken(self, chunks: Sequence[Chunk]) -> Batch:

@@ -2,7 +2,10 @@
 
 import os
 import tempfile
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
+from typing import BinaryIO
 
 
 def replace_file(path: Path, content: bytes) -> None:
@@ -15,11 +18,18 @@ def replace_file(path: Path, content: bytes) -> None:
     content
         All its bytes.
     """
+    with replacing(path) as file:
+        file.write(content)
+
+
+@contextmanager
+def replacing(path: Path) -> Iterator[BinaryIO]:
+    """The same for content that is written piece by piece: the file appears when the context ends, unless by an error."""
     handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.")
     made = Path(name)
     try:
         with os.fdopen(handle, "wb") as file:
-            file.write(content)
+            yield file
             file.flush()
             os.fsync(file.fileno())
         made.chmod(path.stat().st_mode & 0o777 if path.exists() else 0o666 & ~_umask())

@@ -30,7 +30,8 @@ def unknown_parts(line: str) -> list[str]:
     """Which command or options of a `pbm ...` line do not exist."""
     known = {one.name: {*one.options, "--help"} for one in commands()}
     words = shlex.split(line, comments=True)[1:]
-    name = words[0] if words and not words[0].startswith("-") else ""
+    name = next((name for n in (2, 1) if (name := " ".join(words[:n])) in known), words[0] if words else "")
+    name = "" if name.startswith("-") else name
     if name not in known:
         return [name]
     options = [word.partition("=")[0] for word in words if re.match(r"--\w", word)]

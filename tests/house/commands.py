@@ -64,7 +64,13 @@ def commands() -> list[Command]:
     assert root is not None
     assert root.callback is not None
     first = Command("", tuple(str(own).split("\n\n")), "", tuple(_parameters(root.callback)))
-    return [first, *(_command(one.name, one.callback) for one in app.registered_commands)]
+    grouped = [
+        _command(f"{group.name} {one.name}", one.callback)
+        for group in app.registered_groups
+        if group.typer_instance is not None
+        for one in group.typer_instance.registered_commands
+    ]
+    return [first, *(_command(one.name, one.callback) for one in app.registered_commands), *grouped]
 
 
 def _command(name: str | None, function: Any) -> Command:

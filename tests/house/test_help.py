@@ -1,6 +1,5 @@
 """Every command has a help text with an example that it would take, and a page in the guide."""
 
-import shlex
 from pathlib import Path
 
 import pytest
@@ -15,7 +14,7 @@ COMMANDS = commands()[1:]
 @pytest.mark.parametrize("command", COMMANDS, ids=lambda one: one.name)
 def test_a_command_says_what_it_does_and_shows_an_example(command: Command):
     assert command.paragraphs[0].endswith(".")
-    assert shlex.split(command.example)[:2] == ["pbm", command.name]
+    assert command.example.startswith(f"pbm {command.name}")
     assert not unknown_parts(command.example)
 
 
@@ -26,4 +25,5 @@ def test_every_argument_and_option_says_what_it_means(command: Command):
 
 @pytest.mark.parametrize("command", COMMANDS, ids=lambda one: one.name)
 def test_a_command_has_a_page_in_the_guide(command: Command):
-    assert (GUIDE / f"{command.name}.md").read_text(encoding="utf-8").startswith(f"# pbm {command.name}\n")
+    page = command.name.split()[0]
+    assert (GUIDE / f"{page}.md").read_text(encoding="utf-8").startswith(f"# pbm {page}\n")
