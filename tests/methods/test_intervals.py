@@ -1,6 +1,4 @@
-"""Intervals of counts and shares, and the bootstrap over days: coverage, the general libraries, and days kept whole."""
-
-import math
+"""Intervals of counts, shares and sums: coverage, and the general libraries."""
 
 import numpy as np
 import pytest
@@ -12,11 +10,11 @@ from statsmodels.stats.rates import confint_poisson
 
 from pbm.methods.intervals import (
     binomial_interval,
-    bootstrap_interval,
-    day_weights,
     poisson_interval,
     rate_ratio,
     rates_differ,
+    sum_interval,
+    weighted_poisson_interval,
 )
 from pbm.methods.seeds import child
 
@@ -69,25 +67,23 @@ def test_rates_differ_is_the_binomial_test_of_the_share(a: int, b: int, ta: floa
     assert rates_differ(a, ta, b, tb) == pytest.approx(binomtest(a, a + b, ta / (ta + tb)).pvalue)
 
 
-@given(st.lists(st.integers(0, 9), min_size=1, max_size=40))
-def test_a_bootstrap_draw_takes_whole_days_as_many_as_there_are(days: list[int]) -> None:
-    weights = day_weights(np.array(days), 20, np.random.default_rng(1))
-    labels = sorted(set(days))
-    for draw in weights:
-        of_day = {day: {w for w, d in zip(draw.tolist(), days, strict=True) if d == day} for day in labels}
-        assert all(len(found) == 1 for found in of_day.values()), "every result of a day counts as often"
-        assert sum(next(iter(found)) for found in of_day.values()) == len(labels)
+@given(st.lists(st.integers(0, 30), min_size=1, max_size=12), LEVELS)
+def test_a_sum_of_counts_of_one_weight_has_the_exact_interval(counts: list[int], level: float) -> None:
+    low, high = weighted_poisson_interval(counts, [2.5] * len(counts), level)
+    assert (low, high) == pytest.approx(tuple(2.5 * end for end in poisson_interval(sum(counts), level)), rel=1e-9)
 
 
-def test_the_bootstrap_over_days_covers_a_mean_of_results_that_hang_together_within_days() -> None:
-    """Results of a day share half of their variance: an interval that took them for independent would cover far too seldom."""
-    days, per_day, runs, covered, naive = 40, 25, 200, 0, 0
-    place = np.repeat(np.arange(days), per_day)
-    for run in range(runs):
-        random = child(run, "bootstrap")
-        x = random.standard_normal(days)[place] + random.standard_normal(days * per_day)
-        low, high = bootstrap_interval(lambda w, x=x: float(np.average(x, weights=w)), day_weights(place, 200, random))  # type: ignore[misc]
-        covered += low <= 0 <= high
-        naive += abs(x.mean()) <= 1.645 * x.std() / math.sqrt(len(x))
-    assert 0.84 < covered / runs < 0.94
-    assert naive / runs < 0.5
+def test_a_weighted_sum_of_counts_is_covered_at_least_as_often_as_said() -> None:
+    random, expected, weights = child(8, "sum"), np.array([0.4, 3.0, 1.2]), [0.75, 0.5, 1.5]
+    counts = random.poisson(expected, (4000, 3))
+    true = float(expected @ weights)
+    held = [low <= true <= high for low, high in (weighted_poisson_interval(c.tolist(), weights) for c in counts)]
+    assert np.mean(held) >= 0.88
+    assert weighted_poisson_interval([], []) == (0.0, 0.0)
+
+
+def test_the_interval_of_a_sum_of_normal_figures_is_that_of_their_sum() -> None:
+    spreads = [1.0, 2.0, 2.0]
+    figures = [(x, x - 1.645 * s, x + 1.645 * s) for x, s in zip([5.0, 1.0, -2.0], spreads, strict=True)]
+    assert sum_interval(figures) == pytest.approx((4.0, 4.0 - 1.645 * 3, 4.0 + 1.645 * 3))
+    assert sum_interval([]) == (0.0, 0.0, 0.0)
