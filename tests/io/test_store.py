@@ -19,9 +19,12 @@ from pbm.io.store_schema import SCHEMA_VERSION
 from pbm.records.event import LabEvent
 from pbm.records.message import Annotation, Answered, MessageKey
 from pbm.records.notice import Heartbeat, Notice
+from pbm.records.reading import SetAside
 from pbm.records.snapshot import LATE, REPEAT, RERUN, Batch, Edition, KeptResult
 from tests.io.store_samples import ALARM, FEED, SNAPSHOT, batch, begun, results_kept, spoil, tables
 from tests.live_laboratory import MINUTE, SODIUM, SODIUM_2, START, results
+
+KEY = MessageKey("LIS^TERN BAY", "000123", "ab" * 32)
 
 
 def test_what_was_kept_is_there_when_the_store_is_opened_again(place: Place) -> None:
@@ -41,6 +44,23 @@ def test_numbers_come_back_to_the_last_bit(place: Place) -> None:
     with begun(place) as store:
         store.keep(batch(results=[KeptResult(one, "", FEED) for one in results(odd)], alarms=[]))
         assert [one.value.hex() for one in store.recent_results(SODIUM, 9)] == [value.hex() for value in odd]
+
+
+@pytest.mark.parametrize(
+    "text", ["a\0b", "\ue000", "\ue0000", "\0e\ue000\0", "µ Übersee 検体", "\u2028'\";--"], ids=repr
+)
+def test_whatever_a_feed_may_hold_is_kept_as_it_is_and_found_again(place: Place, text: str) -> None:
+    one = replace(results([140])[0], specimen=f"31-{text}", ward=text)
+    key = KEY._replace(sender=text, control_id=f"7{text}")
+    aside = [("live.csv", SetAside(4, "unknown test", text))]
+    with begun(place) as store:
+        store.keep(
+            batch(results=[KeptResult(one, "", FEED)], alarms=[], set_aside=aside, messages=[Answered(key, "AA", 1)])
+        )
+        assert store.recent_results(SODIUM, 1) == [one]
+        found = store.earlier([one], [key])
+        assert list(found.runs) == [(SODIUM, one.specimen)] and found.answered == {key: "AA"}
+    assert [row[4] for row in tables(place)["set_aside"]] == [text]
 
 
 def test_an_alarm_without_estimate_or_control_comes_back_as_it_was(place: Place) -> None:
@@ -143,7 +163,6 @@ def test_an_alarm_is_open_until_its_episode_closes(place: Place) -> None:
 
 # What comes beside results
 
-KEY = MessageKey("LIS^TERN BAY", "000123", "ab" * 32)
 EVENT = LabEvent(START, "reagent lot", "sodium", "line-1", "R-2031-07", "events.ndjson", START + 5, "level re-learned")
 NOTICE = Notice(START, "quiet", "sodium", "line-2", "line-2 quiet for 45 min, 20 expected")
 ANNOTATION = Annotation(SODIUM, "31-1", START, "C", "141", START + 9, "live.csv", 7)
