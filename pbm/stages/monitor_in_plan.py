@@ -13,7 +13,7 @@ from pbm.stages.to_plan import chain_in_plan, limits_in_plan
 def monitor_in_plan(ground: ProvingGround, whole: Stretch, member: Member, limits: CalibratedLimits) -> MonitorPlan:
     """The monitor; `whole` is the history with its held-out days, on which the limits are confirmed."""
     prepared, tracked = member.runner.candidate.preparation, member.runner.tracker
-    z = ground.training.prepared(prepared)
+    z = ground.not_fitted_to(prepared)
     wandering = wander(z, round(ground.per_day))
     return MonitorPlan(
         watches=member.watches,

@@ -9,6 +9,8 @@ from functools import partial
 
 import numpy as np
 
+from pbm.methods.chain import Preparation
+from pbm.methods.cross_fit import cross_fitted
 from pbm.methods.expected import Onsets
 from pbm.methods.faults import Fault
 from pbm.methods.jit import Floats
@@ -56,6 +58,13 @@ class ProvingGround:
     def faults(self) -> Weighted:
         """Every error condition of the analyte, with its weight."""
         return faults_of(self.around.analyte)
+
+    def not_fitted_to(self, preparation: Preparation) -> Floats:
+        """The training results as prepared, shape (n,), each by a patient-mix baseline that has not seen it."""
+        if preparation.baseline is None:
+            return self.training.prepared(preparation)
+        y = preparation.transformed(self.training.value, self.training.censor)
+        return cross_fitted(y, self.training.mix, self.split.days[: self.split.at])
 
     def early_onsets(self, count: int, horizon_days: float) -> Onsets:
         """Onsets on any training day but the first, for the rounds in which no baseline is fitted yet."""

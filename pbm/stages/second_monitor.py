@@ -32,7 +32,7 @@ class Member:
 
     def calibrated(self, ground: ProvingGround) -> CalibratedLimits | None:
         """Its limits by the day-block bootstrap; None if a side has no tail to learn from."""
-        z = ground.training.prepared(self.runner.candidate.preparation)
+        z = ground.not_fitted_to(self.runner.candidate.preparation)
         starts = np.flatnonzero(np.diff(ground.split.days[: ground.split.at], prepend=-1))
         return calibrated_limits(
             self.runner.tracker,
