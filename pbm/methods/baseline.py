@@ -2,15 +2,16 @@
 
     z = y - b,   b = effect of the ward + of the hour + of the sex + of the age band
 
-Sex and age take part where the history gives them. The additive effects are fitted by least squares, and each is shrunk towards 0 where
-its group is thin: an effect with sampling variance s^2 / n among effects with variance t^2 is multiplied by t^2 / (t^2 + s^2 / n). A group
-never seen in training has effect 0. The table is part of the plan and is never refitted silently.
+Sex and age take part where the history gives them and each explains at least a thousandth of the variance: what is not needed about a
+patient is not asked for. The additive effects are fitted by least squares, and each is shrunk towards 0 where its group is thin: an effect
+with sampling variance s^2 / n among effects with variance t^2 is multiplied by t^2 / (t^2 + s^2 / n). A group never seen in training has
+effect 0. The table is part of the plan and is never refitted silently.
 
 Source of the adjustment: "Regression-adjusted real-time quality control", Clinical Chemistry 2021;67:1342-50 (from memory). Source of the
 shrinkage: "Data analysis using Stein's estimator and its generalizations", Journal of the American Statistical Association 1975;70:311-319.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -20,6 +21,7 @@ from pbm.methods.jit import Floats, Integers
 HOURS = 168
 SIGNIFICANT = 4
 RIDGE = 1e-9
+LEAST_SHARE = 0.001  # of the variance, for sex or age to take part
 
 Effects = tuple[tuple[str, float], ...]
 
@@ -135,6 +137,18 @@ def fit_baseline(y: Floats, mix: Mix) -> Baseline:
     """
     taken = ~np.isnan(y)
     y, mix = y[taken], mix.rows(taken)
+    whole = _fitted(y, mix)
+    least = LEAST_SHARE * float(y.var())
+    sex, age = _if_it_pays(mix.sex, whole.sexes, least), _if_it_pays(mix.age, whole.ages, least)
+    return whole if sex is mix.sex and age is mix.age else _fitted(y, replace(mix, sex=sex, age=age))
+
+
+def _if_it_pays(groups: Groups | None, effects: Effects, least: float) -> Groups | None:
+    """The groups, unless the variance of their effects is less than the least."""
+    return None if groups is None or groups.effect(effects).var() < least else groups
+
+
+def _fitted(y: Floats, mix: Mix) -> Baseline:
     people = [groups for groups in (mix.sex, mix.age) if groups]
     codes = [mix.ward, mix.hour, *(groups.code for groups in people)]
     effects = shrunk_effects(y, codes, [len(mix.wards), HOURS, *(len(groups.names) for groups in people)])

@@ -92,8 +92,18 @@ def test_sex_and_age_take_part_where_somebody_has_them_only() -> None:
     found = fit_baseline(y, Mix.of(ward, hour, nobody, nobody))
     assert (found.sexes, found.ages) == ((), ())
     assert found == fit_baseline(y, Mix.of(ward, hour))
-    known = fit_baseline(y, Mix.of(ward, hour, women, nobody))
+    known = fit_baseline(y - (women == "F"), Mix.of(ward, hour, women, nobody))
     assert (dict(known.sexes).keys(), known.ages) == ({"", "F"}, ())
+
+
+def test_sex_or_age_that_explains_next_to_nothing_takes_no_part() -> None:
+    random = child(14, "idle")
+    sex, age = random.choice(["F", "M"], 20_000), random.choice(["18-39", "60-74", "75 and over"], 20_000)
+    y = 2.0 * (age == "60-74") + random.normal(0, 3, 20_000)
+    ward, hour = np.full(20_000, "ED", object), np.zeros(20_000, dtype=np.int64)
+    found = fit_baseline(y, Mix.of(ward, hour, sex, age))
+    assert (found.sexes, len(found.ages)) == ((), 3)
+    assert found == fit_baseline(y, Mix.of(ward, hour, age=age))
 
 
 def test_an_effect_of_sex_is_that_of_the_unknown_where_a_history_gives_no_sex() -> None:
