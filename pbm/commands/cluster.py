@@ -1,6 +1,7 @@
 """Work on the workers of a dask cluster: the same jobs; its workers must see the folder and hold the same version of pbm."""
 
 import logging
+import os
 import platform
 import threading
 from collections.abc import Iterable, Iterator, Sequence
@@ -122,7 +123,7 @@ def _client(address: str) -> Connection:
 
     def connect() -> None:
         try:
-            answer.set_result(library.Client(address, timeout=ANSWERS_WITHIN, set_as_default=False))
+            answer.set_result(library.Client(address, timeout=ANSWERS_WITHIN))
         except Exception as error:
             answer.set_exception(error)
 
@@ -150,15 +151,22 @@ def _ask_workers(client: Connection, address: str, history: Path) -> None:
             raise InputError(
                 f"The worker {worker} cannot do the work ({one_line(answer)}). Install the same version of pbm there, and start it again."
             )
-        if not answer.history:
-            raise InputError(
-                f"The worker {worker} on {answer.machine} does not see the folder {history}. {FOLDER_SHARED}"
-            )
-        if differing := [name for name in expected if answer.origin.get(name) != expected[name]]:
-            raise InputError(
-                f"The worker {worker} on {answer.machine} has another {differing[0]} ({answer.origin.get(differing[0])}; here "
-                f"{expected[differing[0]]}), which may change figures. Install the same versions there, and start it again."
-            )
+        if wrong := _wrong(answer, history, expected):
+            raise InputError(f"The worker {worker} on {answer.machine} {wrong}")
+
+
+def _wrong(answer: "Seen", history: Path, expected: dict[str, str]) -> str | None:
+    if not answer.history:
+        return f"does not see the folder {history}. {FOLDER_SHARED}"
+    if not answer.one_thread:
+        return (
+            "computes with several threads inside its linear algebra, which may change figures. Start it with OPENBLAS_NUM_THREADS=1 and "
+            "MKL_NUM_THREADS=1 in its environment, as `dask worker` itself does where it is not told --no-nanny."
+        )
+    for name, one in expected.items():
+        if (there := answer.origin.get(name)) != one:
+            return f"has another {name} ({there}; here {one}), which may change figures. Install the same versions there, and start it again."
+    return None
 
 
 @dataclass(frozen=True)
@@ -171,16 +179,19 @@ class Seen:
         Its name.
     history
         Whether the folder is there.
+    one_thread
+        Whether its linear algebra computes with one thread.
     origin
         Versions that decide figures.
     """
 
     machine: str
     history: bool
+    one_thread: bool
     origin: dict[str, str]
 
 
 def _seen(history: Path) -> Seen:
-    from pbm.commands.versions import origin
+    from pbm.commands.versions import ONE_THREAD, origin
 
-    return Seen(platform.node(), history.is_dir(), origin())
+    return Seen(platform.node(), history.is_dir(), ONE_THREAD.items() <= os.environ.items(), origin())

@@ -7,6 +7,7 @@ import typer
 
 from pbm import __version__
 from pbm.commands import appraise, demo, intake, store, survey, tune, watch
+from pbm.commands.versions import ONE_THREAD
 from pbm.errors import PbmError
 
 app = typer.Typer(
@@ -43,6 +44,7 @@ def _options(
 
 def main() -> None:
     """Run `pbm`; an error that a person can act on becomes one paragraph on stderr and exit code 2."""
+    os.environ.update(ONE_THREAD)
     try:
         app()
     except PbmError as error:

@@ -9,6 +9,8 @@ from pathlib import Path
 import pbm
 
 DECIDING = ("numpy", "scipy", "numba")
+# More threads inside a linear algebra library add up in another order and change last bits: one, wherever figures are made.
+ONE_THREAD = dict.fromkeys(("OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"), "1")
 
 
 def versions() -> dict[str, str]:
