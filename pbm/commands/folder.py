@@ -98,6 +98,11 @@ class LabFolder:
         return self.root / "watch.sqlite"
 
     @property
+    def bench(self) -> Path:
+        """What people enter while a watch runs."""
+        return self.root / "bench.sqlite"
+
+    @property
     def patient_key(self) -> Path:
         """The key of the tokens for patients on the live feed."""
         return self.root / "watch.key"

@@ -47,6 +47,10 @@ def check_sources(given: Sequence[str], *, speed: float | None) -> None:
     InputError
         If they do not.
     """
+    if not given:
+        raise InputError(
+            "--from says what to watch: mllp://HOST:PORT, a CSV file, - for NDJSON on standard input, or history."
+        )
     if speed is not None and HISTORY not in given:
         raise InputError(
             "--speed paces the replay of a history: pbm watch --from history --speed 60. Other feeds have their own pace."

@@ -2,14 +2,18 @@
 
 from collections import Counter
 from collections.abc import Iterable, Iterator
+from datetime import datetime
+from zoneinfo import ZoneInfo
 
 from pbm.commands.tables import table
 from pbm.records.laboratory import Lab
+from pbm.records.notice import Notice
 from pbm.records.plan import Plan, StreamPlan
 from pbm.records.snapshot import CORRECTION, DUPLICATE, SENT_AGAIN, Batch
 from pbm.records.stream import StreamName
 from pbm.stages.live import Live
 from pbm.stages.monitor import StreamMonitor
+from pbm.stages.states import state_of
 from pbm.stages.words import monitor_in_words
 
 _ORDINARY = (DUPLICATE, SENT_AGAIN)  # counted, not told one by one
@@ -20,14 +24,29 @@ CAUTION = (
 
 
 def what_is_watched(lab: Lab, plan: Plan, live: Live, source: str) -> str:
-    """Every stream of the plan with its monitors and their state, or why it has none."""
+    """Every stream of the plan with its monitors and their state, or why it has none; and whose silence is told."""
     rows = [row for name, stream in plan.streams.items() for row in _rows(name, stream, live)]
     planned = {StreamName.parse(name).analyte for name in plan.streams}
     rows += [
         [key, "no monitor", "not in plan.toml; `pbm tune` chooses one"] for key in lab.analytes if key not in planned
     ]
     head = f"{lab.laboratory.name}: {len(live.streams)} of {len(plan.streams)} streams of plan.toml are watched, from {source}."
-    return "\n\n".join([head, table(["stream", "state", "monitor"], rows), CAUTION])
+    return "\n\n".join([head, table(["stream", "state", "monitor"], rows), silence_in_words(lab, plan), CAUTION])
+
+
+def silence_in_words(lab: Lab, plan: Plan) -> str:
+    """Whose silence is told, and how often it will be although all is well."""
+    streams = sum(one.rhythm is not None for one in plan.streams.values())
+    if not streams and not plan.analysers:
+        return "Silence is not told: plan.toml does not say when results are to be expected. `pbm tune` learns it from the history."
+    return (
+        f"Silence is told of {_counted(len(plan.analysers), 'analyser')} and {_counted(streams, 'stream')}; of each about "
+        f"{lab.quiet.budget} although all is well."
+    )
+
+
+def _counted(number: int, name: str) -> str:
+    return f"{number} {name}{'s' * (number != 1)}"
 
 
 def _rows(name: str, stream: StreamPlan, live: Live) -> Iterator[list[str]]:
@@ -35,21 +54,30 @@ def _rows(name: str, stream: StreamPlan, live: Live) -> Iterator[list[str]]:
         yield [name, "no monitor", f"{stream.verdict}: {stream.reason}"]
         return
     for monitor in live.streams[StreamName.parse(name)].monitors:
-        yield [name, state_in_words(monitor), monitor_in_words(monitor.plan, stream.unit)]
+        quiet = live.liveness.is_quiet(monitor.stream)
+        yield [name, state_in_words(monitor, quiet=quiet), monitor_in_words(monitor.plan, stream.unit)]
 
 
-def state_in_words(monitor: StreamMonitor) -> str:
-    """Armed, warming up, or in an open alarm."""
-    if monitor.admitted < monitor.needed:
+def state_in_words(monitor: StreamMonitor, *, quiet: bool) -> str:
+    """Armed, warming up, quiet, or in an open alarm."""
+    state = state_of(monitor.admitted, monitor.needed, monitor.episode, quiet=quiet)
+    if state == "warming":
         return f"warming up: {monitor.admitted} of {monitor.needed} results"
-    return {0: "armed", 1: "ALARM OPEN, HIGH", -1: "ALARM OPEN, LOW"}[monitor.episode]
+    return f"ALARM OPEN, {'HIGH' if monitor.episode > 0 else 'LOW'}" if state == "open alarm" else state
+
+
+def notice_line(notice: Notice, zone: ZoneInfo) -> str:
+    """A notice as one line: when it began or ended, and what it says."""
+    ended = notice.closed_at is not None and notice.closed_at != notice.time
+    at = datetime.fromtimestamp((notice.closed_at if ended and notice.closed_at else notice.time) / 1e6, zone)
+    return f"{at:%Y-%m-%d %H:%M:%S}  {'NOTICE ENDED' if ended else 'NOTICE'}  {plain(notice.text)}"
 
 
 class Account:
     """What one run of the watch met."""
 
     def __init__(self, live: Live) -> None:
-        self._live = live
+        self.live = live
         self._taken = self._unwatched = self._alarms = 0
         self._left: Counter[str] = Counter()
         self._remarked: set[str] = set()
@@ -58,7 +86,7 @@ class Account:
         """Count a batch that was kept; a line for each reason that was not met before."""
         counted = [one.result.stream for one in batch.results if not one.left_out]
         self._taken += len(counted)
-        self._unwatched += sum(stream not in self._live.streams for stream in counted)
+        self._unwatched += sum(stream not in self.live.streams for stream in counted)
         self._alarms += len(batch.alarms)
         new = [reason for reason in batch.tallies if reason not in self._left and reason not in _ORDINARY]
         self._left.update(batch.tallies)
@@ -69,7 +97,7 @@ class Account:
         for source, remark in batch.remarks:
             if remark.text not in self._remarked:
                 self._remarked.add(remark.text)
-                found = f" ({_plain(remark.found)})" if remark.found else ""
+                found = f" ({plain(remark.found)})" if remark.found else ""
                 yield f"{source}, {_piece(source)} {remark.place}: {remark.text}{found}. More of the kind are not told."
 
     @property
@@ -86,16 +114,16 @@ class Account:
 def _first_of(reason: str, batch: Batch) -> str:
     for source, item in batch.set_aside:
         if item.reason == reason:
-            found = f" ({_plain(item.found)})" if item.found else ""
+            found = f" ({plain(item.found)})" if item.found else ""
             return f"{source}, {_piece(source)} {item.place}: {reason}{found}. Set aside; more of the kind are counted."
     for word in batch.annotations:
         if reason == CORRECTION:
             return (
-                f"{word.stream}, specimen {_plain(word.specimen) or 'not given'}: a later word on a result (OBX-11 {word.status}). The "
+                f"{word.stream}, specimen {plain(word.specimen) or 'not given'}: a later word on a result (OBX-11 {word.status}). The "
                 "result stays as it was taken; the word is kept beside it. More of the kind are counted."
             )
     result = next(one.result for one in batch.results if one.left_out == reason)
-    specimen = _plain(result.specimen) or "not given"
+    specimen = plain(result.specimen) or "not given"
     return f"{result.stream}, specimen {specimen}: {reason}. No monitor takes it; more of the kind are counted."
 
 
@@ -104,7 +132,7 @@ def _piece(source: str) -> str:
     return "message" if source.startswith("mllp") else "line"
 
 
-def _plain(text: str) -> str:
+def plain(text: str) -> str:
     """Text of a feed as it may go to a terminal: without signs that steer it."""
     return "".join(sign if sign.isprintable() else "?" for sign in text)
 

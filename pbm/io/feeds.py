@@ -49,14 +49,14 @@ class FileFeed(Feed):
     """A growing file, polled; with `once` it ends where the file ends."""
 
     def __init__(self, file: FollowedFile, *, once: bool) -> None:
-        self._file, self._once = file, once
+        self._file, self.once = file, once
 
     async def chunks(self) -> AsyncGenerator[Chunk]:
         """Whole lines as they come."""
         while True:
             if chunk := self._file.read():
                 yield chunk
-            elif self._once:
+            elif self.once:
                 return
             else:
                 await asyncio.sleep(POLL)
