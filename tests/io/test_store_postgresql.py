@@ -12,12 +12,20 @@ from pbm.io.store import Store
 from pbm.io.store_place import Place, in_words, store_place
 from pbm.io.store_reader import StoreReader
 from tests.io.store_samples import ALARM, batch, begun, spoil, tables
-from tests.postgresql import Server
+from tests.postgresql import REQUIRED, Server, running_server
 
 
 @pytest.fixture
 def place(postgresql_server: Server) -> Place:
     return store_place(postgresql_server.new_database(), Path())
+
+
+def test_in_ci_a_missing_server_is_an_error_and_elsewhere_a_reason_to_skip(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("tests.postgresql.why_not", lambda: "no server")
+    for required, outcome in (("required", pytest.fail.Exception), ("", pytest.skip.Exception)):
+        monkeypatch.setenv(REQUIRED, required)
+        with pytest.raises(outcome, match="no server"), running_server():
+            pass
 
 
 def test_a_place_is_told_without_its_password() -> None:
