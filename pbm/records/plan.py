@@ -2,10 +2,9 @@
 
 import math
 from datetime import date, datetime
-from functools import partial
 from typing import Annotated, Literal
 
-from pydantic import AfterValidator, Field, model_validator
+from pydantic import Field, model_validator
 
 from pbm.records.quantities import Finite, NotNegative, Positive, Written
 from pbm.records.rhythm import Rhythm
@@ -156,13 +155,6 @@ class HeldOut(Written):
     predicted: tuple[int, int] | None = None
 
 
-def _only(known: tuple[str, ...], effects: dict[str, float]) -> dict[str, float]:
-    for name in effects:
-        if name not in ("", *known):
-            raise ValueError(f'"{name}" is none of {", ".join(known)}, nor "" for not known')
-    return effects
-
-
 class BaselinePlan(Written):
     """Patient mix: what is taken from each result before the statistic, on the transformed scale.
 
@@ -181,8 +173,16 @@ class BaselinePlan(Written):
 
     wards: dict[str, Finite]
     hours: Annotated[tuple[Finite, ...], Field(min_length=168, max_length=168)]
-    sexes: Annotated[dict[str, Finite], AfterValidator(partial(_only, SEXES))] | None = None
-    ages: Annotated[dict[str, Finite], AfterValidator(partial(_only, AGE_BANDS))] | None = None
+    sexes: dict[str, Finite] | None = None
+    ages: dict[str, Finite] | None = None
+
+    @model_validator(mode="after")
+    def _only_known_groups(self) -> "BaselinePlan":
+        for key, effects, known in (("sexes", self.sexes, SEXES), ("ages", self.ages, AGE_BANDS)):
+            for name in effects or ():
+                if name not in ("", *known):
+                    raise ValueError(f'{key}: "{name}" is none of {", ".join(known)}, nor "" for not known')
+        return self
 
 
 class Outside(Written):

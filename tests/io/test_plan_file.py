@@ -72,7 +72,7 @@ def test_an_effect_of_a_band_that_is_none_is_told(tmp_path: Path) -> None:
     path = tmp_path / "plan.toml"
     write_plan(path, Plan(made=MADE, streams={"sodium@line-2": stream}))
     path.write_text(path.read_text().replace("60-74", "60-75"))
-    with pytest.raises(PlanError, match=r'ages: found .*"60-75" is none of under 1, 1-11'):
+    with pytest.raises(PlanError, match=r'baseline: .*ages: "60-75" is none of under 1, 1-11'):
         read_plan(path)
 
 
