@@ -1,10 +1,16 @@
 """Bootstrap over days: whole days are drawn with replacement, since onsets of one day share its patients.
 
-A draw takes as many working days and as many weekend days as there are (a week always has both), each with replacement. The mean of a
-figure over onsets is, in draw b with day d taken c_bd times, sum_d c_bd x_d / sum_d c_bd n_d, with x_d the sum of the figure over the n_d
-onsets of day d: all draws at once are one product of the day counts with the day sums. Intervals are percentile intervals.
+Working days and weekend days are drawn each among themselves (a week always has both), with replacement. As many draws as days would give
+intervals that are too narrow where days are few: of D days in S strata the share
 
-Source: "Bootstrap methods: another look at the jackknife", Annals of Statistics 1979;7:1-26.
+    (D - S) / D * (z / t)^2,   z and t the 95th percentiles of the normal distribution and of Student's with D - S degrees of freedom
+
+is drawn instead, so that the spread of a mean over the draws is that which a t interval would take. The mean of a figure over onsets is, in
+draw b with day d taken c_bd times, sum_d c_bd x_d / sum_d c_bd n_d, with x_d the sum of the figure over the n_d onsets of day d: all draws
+at once are one product of the day counts with the day sums. Intervals are percentile intervals.
+
+Sources: "Bootstrap methods: another look at the jackknife", Annals of Statistics 1979;7:1-26; fewer draws than observations:
+"Resampling inference with complex survey data", Journal of the American Statistical Association 1988;83:231-241.
 """
 
 from collections.abc import Sequence
@@ -12,6 +18,8 @@ from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
+from scipy.stats import norm
+from scipy.stats import t as student
 
 from pbm.methods.detection import Detection
 from pbm.methods.jit import Floats, Integers
@@ -28,6 +36,14 @@ def on_weekend(days: Integers) -> Mask:
     """Whether local days since 1970-01-01 are Saturdays or Sundays, shape (n,)."""
     weekend: Mask = (days + _THURSDAY) % _WEEK >= _SATURDAY
     return weekend
+
+
+def _share_drawn(days: int, strata: int) -> float:
+    """Draws for each day."""
+    free = days - strata
+    if free < 1:
+        return 1.0
+    return free / days * float(norm.ppf((1 + LEVEL) / 2) / student.ppf((1 + LEVEL) / 2, free)) ** 2
 
 
 def ends(drawn: Floats, value: float) -> tuple[float, float]:
@@ -109,11 +125,11 @@ class DayBootstrap:
         labels, day = np.unique(days, return_inverse=True)
         taken = np.zeros((draws, len(labels)))
         weekend = on_weekend(labels)
-        for stratum in (np.flatnonzero(~weekend), np.flatnonzero(weekend)):
-            if len(stratum):
-                taken[:, stratum] = random.multinomial(
-                    len(stratum), np.full(len(stratum), 1 / len(stratum)), size=draws
-                )
+        strata = [stratum for stratum in (np.flatnonzero(~weekend), np.flatnonzero(weekend)) if len(stratum)]
+        share = _share_drawn(len(labels), len(strata))
+        for stratum in strata:
+            count = max(round(share * len(stratum)), 1)
+            taken[:, stratum] = random.multinomial(count, np.full(len(stratum), 1 / len(stratum)), size=draws)
         return cls(taken, day.astype(np.int64))
 
     def mean(self, each: Floats, within: Mask | None = None) -> Estimate:

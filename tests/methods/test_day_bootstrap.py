@@ -2,6 +2,7 @@
 
 import numpy as np
 import pytest
+from scipy.stats import t as student
 
 from pbm.methods.day_bootstrap import DayBootstrap, Estimate, average, ends, largest, on_weekend
 from pbm.methods.detection import Detection
@@ -19,11 +20,24 @@ def test_saturdays_and_sundays_are_the_weekend() -> None:
     assert on_weekend(MONDAY + np.arange(8)).tolist() == [False] * 5 + [True, True, False]
 
 
-def test_a_draw_takes_as_many_working_days_and_weekend_days_as_there_are() -> None:
-    taken = drawn().taken
-    weekend = on_weekend(np.unique(DAYS))
-    assert (taken[:, weekend].sum(axis=1) == 3).all() and (taken[:, ~weekend].sum(axis=1) == 4).all()
+def test_working_days_and_weekend_days_are_drawn_each_among_themselves() -> None:
+    days = MONDAY + np.arange(35)
+    taken, weekend = drawn(300, days).taken, on_weekend(days)
+    assert len(set(taken[:, weekend].sum(axis=1))) == len(set(taken[:, ~weekend].sum(axis=1))) == 1
+    assert taken[0, weekend].sum() == 9 and taken[0, ~weekend].sum() == 22, (
+        "somewhat fewer than the 10 and 25 there are"
+    )
     assert taken.std(axis=0).min() > 0
+
+
+@pytest.mark.parametrize("days", [3, 6, 12, 40])
+def test_an_interval_of_few_days_is_as_wide_as_that_of_student(days: int) -> None:
+    calendar = MONDAY + np.arange(80)
+    working = calendar[~on_weekend(calendar)][:days]
+    each = child(6, days).normal(size=days)
+    found = DayBootstrap.of(working, 20_000, child(7, days)).mean(each)
+    half = float(student.ppf(0.95, days - 1)) * each.std(ddof=1) / days**0.5
+    assert 1.645 * found.drawn.std() == pytest.approx(half, rel=0.25 if days < 6 else 0.1)
 
 
 def test_a_mean_in_a_draw_is_that_of_the_observations_of_its_days() -> None:
@@ -119,12 +133,13 @@ def test_what_is_never_found_has_no_percentile_but_its_interval_may_have_one_end
 
 
 def test_about_nine_intervals_in_ten_hold_the_mean_of_observations_that_share_their_days() -> None:
-    held, runs = 0, 400
-    for run in range(runs):
-        random = child(5, run)
-        days = np.sort(MONDAY + random.integers(0, 56, 300))
-        by_day = random.normal(size=60)
-        each = 10 + by_day[days - MONDAY] + random.normal(size=300)
-        low, high = DayBootstrap.of(days, 200, random).mean(each).interval
-        held += low <= 10 <= high
-    assert 0.84 <= held / runs <= 0.94
+    for length in (9, 56):
+        held, runs = 0, 400
+        for run in range(runs):
+            random = child(5, run, length)
+            days = np.sort(MONDAY + random.integers(0, length, 300))
+            by_day = random.normal(size=length)
+            each = 10 + by_day[days - MONDAY] + random.normal(size=300)
+            low, high = DayBootstrap.of(days, 400, random).mean(each).interval
+            held += low <= 10 <= high
+        assert 0.86 <= held / runs <= 0.94
