@@ -18,8 +18,8 @@ from pbm.errors import InputError, one_line
 Connection = Any  # a distributed.Client: the library carries no types
 
 ANSWERS_WITHIN = 10.0  # seconds
-_LOOKS = 5.0  # seconds between two looks whether there are workers still
-_LOOKS_WITHOUT = 6  # so many looks without any worker, and the rest is given up
+LOOKS = 5.0  # seconds between two looks whether there are workers still
+LOOKS_WITHOUT = 6  # so many looks without any worker, and the rest is given up
 
 _DIED = (
     "every worker that took it died, and again when it was the only stream; most often there was not enough memory. Give the workers "
@@ -77,9 +77,9 @@ def _answers(client: Connection, jobs: Iterable[Job[T]]) -> Iterator[tuple[Job[T
     wait = _library().wait
     waiting: dict[Any, Job[T]] = {client.submit(job, pure=False): job for job in jobs}
     without = 0
-    while waiting and without < _LOOKS_WITHOUT:
+    while waiting and without < LOOKS_WITHOUT:
         try:
-            for future in wait(list(waiting), timeout=_LOOKS, return_when="FIRST_COMPLETED").done:
+            for future in wait(list(waiting), timeout=LOOKS, return_when="FIRST_COMPLETED").done:
                 job = waiting.pop(future)
                 yield job, _answer(job, future)
             without = 0
@@ -88,7 +88,7 @@ def _answers(client: Connection, jobs: Iterable[Job[T]]) -> Iterator[tuple[Job[T
         except CancelledError:
             break
     why = (
-        "the connection to the cluster was lost." if without < _LOOKS_WITHOUT else "the cluster has no worker any more."
+        "the connection to the cluster was lost." if without < LOOKS_WITHOUT else "the cluster has no worker any more."
     )
     yield from (
         (job, job.failed(f"{why} Give the same command again when the cluster runs.")) for job in waiting.values()
@@ -165,7 +165,7 @@ def _wrong(answer: "Seen", history: Path, expected: dict[str, str]) -> str | Non
         )
     for name, one in expected.items():
         if (there := answer.origin.get(name)) != one:
-            return f"has another {name} ({there}; here {one}), which may change figures. Install the same versions there, and start it again."
+            return f"has another {name} ({there}; here {one}), which may change figures. Install the same there, and start it again."
     return None
 
 

@@ -2,7 +2,8 @@
 
 import socket
 import sys
-from collections.abc import Iterator
+import threading
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
@@ -15,8 +16,9 @@ from pbm.commands.main import app
 from pbm.commands.work import over_streams
 from pbm.errors import InputError
 from pbm.io.plan_file import read_plan
-from tests.commands.many_streams import dies_on_chloride, fails_on_chloride, total, write_history
+from tests.commands.many_streams import Waits, dies_on_chloride, fails_on_chloride, total, write_history
 from tests.commands.test_tune import LAB
+from tests.commands.test_work import until
 
 SIZES = {"albumin@a": 10, "calcium@a": 40, "chloride@a": 30, "sodium@a": 20}
 dask: Any = pytest.importorskip("dask")
@@ -83,6 +85,39 @@ def test_tune_writes_the_same_plan_by_one_worker_by_two_and_on_a_cluster(tmp_pat
         assert ran.exit_code == 0, ran.stderr
         written.append(read_plan(tmp_path / "plan.toml").model_dump_json(exclude={"made": {"at"}}))
     assert written[0] == written[1] == written[2]
+
+
+def lost(folder: Path, loses: Callable[[Any], object]) -> list[str]:
+    """What is told of two streams whose cluster loses something while it works on the first."""
+    names = write_history(folder, {"sodium@a": 10, "sodium@b": 20})
+    at_work = folder / "at work"
+    at_work.mkdir()
+    with distributed.LocalCluster(
+        n_workers=1, threads_per_worker=1, dashboard_address=":0", silence_logs=50
+    ) as running:
+
+        def lose() -> None:
+            until(lambda: any(at_work.iterdir()))
+            loses(running)
+
+        losing = threading.Thread(target=lose)
+        losing.start()
+        done = over_streams(folder / "history", names, Waits(at_work), Cluster(running.scheduler_address), "Waiting")
+        losing.join()
+    return [one.failure for one in done]
+
+
+def test_a_cluster_that_loses_its_workers_is_told_by_every_stream(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(cluster, "LOOKS", 0.5)
+    told = lost(tmp_path, lambda running: running.scale(0))
+    assert all("the cluster has no worker any more. Give the same command again" in one for one in told), told
+
+
+def test_a_cluster_that_is_gone_is_told_by_every_stream(tmp_path: Path) -> None:
+    told = lost(tmp_path, lambda running: running.close())
+    assert all("the connection to the cluster was lost. Give the same command again" in one for one in told), told
 
 
 def test_a_worker_that_does_not_see_the_folder_is_named(two_workers: Cluster) -> None:
