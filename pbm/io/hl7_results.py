@@ -91,7 +91,7 @@ class ResultReader:
     def _read(self, signs: Delimiters, one: Observation, common: _Common, place: int, at: int) -> Read:
         fields = one.fields
         test, analyser = self._test(fields[3], signs), self._analyser(signs, one)
-        time = _in_iso(fields[19], common.zone) or _in_iso(common.time, common.zone)
+        time = _in_iso(signs.first(fields[19]), common.zone) or _in_iso(common.time, common.zone)
         try:
             status, value = "", ""
             # Of a control, or a test that nobody asks for, the value is not looked at: it may be a text about a person.
@@ -208,7 +208,7 @@ def _unit(signs: Delimiters, text: str) -> str:
 def _common(header: Header, order: Order) -> _Common:
     signs, none = header.delimiters, [""] * 20
     specimen = order.specimen or none
-    status_time, sent = order.fields[22], header.fields[7]
+    status_time, sent = signs.first(order.fields[22]), header.first(7)
     whole = len(status_time) >= _TO_THE_MINUTE
     return _Common(
         specimen=_specimen(signs, specimen, order),
@@ -217,7 +217,7 @@ def _common(header: Header, order: Order) -> _Common:
         patient=signs.first(order.patient[3]),
         sex=signs.first(order.patient[8]),
         birth=signs.first(order.patient[7]),
-        time=signs.first(status_time if whole else sent),
+        time=status_time if whole else sent,
         time_is_of="OBR-22" if whole else "MSH-7",
         zone=sent[-5:] if sent[-5:-4] in ("+", "-") else "",
     )
