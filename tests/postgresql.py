@@ -24,10 +24,10 @@ class Server:
         self.folder = folder
         self._numbers = count(1)
 
-    def new_database(self) -> str:
+    def new_database(self, how: str = "") -> str:
         """The address of a new, empty database."""
         name = f"laboratory_{next(self._numbers)}"
-        self.execute(f"CREATE DATABASE {name}")
+        self.execute(f"CREATE DATABASE {name} {how}")
         return self.address(name)
 
     def address(self, name: str) -> str:

@@ -1,5 +1,6 @@
 """The store in a PostgreSQL database: what is refused, what is told, and that no password is."""
 
+import shutil
 from pathlib import Path
 
 import psycopg
@@ -9,10 +10,12 @@ from sqlalchemy.exc import DBAPIError
 
 from pbm.errors import FeedError, InputError, StoreWaits
 from pbm.io.store import Store
+from pbm.io.store_engine import reading_engine
 from pbm.io.store_place import Place, in_words, store_place
 from pbm.io.store_reader import StoreReader
-from tests.io.store_samples import ALARM, batch, begun, spoil, tables
-from tests.postgresql import REQUIRED, Server, running_server
+from tests.io.store_samples import ALARM, batch, begun, results_kept, spoil, tables
+from tests.postgresql import REQUIRED, Server, running_server, user
+from tests.small_disk import enlarge, small_disk
 
 
 @pytest.fixture
@@ -111,3 +114,39 @@ def test_a_lock_held_too_long_is_told_and_then_it_goes_on(place: Place, monkeypa
                 store.keep(batch())
         store.keep(batch())
     assert StoreReader(place).alarms() == [ALARM]
+
+
+def test_on_a_server_without_space_nothing_that_was_kept_is_lost_and_it_goes_on_when_there_is_some(
+    postgresql_server: Server,
+) -> None:
+    folder = postgresql_server.folder / "small"
+    folder.mkdir(exist_ok=True)
+    with small_disk(folder, "9m"):
+        (folder / "space").mkdir()
+        shutil.chown(folder / "space", user())
+        postgresql_server.execute(f"CREATE TABLESPACE small LOCATION '{folder / 'space'}'")
+        address = postgresql_server.new_database("TABLESPACE small")
+        place = store_place(address, Path())
+        try:
+            with begun(place) as store:
+                kept = 0
+                with pytest.raises(StoreWaits, match="is full"):
+                    for n in range(200):
+                        some = batch(results=results_kept(1000 * n, 400), alarms=[], set_aside=[])
+                        store.keep(some)
+                        kept += 400
+                assert kept > 0
+                with pytest.raises(StoreWaits, match="is full"):
+                    store.keep(some)
+                enlarge(folder, "40m")
+                store.keep(some)
+                assert count(place) == kept + 400
+        finally:
+            postgresql_server.execute(f"DROP DATABASE {address.partition('@/')[2].partition('?')[0]}")
+            postgresql_server.execute("DROP TABLESPACE small")
+
+
+def count(place: Place) -> int:
+    """Results in a store."""
+    with reading_engine(place).connect() as connection:
+        return int(connection.execute(text("select count(*) from results")).scalar_one())

@@ -1,11 +1,7 @@
 """The store in a file of SQLite: on the disk with every commit, searched by index, and what it says when it cannot go on."""
 
 import os
-import shutil
 import sqlite3
-import subprocess
-from collections.abc import Iterator
-from contextlib import contextmanager
 from pathlib import Path
 
 import pytest
@@ -17,6 +13,7 @@ from pbm.io.store import Store
 from pbm.io.store_reader import StoreReader
 from tests.io.store_samples import ALARM, batch, begun, results_kept, tables
 from tests.live_laboratory import SODIUM
+from tests.small_disk import enlarge, nobody_may_write, small_disk
 
 
 @pytest.fixture
@@ -97,21 +94,6 @@ def test_a_read_only_folder_is_told(path: Path) -> None:
         Store(path)
 
 
-@contextmanager
-def nobody_may_write(folder: Path) -> Iterator[None]:
-    """A folder that may be read only; for root, who may everything, as another user."""
-    folder.chmod(0o555)
-    user = os.geteuid()
-    for place in folder.parents[:3] if user == 0 else ():
-        place.chmod(0o755)
-    os.seteuid(user or 65534)
-    try:
-        yield
-    finally:
-        os.seteuid(user)
-        folder.chmod(0o755)
-
-
 def test_a_store_locked_by_another_program_is_told(path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr("pbm.io.store_engine.LOCK_SECONDS", 0.1)
     with begun(path) as store, sqlite3.connect(path, isolation_level=None) as other:
@@ -141,23 +123,23 @@ def test_a_full_disk_is_told_and_when_there_is_space_again_it_goes_on(path: Path
         assert len(tables(path)["results"]) == len(kept["results"]) + 3
 
 
-@pytest.mark.skipif(os.geteuid() != 0 or not shutil.which("mount"), reason="a small file system is needed")
-def test_on_a_file_system_without_space_nothing_that_was_kept_is_lost(tmp_path: Path) -> None:
-    if subprocess.run(
-        ["mount", "-t", "tmpfs", "-o", "size=400k", "tmpfs", tmp_path], check=False, capture_output=True
-    ).returncode:
-        pytest.skip("this computer lets no file system be made")
-    try:
-        with begun(tmp_path / "watch.sqlite") as store:
-            kept = 0
-            with pytest.raises(StoreWaits, match="is full"):
-                for n in range(2000):
-                    store.keep(batch(results=results_kept(1000 * n), alarms=[], set_aside=[]))
-                    kept += 2
-            assert kept > 0
-            assert len(store.recent_results(SODIUM, 10_000)) == kept
-    finally:
-        subprocess.run(["umount", "-l", tmp_path], check=True)
+def test_on_a_disk_without_space_nothing_that_was_kept_is_lost_and_it_goes_on_when_there_is_some(
+    tmp_path: Path,
+) -> None:
+    with small_disk(tmp_path, "400k"), begun(tmp_path / "watch.sqlite") as store:
+        kept = 0
+        with pytest.raises(StoreWaits, match="is full"):
+            for n in range(2000):
+                some = batch(results=results_kept(1000 * n), alarms=[], set_aside=[])
+                store.keep(some)
+                kept += 2
+        assert kept > 0
+        with pytest.raises(StoreWaits, match="is full"):
+            store.keep(some)
+        assert len(store.recent_results(SODIUM, 10_000)) == kept
+        enlarge(tmp_path, "2m")
+        store.keep(some)
+        assert len(store.recent_results(SODIUM, 10_000)) == kept + 2
 
 
 def _pragma(store: Store, what: str) -> int:
