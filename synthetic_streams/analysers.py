@@ -44,7 +44,14 @@ class Levels:
 
     def at(self, time: Ints) -> Floats:
         """Level in force at each time."""
-        return self.level[np.clip(np.searchsorted(self.time, time, side="right") - 1, 0, None)]
+        return self.level[self._place(time)]
+
+    def lot_at(self, time: Ints) -> Ints:
+        """Reagent lot in force at each time, counted from 1."""
+        return np.asarray(np.cumsum(self.new_lot)[self._place(time)])
+
+    def _place(self, time: Ints) -> Ints:
+        return np.clip(np.searchsorted(self.time, time, side="right") - 1, 0, None)
 
 
 def levels(analyte: Analyte, line: str, first_day: date, days: int, seed: int) -> Levels:

@@ -5,6 +5,10 @@ from synthetic_streams.clock import TIMEZONE
 from synthetic_streams.controls import RULES, TIMES, control_sd
 from synthetic_streams.laboratory import NAME
 
+SHIFTS = '{ kind = "shift", sizes = [0.25, 0.5, 0.75, 1, 1.5, 2], unit = "TEa", signs = "both" }'
+NOISE = '{ kind = "noise", sizes = [2, 3, 4] }'
+WATCHED_FOR_NOISE = ("sodium",)  # patients spread little there, so that a growing imprecision shows
+
 
 def lab_toml() -> str:
     """Text of `lab.toml`."""
@@ -33,6 +37,7 @@ specimen = "specimen"
 ward = "location"
 sex = "sex"
 age = "age"
+lot = "lot"                     # of the reagent
 patient = "patient"
 kind = "kind"
 patient_kinds = ["P"]           # "Q" control and "F" proficiency rows are left out and counted
@@ -59,7 +64,7 @@ loinc = "{analyte.loinc}"
 names = {_quoted((analyte.code, *analyte.spellings))}
 reportable = {{ low = {analyte.low:g}, high = {analyte.high:g} }}
 controls.levels = [{levels}]
-faults = [{{ kind = "shift", sizes = [0.25, 0.5, 0.75, 1, 1.5, 2], unit = "TEa", signs = "both" }}]
+faults = [{", ".join((SHIFTS, *(NOISE,) * (analyte.key in WATCHED_FOR_NOISE)))}]
 """
 
 

@@ -42,6 +42,8 @@ class StreamSample:
         Index of the specimen in the laboratory's `draws`.
     specimen, ward, patient
         Text: specimen number, ward's code, patient's token.
+    lot
+        int64, reagent lot of the stream, counted from 1.
     true_value
         The patient's own value.
     raw
@@ -61,6 +63,7 @@ class StreamSample:
     specimen: Texts
     ward: Texts
     patient: Texts
+    lot: Ints
     true_value: Floats
     raw: Floats
     value: Floats
@@ -128,7 +131,8 @@ class Laboratory:
         order = np.argsort(time, kind="stable")
         draw, time = draw[order], time[order]
         true_value = self.draws.true_values(analyte, draw)
-        without = measure(analyte, true_value, self.levels(analyte, line).at(time), rng)
+        levels = self.levels(analyte, line)
+        without = measure(analyte, true_value, levels.at(time), rng)
         added = self.fault_error(analyte, line, without, time, time, faults)
         seen, unseen = report(analyte, without + added), report(analyte, without)
         return StreamSample(
@@ -139,6 +143,7 @@ class Laboratory:
             specimen=self.draws.specimen[draw],
             ward=WARD_CODES[self.draws.ward[draw]],
             patient=self.draws.patients.token[self.draws.patient[draw]],
+            lot=levels.lot_at(time),
             true_value=true_value,
             raw=without + added,
             value=seen.value,

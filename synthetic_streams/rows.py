@@ -18,7 +18,7 @@ Floats = npt.NDArray[np.float64]
 Texts = npt.NDArray[np.object_]
 
 COLUMNS = (
-    "reported_at", "test", "line", "result", "unit", "specimen", "location", "sex", "age", "patient", "kind",
+    "reported_at", "test", "line", "result", "unit", "specimen", "location", "sex", "age", "lot", "patient", "kind",
 )  # fmt: skip
 HEADER = ",".join(COLUMNS)
 
@@ -114,6 +114,8 @@ def patient_rows(draws: Draws, sample: StreamSample, stream: int) -> Rows:
     """The patient results of one stream."""
     count = len(sample)
     who = draws.patient[sample.draw]
+    named = f"{sample.analyte.code}-{sample.line.rpartition('-')[2].upper()}"
+    lots = np.array([f"{named}-{number:02}" for number in range(int(sample.lot.max(initial=0)) + 1)], dtype=object)
     ages = np.array([str(age) for age in range(102)], dtype=object)
     cells = {
         "test": same(sample.analyte.code, count),
@@ -124,6 +126,7 @@ def patient_rows(draws: Draws, sample: StreamSample, stream: int) -> Rows:
         "location": sample.ward,
         "sex": np.array(["F", "M"], dtype=object)[draws.patients.male[who].astype(np.int64)],
         "age": ages[draws.patients.age[who]],
+        "lot": lots[sample.lot],
         "patient": sample.patient,
         "kind": same("P", count),
     }

@@ -26,6 +26,14 @@ def test_levels_change_at_calibrations_and_the_noise_has_the_analytic_sd(laborat
     assert abs(z.std() - 1) < 4 / np.sqrt(2 * len(z))
 
 
+def test_a_lot_lasts_from_one_new_lot_to_the_next(laboratory: Laboratory) -> None:
+    steps = laboratory.levels(BY_KEY["sodium"], "line-1")
+    assert steps.new_lot[0], "the first calibration is with a lot of its own"
+    assert steps.lot_at(steps.time).tolist() == np.cumsum(steps.new_lot).tolist()
+    sample = laboratory.sample(BY_KEY["sodium"], "line-1")
+    assert (np.diff(sample.lot) >= 0).all() and sample.lot.min() >= 1
+
+
 def test_the_two_chemistry_lines_have_levels_of_their_own(laboratory: Laboratory) -> None:
     one, two = (laboratory.levels(BY_KEY["sodium"], line) for line in ("line-1", "line-2"))
     assert not set(one.level.tolist()) & set(two.level.tolist())

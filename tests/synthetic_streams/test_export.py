@@ -127,7 +127,7 @@ def test_a_rerun_comes_minutes_after_its_first_run_with_another_value(written: W
     by_line = dict(written.rows)
     reruns = [by_line[number] for number in written.truth["export"]["source_lines"]["rerun"]]
     firsts = {
-        (f[5], f[1], f[2]): f for f in reversed(list(by_line.values())) if len(f) == len(COLUMNS) and f[10] == "P"
+        (f[5], f[1], f[2]): f for f in reversed(list(by_line.values())) if len(f) == len(COLUMNS) and f[11] == "P"
     }
     for again in reruns:
         first = firsts[(again[5], again[1].upper(), again[2])]
@@ -138,7 +138,7 @@ def test_a_rerun_comes_minutes_after_its_first_run_with_another_value(written: W
 
 def test_history_ends_where_the_live_days_begin(written: Written) -> None:
     start = live_start(DAYS)
-    history = [utc(datetime.fromisoformat(fields[0])) for _, fields in written.rows if fields[10:] == ["P"]]
+    history = [utc(datetime.fromisoformat(fields[0])) for _, fields in written.rows if fields[11:] == ["P"]]
     with (written.folder / "live.csv").open(encoding="utf-8", newline="") as file:
         live = [utc(datetime.fromisoformat(row["reported_at"])) for row in csv.DictReader(file)]
     assert max(history) < start + 16 * 60 * 1_000_000
@@ -172,7 +172,7 @@ def test_the_history_crosses_the_clock_change_of_march(tmp_path: Path) -> None:
 def test_controls_are_a_file_of_their_own_and_are_the_same_in_the_export(written: Written) -> None:
     with (written.folder / "controls.csv").open(encoding="utf-8", newline="") as file:
         rows = list(csv.DictReader(file))
-    exported = Counter((f[0], f[2], f[3], CODES[f[1]]) for _, f in written.rows if f[10:] == ["Q"])
+    exported = Counter((f[0], f[2], f[3], CODES[f[1]]) for _, f in written.rows if f[11:] == ["Q"])
     assert Counter((r["time"], r["line"], r["value"], r["analyte"]) for r in rows) == exported
     assert {r["verdict"] for r in rows} == {"accepted", "rejected"}
     assert sum(r["verdict"] == "rejected" for r in rows) < 0.04 * len(rows)

@@ -45,7 +45,7 @@ def test_tea_is_that_of_the_regulation(lab: Lab, key: str, absolute: float | Non
 
 def test_every_column_it_names_is_in_the_export(lab: Lab) -> None:
     named = {getattr(lab.extract, role) for role in ("time", "analyte", "value", "analyser", "unit", "specimen", "ward",
-                                                     "sex", "age", "patient", "kind")}  # fmt: skip
+                                                     "sex", "age", "lot", "patient", "kind")}  # fmt: skip
     assert named == set(COLUMNS)
 
 
