@@ -6,7 +6,7 @@ import sys
 import typer
 
 from pbm import __version__
-from pbm.commands import appraise, demo, intake, store, survey, tune, watch
+from pbm.commands import appraise, demo, intake, note, store, survey, tune, watch
 from pbm.commands.versions import ONE_THREAD
 from pbm.errors import PbmError
 
@@ -26,6 +26,7 @@ app.command("survey")(survey.survey)
 app.command("tune")(tune.tune)
 app.command("appraise")(appraise.appraise)
 app.command("watch")(watch.watch)
+app.command("note")(note.note)
 app.add_typer(store.app, name="store")
 
 
