@@ -89,13 +89,11 @@ def over_streams(
         for one in _worked([job for job in jobs if job.name not in known], workers, label, finished):
             done.append(one)
     except KeyboardInterrupt:
-        kept = sum(not one.failure for one in done) if finished else 0
-        typer.echo(f"pbm: stopped; {kept} of {len(jobs)} streams are kept. {_GO_ON[kept > 0]}", err=True)
+        finished_now = sum(not one.failure for one in done)
+        kept = f"; {finished_now} of {len(jobs)} streams are finished and kept" if finished else ""
+        typer.echo(f"pbm: stopped{kept}. Give the same command again to go on.", err=True)
         raise typer.Exit(130) from None
     return sorted(done, key=lambda one: one.name)
-
-
-_GO_ON = {True: "Give the same command again to go on.", False: "Give the same command again to begin anew."}
 
 
 def _known(job: Job[T], finished: FinishedStreams[T] | None) -> Done[T] | None:

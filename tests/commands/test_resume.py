@@ -148,6 +148,8 @@ def test_ctrl_c_leaves_nothing_half_written_and_says_how_to_go_on(laboratory: Pa
         os.killpg(command.pid, signal.SIGINT)
         _, said = command.communicate(timeout=60)
     assert command.returncode == 130
-    assert re.fullmatch(r"pbm: stopped; \d of 5 streams are kept. Give the same command again to go on.\n", said)
+    assert re.fullmatch(
+        r"pbm: stopped; \d of 5 streams are finished and kept. Give the same command again to go on.\n", said
+    )
     assert sorted(path.name for path in laboratory.iterdir()) == [".pbm-tune", "history", "lab.toml"]
     assert all(re.fullmatch(r"stream=sodium@line-\d\.ndjson", name) for name in finished(laboratory))

@@ -122,7 +122,7 @@ def test_ctrl_c_leaves_with_130_and_says_how_to_go_on(
         over_streams(tmp_path / "history", names, InterruptedOn("chloride@a"), 1, "Adding", kept(tmp_path))
     assert left.value.exit_code == 130
     assert capsys.readouterr().err.splitlines() == [
-        "pbm: stopped; 2 of 5 streams are kept. Give the same command again to go on."
+        "pbm: stopped; 2 of 5 streams are finished and kept. Give the same command again to go on."
     ]
     over_streams(tmp_path / "history", names, total, 1, "Adding", kept(tmp_path))
     assert "2 of 5 streams were finished before" in capsys.readouterr().err
