@@ -62,7 +62,7 @@ class LiveStream:
 
     def kept(self, result: Result) -> Result:
         """A result as it may be kept: sex and age only where a monitor that starts again must know them."""
-        return replace(result, sex=result.sex if self._needs_sex else "", age=result.age if self._needs_age else "")
+        return _of_whom_is_kept(result, result.sex if self._needs_sex else "", result.age if self._needs_age else "")
 
     def is_late(self, time: int) -> bool:
         """Whether a result comes too late for the monitors."""
@@ -86,6 +86,10 @@ class LiveStream:
         for monitor in self.monitors:
             monitor.said.clear()
         return said
+
+
+def _of_whom_is_kept(result: Result, sex: str, age: str) -> Result:
+    return result if (sex, age) == (result.sex, result.age) else replace(result, sex=sex, age=age)
 
 
 class Live:
@@ -305,7 +309,7 @@ class _Work:
             reason = self._repeat(result)
         if not reason and stream is not None and stream.is_late(result.time):
             reason = LATE
-        kept = stream.kept(result) if stream is not None else replace(result, sex="", age="")
+        kept = stream.kept(result) if stream is not None else _of_whom_is_kept(result, "", "")
         self._results.append(KeptResult(kept, reason, edition))
         if reason:
             self._tallies[reason] += 1
