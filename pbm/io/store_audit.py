@@ -43,7 +43,8 @@ def append(connection: Connection, at: int, what: str, detail: str, plan_after: 
     plan_after
         SHA-256 of the plan in force from now on; without it the plan stays.
     """
-    last = connection.execute(select(audit.c.id, audit.c.hash, audit.c.plan_after).order_by(audit.c.id.desc())).first()
+    newest = select(audit.c.id, audit.c.hash, audit.c.plan_after).order_by(audit.c.id.desc()).limit(1)
+    last = connection.execute(newest).first()
     number, before, plan = (last.id, last.hash, last.plan_after) if last else (0, FIRST, "")
     entry: dict[str, Any] = {
         "id": number + 1,

@@ -47,6 +47,29 @@ def test_on_a_full_disk_it_waits_and_with_space_again_it_goes_on_as_if_nothing_h
         assert kept(folder) == kept(whole)
 
 
+def test_stopped_while_the_disk_is_full_it_says_so_and_loses_nothing(tmp_path: Path) -> None:
+    live = tmp_path / "live.csv"
+    live.write_text(csv(FEED[:300]))
+    (folder := tmp_path / "laboratory").mkdir()
+    with small_disk(folder, "4m"):
+        write_folder(folder, every_line())
+        with following(live, folder) as process:
+            wait_for_results(folder, 300)
+            (ballast := folder / "ballast").write_bytes(bytes(3_300_000))
+            with live.open("a") as file:
+                file.write("".join(f"{line}\n" for line in csv_lines(FEED[300:9000])))
+            assert any("is full" in line for line in process.stderr or ())
+            process.send_signal(signal.SIGTERM)
+            first, err = process.communicate(timeout=30)
+        assert process.returncode == 2 and "What was kept before is safe" in err and "Traceback" not in err
+        ballast.unlink()
+        second = pbm("watch", "--from", live, "--lab", folder, "--once")
+        whole = write_folder(tmp_path / "whole", every_line())
+        undisturbed = pbm("watch", "--from", live, "--lab", whole, "--once")
+        assert first + second.stdout == undisturbed.stdout
+        assert kept(folder) == kept(whole)
+
+
 def test_a_full_disk_ends_a_run_to_the_end_of_a_file_with_a_paragraph(tmp_path: Path) -> None:
     live = tmp_path / "live.csv"
     live.write_text(csv(FEED))

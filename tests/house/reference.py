@@ -134,7 +134,8 @@ def _cells(one: Parameter) -> list[str]:
 def _store_page() -> Iterator[str]:
     yield from ("# watch.sqlite", "", NOTE, "")
     yield (
-        f"Layout {SCHEMA_VERSION}. Written by `pbm watch` alone; other programs open it read-only. Times are UTC microseconds since 1970."
+        f"Layout {SCHEMA_VERSION}. Written by `pbm watch` alone; other programs open it read-only. Times are UTC microseconds since 1970. "
+        "With `store` in lab.toml the same tables stand in the schema `watch` of that PostgreSQL database."
     )
     for table in metadata.sorted_tables:
         yield from ("", f"## {table.name}", "", *([table.comment, ""] if table.comment else []))

@@ -80,6 +80,12 @@ def test_a_damaged_file_is_told(path: Path, content: bytes | None, told: str) ->
         store.keep(batch())
 
 
+def test_a_library_that_is_too_old_is_refused(path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("sqlite3.sqlite_version_info", (3, 31, 1))
+    with pytest.raises(FeedError, match=r"the store needs 3\.32\.0 or later"):
+        Store(path)
+
+
 def test_a_folder_that_is_not_there_is_told(tmp_path: Path) -> None:
     with pytest.raises(FeedError, match="The folder must exist"):
         Store(tmp_path / "nowhere" / "watch.sqlite")
