@@ -71,13 +71,14 @@ def running_server() -> Iterator[Server]:
     """A server that runs as long as the context; skips, or fails where `REQUIRED` is set, if there can be none."""
     if reason := why_not():
         (pytest.fail if os.environ.get(REQUIRED) else pytest.skip)(reason)
-    folder = Path(tempfile.mkdtemp(prefix="pbm-postgresql-"))
+    # Where the server's user may go, too, and with a name short enough for a socket.
+    folder = Path(tempfile.mkdtemp(prefix="pbm-postgresql-", dir="/tmp"))
     data = folder / "data"
     try:
         if os.geteuid() == 0:
             shutil.chown(folder, _USER)
         _run("initdb", "--pgdata", data, "--auth", "trust", "--encoding", "UTF8", "--locale", "C", "--no-sync")
-        options = f"-c listen_addresses='' -c unix_socket_directories='{folder}'"
+        options = f"-c shared_buffers=16MB -c listen_addresses='' -c unix_socket_directories='{folder}'"
         _run("pg_ctl", "start", "--pgdata", data, "--wait", "--log", folder / "log", "--options", options)
         try:
             yield Server(folder)
