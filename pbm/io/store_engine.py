@@ -38,8 +38,18 @@ def reading_engine(place: Place) -> Engine:
     """The same database read-only; a connection lives no longer than one question."""
     if isinstance(place, URL):
         return _postgresql(place, to_write=False)
-    file = f"file:{quote(str(place.absolute()))}?mode=ro"
-    return create_engine("sqlite://", creator=lambda: sqlite3.connect(file, uri=True), poolclass=NullPool)
+    return create_engine("sqlite://", creator=lambda: _connect_to_read(place), poolclass=NullPool)
+
+
+def _connect_to_read(path: Path) -> sqlite3.Connection:
+    log = path.with_name(f"{path.name}-wal")
+    # A copy put away on a medium that cannot be written: nobody writes it, and there is no room for the files of a log.
+    put_away = "" if log.exists() or _may_write(path.parent) else "&immutable=1"
+    return sqlite3.connect(f"file:{quote(str(path.absolute()))}?mode=ro{put_away}", uri=True)
+
+
+def _may_write(folder: Path) -> bool:
+    return os.access(folder, os.W_OK, effective_ids=os.access in os.supports_effective_ids)
 
 
 def _sqlite(path: Path) -> Engine:

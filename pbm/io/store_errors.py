@@ -24,6 +24,7 @@ _CAUSES = {
     "SQLITE_CANTOPEN": "{place} cannot be opened. Check that its folder exists and that this user may read and write there.",
     "SQLITE_CORRUPT": _DAMAGED,
     "SQLITE_NOTADB": "{place} is not a store of pbm. Move it away, or name another folder with --lab.",
+    "SQLITE_IOERR_SHMSIZE": _FULL,
     "SQLITE_IOERR": "The disk that holds {place} fails to read or write. Check the disk.",
     "53100": _FULL,
     "55P03": _LOCKED,

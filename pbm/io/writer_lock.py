@@ -6,6 +6,7 @@ releases when the connection ends.
 
 import fcntl
 import os
+from contextlib import suppress
 from pathlib import Path
 from typing import Any
 
@@ -42,8 +43,9 @@ class WriterLock:
             holder = os.pread(self._file, 20, 0).decode("ascii", "replace").strip() or "unknown"
             os.close(self._file)
             raise _another(f"process {holder}", str(store)) from None
-        os.ftruncate(self._file, 0)
-        os.pwrite(self._file, f"{os.getpid()}\n".encode(), 0)
+        with suppress(OSError):  # on a full disk it is not told who holds it, and that is all
+            os.ftruncate(self._file, 0)
+            os.pwrite(self._file, f"{os.getpid()}\n".encode(), 0)
 
     def release(self) -> None:
         """Let others write. The file stays: taking it away could let two writers in."""

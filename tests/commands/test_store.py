@@ -8,6 +8,7 @@ import pytest
 
 from tests.commands.test_watch import FEED, csv, pbm
 from tests.live_laboratory import SODIUM, every_line, write_folder
+from tests.small_disk import small_disk
 
 
 @pytest.fixture
@@ -96,6 +97,19 @@ def test_what_is_no_store_is_told(folder: Path, command: tuple[str, ...]) -> Non
     (folder / "watch.sqlite").write_bytes(b"no database " * 500)
     done = pbm("store", *command, "--lab", folder)
     assert done.returncode == 2 and "is not a store of pbm" in done.stderr and "Traceback" not in done.stderr
+
+
+def test_a_full_disk_is_told_and_no_part_of_a_file_is_left(folder: Path, tmp_path: Path) -> None:
+    (disk := tmp_path / "disk").mkdir()
+    with small_disk(disk, "16k"):
+        done = pbm("store", "export", disk / "out", "--lab", folder)
+        assert done.returncode == 2 and "No space left on device" in done.stderr and "Traceback" not in done.stderr
+        assert {path.name for path in (disk / "out").iterdir()} <= {
+            "audit.csv",
+            "events.csv",
+            "notices.csv",
+            "annotations.csv",
+        }
 
 
 def test_a_folder_that_cannot_be_made_is_told(folder: Path) -> None:

@@ -2,6 +2,7 @@
 
 import signal
 import sqlite3
+from contextlib import suppress
 from pathlib import Path
 
 import pytest
@@ -68,6 +69,26 @@ def test_stopped_while_the_disk_is_full_it_says_so_and_loses_nothing(tmp_path: P
         undisturbed = pbm("watch", "--from", live, "--lab", whole, "--once")
         assert first + second.stdout == undisturbed.stdout
         assert kept(folder) == kept(whole)
+
+
+@pytest.mark.parametrize("there_before", [False, True])
+def test_a_disk_that_is_full_at_the_start_is_told(tmp_path: Path, there_before: bool) -> None:
+    live = tmp_path / "live.csv"
+    live.write_text(csv(FEED[:300]))
+    (folder := tmp_path / "laboratory").mkdir()
+    with small_disk(folder, "4m"):
+        write_folder(folder, every_line())
+        if there_before:
+            assert pbm("watch", "--from", live, "--lab", folder, "--once").returncode == 0
+        ballast = folder / "ballast"
+        with suppress(OSError), ballast.open("wb", buffering=0) as file:
+            while True:
+                file.write(bytes(4096))
+        done = pbm("watch", "--from", live, "--lab", folder, "--once")
+        assert done.returncode == 2 and "is full. Free some space." in done.stderr and "Traceback" not in done.stderr
+        ballast.unlink()
+        assert pbm("watch", "--from", live, "--lab", folder, "--once").returncode == 0
+        assert results_kept(folder) == 300
 
 
 def test_a_full_disk_ends_a_run_to_the_end_of_a_file_with_a_paragraph(tmp_path: Path) -> None:

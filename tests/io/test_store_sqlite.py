@@ -54,6 +54,13 @@ def test_a_reader_cannot_write(path: Path) -> None:
         connection.execute(text("delete from audit"))
 
 
+def test_a_copy_on_a_medium_that_cannot_be_written_is_read(path: Path) -> None:
+    with begun(path) as store:
+        store.keep(batch())
+    with nobody_may_write(path.parent):
+        assert StoreReader(path).alarms() == [ALARM]
+
+
 def test_a_store_that_is_not_there_is_told() -> None:
     with pytest.raises(InputError, match=r"There is no store nowhere/watch\.sqlite"):
         StoreReader(Path("nowhere/watch.sqlite"))
