@@ -74,25 +74,32 @@ def on_cluster(client: Connection, jobs: Sequence[Job[T]]) -> Iterator[Done[T]]:
 
 def _answers(client: Connection, jobs: Iterable[Job[T]]) -> Iterator[tuple[Job[T], Done[T] | None]]:
     """Answers as they come; None where the workers died."""
-    wait = _library().wait
     waiting: dict[Any, Job[T]] = {client.submit(job, pure=False): job for job in jobs}
     without = 0
     while waiting and without < LOOKS_WITHOUT:
         try:
-            for future in wait(list(waiting), timeout=LOOKS, return_when="FIRST_COMPLETED").done:
-                job = waiting.pop(future)
-                yield job, _answer(job, future)
-            without = 0
-        except TimeoutError:
-            without = 0 if client.nthreads() else without + 1
-        except CancelledError:
+            finished = _finished(client, list(waiting))
+        except (CancelledError, OSError):  # the scheduler has gone
             break
+        without = without + 1 if finished is None else 0
+        for future in finished or ():
+            job = waiting.pop(future)
+            yield job, _answer(job, future)
     why = (
         "the connection to the cluster was lost." if without < LOOKS_WITHOUT else "the cluster has no worker any more."
     )
     yield from (
         (job, job.failed(f"{why} Give the same command again when the cluster runs.")) for job in waiting.values()
     )
+
+
+def _finished(client: Connection, waiting: list[Any]) -> set[Any] | None:
+    """The next that are finished, none when there are none in time; None when there is no worker either."""
+    try:
+        finished: set[Any] = _library().wait(waiting, timeout=LOOKS, return_when="FIRST_COMPLETED").done
+    except TimeoutError:
+        return set() if client.nthreads() else None
+    return finished
 
 
 def _answer(job: Job[T], future: Any) -> Done[T] | None:
