@@ -83,6 +83,8 @@ def _illness(heartbeat: Heartbeat | None, at: int) -> str:
     """Why no watch is alive; "" if one is."""
     if heartbeat is None:
         return "no watch has left a sign of life here yet."
+    if json.loads(heartbeat.state).get("ended"):
+        return f"the watch (process {heartbeat.pid}) was ended {duration(max(0, at - heartbeat.at))} ago."
     if heartbeat.at > at + FRESH:
         return (
             f"the last sign of life lies {duration(heartbeat.at - at)} ahead: the computer's clock went back, and the watch (process "

@@ -7,7 +7,7 @@ from collections.abc import Sequence
 from contextlib import suppress
 
 from pbm.commands.clock import now
-from pbm.errors import StoreWaits
+from pbm.errors import FeedError
 from pbm.io.store import Store
 from pbm.records.notice import Heartbeat
 from pbm.records.reading import Chunk
@@ -46,9 +46,16 @@ class Heart:
 
     def beat(self) -> None:
         """Leave a sign of life if it is time for one. While the store cannot take it there is none."""
-        if time.monotonic() < self._next:
-            return
-        self._next = time.monotonic() + EVERY
+        if time.monotonic() >= self._next:
+            self._next = time.monotonic() + EVERY
+            self._leave()
+
+    def end(self) -> None:
+        """Leave the last one: that the watch has ended is then known, and need not be inferred from its silence."""
+        self._state["ended"] = True
+        self._leave()
+
+    def _leave(self) -> None:
         state = json.dumps(self._state | {"feeds": self._feeds})
-        with suppress(StoreWaits):
+        with suppress(FeedError):
             self._store.beat(Heartbeat(self._started, now(), os.getpid(), self._last_result, self._last_arrival, state))

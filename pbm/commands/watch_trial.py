@@ -36,9 +36,9 @@ def _row(one: Trial) -> list[str]:
     return [
         one.name,
         f"{one.days:.1f}",
-        f"{one.predicted:.1f}",
+        f"{one.predicted:.2f}",
         str(one.seen),
-        f"{low:.1f} to {high:.1f}",
+        f"{low:.2f} to {high:.2f}",
         "no" if one.agrees else "YES",
     ]
 

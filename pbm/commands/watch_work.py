@@ -250,6 +250,7 @@ class _Work:
         with suppress(FeedError):  # what is not known to be out goes out again
             if out := self.alarms_out.position():
                 self.store.keep(Batch(positions=out))
+        self.heart.end()
         for source in self.sources:
             self.screen.say(*source.notices())
             if (file := source.file) and file.unread:

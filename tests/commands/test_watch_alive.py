@@ -112,8 +112,9 @@ def test_a_feed_that_falls_silent_is_told_by_the_clock_of_the_computer(
     done = pbm("watch", "--from", "-", "--lab", folder, stdin=ndjson(FEED[:60]))
     assert "NOTICE  line-1 quiet for 10 min, 20 expected" in done.stderr
     assert {one.analyser for one in StoreReader(folder / "watch.sqlite").open_notices()} == {"line-1", "line-2"}
-    health = pbm("watch", "--health", "--lab", folder)
-    assert "monitors: 3 quiet, 1 open alarm" in health.stdout and "line-2 quiet for 10 min" in health.stdout
+    health = json.loads(pbm("watch", "--health", "--json", "--lab", folder).stdout)
+    assert sorted(one["state"] for one in health["monitors"]) == ["open alarm", "quiet", "quiet", "quiet"]
+    assert "line-2 quiet for 10 min, 20 expected" in [one["text"] for one in health["notices"]]
 
 
 def _then_idle(looks: int) -> Callable[..., None]:
@@ -203,6 +204,8 @@ def test_health_is_judged_by_the_age_of_the_last_sign_of_life(
     folder: Path, monkeypatch: pytest.MonkeyPatch, later: int, told: str
 ) -> None:
     once(folder)
+    with sqlite3.connect(folder / "watch.sqlite") as connection:
+        connection.execute("update heartbeat set state = '{}'")  # as if it had been killed
     beat = StoreReader(folder / "watch.sqlite").heartbeat()
     assert beat is not None
     monkeypatch.setattr(watch_health, "now", lambda: beat.at + later * 1_000_000)
@@ -211,6 +214,12 @@ def test_health_is_judged_by_the_age_of_the_last_sign_of_life(
     given = json.loads(pbm("watch", "--health", "--json", "--lab", folder).stdout)
     assert given["healthy"] is (later == 10) and given["pid"] == beat.pid
     assert {one["state"] for one in given["monitors"]} <= {"armed", "warming", "open alarm", "quiet"}
+
+
+def test_a_watch_that_was_ended_is_known_to_be(folder: Path) -> None:
+    once(folder)
+    done = pbm("watch", "--health", "--lab", folder)
+    assert done.returncode == 1 and "was ended " in done.stdout
 
 
 def test_where_no_watch_has_run_health_is_no(folder: Path) -> None:
@@ -236,7 +245,7 @@ def test_on_trial_alarms_are_kept_off_the_bench_and_told_against_the_plan(folder
     row = next(line for line in second.stderr.splitlines() if line.startswith("all streams"))
     # 4 monitors of 0.033 a day over 299 minutes; both runs of the trial together.
     days = 299 / 1440
-    assert row.split()[2:5] == [f"{days:.1f}", f"{4 * 0.033 * days:.1f}", str(len(alarms))]
+    assert row.split()[2:5] == [f"{days:.1f}", f"{4 * 0.033 * days:.2f}", str(len(alarms))]
     assert row.endswith("YES"), "so many alarms the plan did not predict: there was a fault"
 
 
