@@ -344,7 +344,9 @@ class _Work:
         """What is to be kept."""
         live = self._live
         said = [notice for stream in self._moved.values() for notice in stream.said()]
-        notices = [*said, *live.liveness.said(), *live.skew.judge(self._last)]
+        notices = sorted(
+            [*said, *live.liveness.said(), *live.skew.judge(self._last)], key=lambda one: one.closed_at or one.time
+        )
         if live.liveness.places and (self._positions or notices):
             self._positions[CLOCK] = live.liveness.state
         return Batch(
