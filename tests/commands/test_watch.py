@@ -5,7 +5,6 @@ import json
 import random
 import shlex
 import signal
-import sqlite3
 import subprocess
 import sys
 import tempfile
@@ -17,10 +16,15 @@ from pathlib import Path
 from typing import Any
 
 import pytest
+from sqlalchemy import text
+from sqlalchemy.exc import DBAPIError
 
 from pbm.commands.main import main
+from pbm.io.lab_file import read_lab
 from pbm.io.plan_file import plan_fingerprint, write_plan
 from pbm.io.store import Store
+from pbm.io.store_engine import reading_engine
+from pbm.io.store_place import Place, store_place
 from pbm.io.store_reader import StoreReader
 from pbm.records.plan import StreamPlan
 from pbm.records.reading import Chunk
@@ -107,16 +111,26 @@ def folder(tmp_path: Path) -> Path:
 
 def kept(folder: Path) -> dict[str, list[tuple[Any, ...]]]:
     """All that was kept, but for when, from where and in how many runs."""
-    with sqlite3.connect(folder / "watch.sqlite") as connection:
-        asked = {
-            "results": "select seq, stream, specimen, time, value, censor, ward, left_out from results",
-            "alarms": "select * from alarms",
-            "monitors": "select * from monitors",
-            "streams": "select * from streams",
-            "set_aside": "select place, reason, found, stream from set_aside",
-            "tallies": "select * from tallies order by reason",
-        }
-        return {name: connection.execute(question).fetchall() for name, question in asked.items()}
+    questions = {
+        "results": "select seq, stream, specimen, time, value, censor, ward, left_out from results order by seq",
+        "alarms": "select * from alarms order by id",
+        "monitors": "select * from monitors order by stream, monitor",
+        "streams": "select * from streams order by id",
+        "set_aside": "select place, reason, found, stream from set_aside order by id",
+        "tallies": "select * from tallies order by reason",
+    }
+    return {name: asked(folder, question) for name, question in questions.items()}
+
+
+def place_of(folder: Path) -> Place:
+    """The store of a laboratory's folder."""
+    return store_place(read_lab(folder / "lab.toml").store, folder / "watch.sqlite")
+
+
+def asked(folder: Path, question: str) -> list[tuple[Any, ...]]:
+    """What its store answers."""
+    with reading_engine(place_of(folder)).connect() as connection:
+        return [tuple(row) for row in connection.execute(text(question))]
 
 
 # What it prints
@@ -274,7 +288,7 @@ def following(live: Path, folder: Path, *, quiet: bool = False) -> "subprocess.P
 
 def wait_for_results(folder: Path, count: int) -> None:
     for _ in range(1500):
-        if (folder / "watch.sqlite").exists() and results_kept(folder) >= count:
+        if results_kept(folder) >= count:
             return
         time.sleep(0.02)
     pytest.fail(f"{count} results were not kept in time")
@@ -282,9 +296,8 @@ def wait_for_results(folder: Path, count: int) -> None:
 
 def results_kept(folder: Path) -> int:
     try:
-        with sqlite3.connect(f"file:{folder / 'watch.sqlite'}?mode=ro", uri=True) as connection:
-            return int(connection.execute("select count(*) from results").fetchone()[0])
-    except sqlite3.OperationalError:  # not made yet
+        return int(asked(folder, "select count(*) from results")[0][0])
+    except DBAPIError:  # not made yet
         return 0
 
 
@@ -325,17 +338,16 @@ def test_killed_at_random_points_of_a_growing_file_it_loses_nothing_and_counts_n
 def test_a_new_plan_restarts_only_the_monitors_that_changed_and_leaves_a_mark(folder: Path) -> None:
     (folder / "live.csv").write_text(csv(FEED))
     pbm("watch", "--from", folder / "live.csv", "--lab", folder, "--once")
-    before, states = plan_fingerprint(folder / "plan.toml"), StoreReader(folder / "watch.sqlite").snapshots()
+    before, states = plan_fingerprint(folder / "plan.toml"), StoreReader(place_of(folder)).snapshots()
     chosen = every_line()
     changed = chosen.streams["sodium@line-1"].model_copy(update={"monitors": (ewma(half_width=1.5),)})
     write_plan(folder / "plan.toml", chosen.model_copy(update={"streams": chosen.streams | {"sodium@line-1": changed}}))
     done = pbm("watch", "--from", folder / "live.csv", "--lab", folder, "--once")
     assert "3 monitors go on under the new plan; begun afresh: sodium@line-1 monitor 0" in done.stderr
-    after = StoreReader(folder / "watch.sqlite").snapshots()
+    after = StoreReader(place_of(folder)).snapshots()
     assert [one.taken for one in after] == [0 if one.stream == SODIUM else one.taken for one in states]
     assert [one.state for one in after if one.stream != SODIUM] == [one.state for one in states if one.stream != SODIUM]
-    with sqlite3.connect(folder / "watch.sqlite") as connection:
-        marks = connection.execute("select plan_before, plan_after, detail from audit").fetchall()
+    marks = asked(folder, "select plan_before, plan_after, detail from audit order by id")
     assert [mark[:2] for mark in marks] == [("", before), (before, plan_fingerprint(folder / "plan.toml"))]
     assert "begun afresh: sodium@line-1 monitor 0" in marks[1][2]
 
@@ -368,7 +380,7 @@ def test_without_a_plan_it_says_how_to_make_one(folder: Path) -> None:
 
 
 def test_a_second_watch_on_the_same_store_is_refused(folder: Path) -> None:
-    with Store(folder / "watch.sqlite"):
+    with Store(place_of(folder)):
         done = pbm("watch", "--from", "-", "--lab", folder, stdin=ndjson(FEED))
     assert done.returncode == 2
     assert "Another `pbm watch`" in done.stderr and not done.stdout

@@ -1,31 +1,40 @@
 """`pbm watch` into PostgreSQL: the same alarms and the same rows as into SQLite, stopped, killed and cut off as one likes."""
 
 import random
-import time
 from dataclasses import replace
 from pathlib import Path
-from typing import Any
 
 import pytest
 
 from pbm.io.store import Store
-from pbm.io.store_place import Place, store_place
-from tests.commands.test_watch import FEED, csv, following, ndjson, pbm
+from tests.commands.test_watch import (  # noqa: F401  the tests of the watch, with the laboratory of this module
+    FEED,
+    csv,
+    following,
+    kept,
+    ndjson,
+    pbm,
+    place_of,
+    results_kept,
+    test_a_file_is_followed_until_a_signal_which_leaves_a_whole_store,
+    test_a_new_plan_restarts_only_the_monitors_that_changed_and_leaves_a_mark,
+    test_a_second_watch_on_the_same_store_is_refused,
+    test_an_open_alarm_is_told_again_at_the_next_start,
+    test_repeats_of_a_patient_are_left_out_and_nobody_can_be_found_in_what_is_kept,
+    test_standard_input_given_again_counts_once,
+    test_stopped_and_started_again_it_goes_on_as_if_it_never_stopped,
+    test_what_cannot_be_taken_is_set_aside_counted_and_does_not_stop_the_feed,
+    test_what_is_not_watched_is_told_with_the_reason_and_kept,
+    wait_for_results,
+)
 from tests.io.store_samples import spoil, tables
 from tests.live_laboratory import csv_lines, every_line, two_lines, write_folder
 from tests.postgresql import Server
-
-COMPARED = ("results", "alarms", "monitors", "streams", "set_aside", "tallies", "feeds")
 
 
 @pytest.fixture
 def address(postgresql_server: Server) -> str:
     return postgresql_server.new_database()
-
-
-@pytest.fixture
-def place(address: str) -> Place:
-    return store_place(address, Path())
 
 
 @pytest.fixture
@@ -43,13 +52,7 @@ def beside(tmp_path: Path) -> Path:
     return write_folder(tmp_path / "beside", every_line())
 
 
-def kept(place: Place) -> dict[str, list[tuple[Any, ...]]]:
-    """What was kept, but for the names of the feeds."""
-    found = tables(place)
-    return {name: [row[2:] if name == "feeds" else row for row in found[name]] for name in COMPARED}
-
-
-def test_it_prints_and_keeps_what_it_does_with_a_file(folder: Path, beside: Path, place: Place) -> None:
+def test_it_prints_and_keeps_what_it_does_with_a_file(folder: Path, beside: Path) -> None:
     odd = ["not json", ndjson(FEED[:1]).replace("sodium", "so\\u0000dium"), ndjson(FEED[:1]).strip()]
     text = ndjson(FEED) + "\n".join(odd) + "\n" + ndjson(FEED[:40])
     done = [pbm("watch", "--from", "-", "--lab", one, stdin=text) for one in (folder, beside)]
@@ -58,73 +61,39 @@ def test_it_prints_and_keeps_what_it_does_with_a_file(folder: Path, beside: Path
     told, as_told = (sorted(line for line in one.stderr.splitlines() if "NOTICE" not in line) for one in done)
     assert told == as_told
     assert done[0].returncode == 0 and len(done[0].stdout.splitlines()) >= 4
-    assert kept(place) == kept(beside / "watch.sqlite")
+    found, expected = (tables(place_of(one)) for one in (folder, beside))
+    assert all(found[name] == expected[name] for name in kept(folder))
     assert not list(folder.glob("watch.sqlite*"))
 
 
-@pytest.mark.parametrize("cut", [1, 449, 451])
-def test_stopped_and_started_again_it_goes_on_as_if_it_never_stopped(
-    folder: Path, beside: Path, place: Place, cut: int
-) -> None:
-    (beside / "live.csv").write_text(csv(FEED))
-    undisturbed = pbm("watch", "--from", beside / "live.csv", "--lab", beside, "--once")
-    printed = ""
-    for part in (FEED[:cut], FEED):
-        (folder / "live.csv").write_text(csv(part))
-        printed += pbm("watch", "--from", folder / "live.csv", "--lab", folder, "--once").stdout
-    assert printed == undisturbed.stdout
-    found, expected = kept(place), kept(beside / "watch.sqlite")
-    del found["feeds"], expected["feeds"]  # a hash of the file so far
-    assert found == expected
-
-
-def test_killed_at_random_points_it_loses_nothing_and_counts_nothing_twice(
-    folder: Path, beside: Path, place: Place
-) -> None:
+def test_killed_at_random_points_it_loses_nothing_and_counts_nothing_twice(folder: Path, beside: Path) -> None:
     chance, feed = random.Random(1), two_lines(5, 6000)
     (beside / "live.csv").write_text(csv(feed))
     assert pbm("watch", "--from", beside / "live.csv", "--lab", beside, "--once").returncode == 0
     live = folder / "live.csv"
     live.write_text(csv([]))
-    Store(place).close()
+    Store(place_of(folder)).close()
     for part in (feed[:2500], feed[2500:4500]):
         with live.open("a") as file:
             file.write("".join(f"{line}\n" for line in csv_lines(part)))
         with following(live, folder, quiet=True) as process:
-            wait_for_results(place, len(tables(place)["results"]) + chance.randint(1, 900))
+            wait_for_results(folder, results_kept(folder) + chance.randint(1, 900))
             process.kill()
     live.write_text(csv(feed))
     assert pbm("watch", "--from", live, "--lab", folder, "--once").returncode == 0
-    found, expected = kept(place), kept(beside / "watch.sqlite")
-    del found["feeds"], expected["feeds"]
-    assert found == expected
+    assert kept(folder) == kept(beside)
     assert pbm("store", "check", "--lab", folder).returncode == 0
 
 
-def wait_for_results(place: Place, count: int) -> None:
-    for _ in range(1500):
-        if len(tables(place)["results"]) >= count:
-            return
-        time.sleep(0.02)
-    pytest.fail(f"{count} results were not kept in time")
-
-
-def test_a_second_watch_on_the_same_database_is_refused(folder: Path, place: Place) -> None:
-    with Store(place):
-        done = pbm("watch", "--from", "-", "--lab", folder, stdin=ndjson(FEED))
-    assert done.returncode == 2
-    assert "Another `pbm watch`" in done.stderr and not done.stdout
-
-
 def test_a_watch_whose_connection_is_cut_says_so_and_goes_on_when_it_is_started_again(
-    folder: Path, beside: Path, place: Place
+    folder: Path, beside: Path
 ) -> None:
     live = folder / "live.csv"
     live.write_text(csv(FEED[:300]))
-    Store(place).close()
+    Store(place_of(folder)).close()
     with following(live, folder) as process:
-        wait_for_results(place, 300)
-        spoil(place, "select pg_terminate_backend(pid) from pg_locks where locktype = 'advisory'")
+        wait_for_results(folder, 300)
+        spoil(place_of(folder), "select pg_terminate_backend(pid) from pg_locks where locktype = 'advisory'")
         with live.open("a") as file:
             file.write("".join(f"{line}\n" for line in csv_lines(FEED[300:])))
         _, err = process.communicate(timeout=30)
@@ -133,8 +102,8 @@ def test_a_watch_whose_connection_is_cut_says_so_and_goes_on_when_it_is_started_
     assert pbm("watch", "--from", live, "--lab", folder, "--once").returncode == 0
     (beside / "live.csv").write_text(csv(FEED))
     assert pbm("watch", "--from", beside / "live.csv", "--lab", beside, "--once").returncode == 0
-    assert kept(place)["alarms"] == kept(beside / "watch.sqlite")["alarms"]
-    assert kept(place)["monitors"] == kept(beside / "watch.sqlite")["monitors"]
+    assert kept(folder)["alarms"] == kept(beside)["alarms"]
+    assert kept(folder)["monitors"] == kept(beside)["monitors"]
 
 
 def test_the_password_is_neither_printed_nor_kept(folder: Path, address: str, tmp_path: Path) -> None:
@@ -154,7 +123,7 @@ def test_the_password_is_neither_printed_nor_kept(folder: Path, address: str, tm
     assert files and not any(b"tern-secret" in path.read_bytes() for path in files)
 
 
-def test_old_results_are_removed_there_too(folder: Path, place: Place) -> None:
+def test_old_results_are_removed_there_too(folder: Path) -> None:
     years = 31 * 365 * 24 * 3600 * 1_000_000
     old = [replace(one, time=one.time - years) for one in two_lines(3, 6000)]
     (folder / "live.csv").write_text(csv(old))
@@ -163,5 +132,5 @@ def test_old_results_are_removed_there_too(folder: Path, place: Place) -> None:
         assert done.returncode == 0, done.stderr
         with (folder / "live.csv").open("a") as file:
             file.write("no line of data\n")
-    assert len(tables(place)["results"]) < 5500
+    assert results_kept(folder) < 5500
     assert pbm("store", "check", "--lab", folder).returncode == 0
