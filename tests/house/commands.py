@@ -4,6 +4,8 @@ import inspect
 import re
 from collections.abc import Iterator
 from dataclasses import dataclass
+from enum import Enum
+from enum import Enum
 from types import UnionType
 from typing import Annotated, Any, Union, get_args, get_origin, get_type_hints
 
@@ -112,6 +114,10 @@ def _holds(hint: Any, info: ArgumentInfo | OptionInfo) -> str:
     )
     kind = get_args(given[0])[0] if get_origin(given[0]) is list else given[0]
     least = f", at least {info.min:g}" if info.min is not None else ""
+    if issubclass(kind, Enum):
+        return " or ".join(one.value for one in kind)
+    if issubclass(kind, Enum):
+        return ", ".join(f"`{one.value}`" for one in kind)
     return HOLDS[kind.__name__] + least
 
 

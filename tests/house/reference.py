@@ -3,6 +3,7 @@
 Run as `python -m tests.house.reference` at the top of the tree. Nothing here depends on the terminal or on the day.
 """
 
+import json
 import re
 from collections.abc import Iterable, Iterator
 from functools import partial
@@ -34,6 +35,7 @@ def pages() -> dict[str, str]:
         "plan-toml.md": _file_page("plan.toml", Plan, _PLAN),
         "survey-json.md": _written_page("reports/survey.json", Survey, _SURVEY),
         "appraisal-json.md": _written_page("reports/appraisal.json", Appraisal, _APPRAISAL),
+        "appraisal.schema.json": [json.dumps(Appraisal.model_json_schema(), indent=1)],
         "store.md": _store_page(),
     }
     return {name: "\n".join(lines) + "\n" for name, lines in made.items()}
@@ -53,7 +55,9 @@ _PLAN = (
 )
 _SURVEY = ("Written by `pbm survey`. The same survey gives the same bytes; numbers are written with all their digits.",)
 _APPRAISAL = (
-    "Written by `pbm appraise`. The same appraisal gives the same bytes; numbers are written with all their digits.",
+    "Written by `pbm appraise`. The same history, plan, laboratory file and seed give the same bytes; figures have seven significant "
+    "digits. The same as a JSON schema for programs: [appraisal.schema.json](appraisal.schema.json). `version` rises when the layout "
+    "changes, and what is written by a newer version is refused by an older one.",
 )
 
 
@@ -174,7 +178,7 @@ def main() -> None:
     made = pages()
     for name, text in made.items():
         (FOLDER / name).write_text(text, encoding="utf-8")
-    for path in FOLDER.glob("*.md"):
+    for path in FOLDER.iterdir():
         if path.name not in made:
             path.unlink()
 
