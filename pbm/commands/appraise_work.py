@@ -19,6 +19,7 @@ from pbm.io.history import history_mark
 from pbm.io.lab_file import lab_fingerprint
 from pbm.io.plan_file import plan_fingerprint, read_plan
 from pbm.io.report.page import write_report
+from pbm.io.tuning_file import read_tuning
 from pbm.methods.part_of_week import PARTS
 from pbm.records.appraisal import Appraisal, PeersTried, StreamAppraisal
 from pbm.records.laboratory import Lab
@@ -38,11 +39,12 @@ class Asked:
 
 def appraise_folder(folder: LabFolder, asked: Asked, workers: int | None, *, check: bool, json: bool) -> None:
     """Appraise, write both files and tell."""
+    tuning = read_tuning(folder.tuning)
     appraisal, done = _appraised(folder, asked, workers)
     if appraisal.streams:
         folder.reports.mkdir(exist_ok=True)
         write_appraisal(folder.reports / "appraisal.json", appraisal)
-        write_report(folder.reports / "appraisal.html", appraisal)
+        write_report(folder.reports / "appraisal.html", appraisal, tuning)
     typer.echo(appraisal.model_dump_json(indent=2) if json else told(appraisal, folder.reports))
     report_failures(done)
     if check:

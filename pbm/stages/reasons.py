@@ -14,7 +14,7 @@ from pbm.records.plan import Admit
 from pbm.records.tuning import RunnerUp, Search, StreamTuning, Surface, Truncation
 from pbm.stages.monitor_search import Found
 from pbm.stages.proving_ground import ProvingGround
-from pbm.stages.words import SCALES, admitted_in_words
+from pbm.stages.words import SCALES, admitted_in_words, parameter_in_words
 
 SIGNIFICANT = 4
 
@@ -115,7 +115,7 @@ def candidate_in_words(candidate: Candidate, unit: str) -> str:
     )
     parts = [
         law.title,
-        f"{law.parameter} {candidate.parameter:g}",
+        parameter_in_words(candidate.statistic, candidate.parameter),
         more_in_words(candidate.more),
         admitted_in_words(admit, unit),
     ]

@@ -16,14 +16,18 @@ def monitor_in_words(monitor: MonitorPlan, unit: str) -> str:
 
 def _parameters_in_words(monitor: MonitorPlan) -> list[str]:
     outside = monitor.outside
-    window = "batches of {} results" if monitor.statistic == "batch" else "of {} results"
     return [
-        *([window.format(monitor.window)] if monitor.window is not None else []),
-        *([f"weight {monitor.weight:g}"] if monitor.weight is not None else []),
-        *([f"reference {monitor.reference:g} SD"] if monitor.reference is not None else []),
+        parameter_in_words(monitor.statistic, getattr(monitor, STATISTICS[monitor.statistic].parameter)),
         *([f"exponent {monitor.exponent:g}"] if monitor.exponent is not None else []),
         *([_sides_in_words(outside.low, outside.high)] if outside is not None else []),
     ]
+
+
+def parameter_in_words(statistic: str, value: float) -> str:
+    """What is chosen of a statistic, such as "of 50 results" or "weight 0.05"."""
+    window = "batches of {:g} results" if statistic == "batch" else "of {:g} results"
+    forms = {"window": window, "weight": "weight {:g}", "reference": "reference {:g} SD"}
+    return forms[STATISTICS[statistic].parameter].format(value)
 
 
 def _sides_in_words(low: float | None, high: float | None) -> str:

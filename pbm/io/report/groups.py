@@ -4,7 +4,7 @@ from collections.abc import Iterable
 from dataclasses import dataclass
 from itertools import pairwise
 
-from pbm.io.report import words
+from pbm.io.report import fault_words
 from pbm.records.judged import FaultAppraisal
 
 
@@ -15,7 +15,7 @@ class FaultGroup:
     Attributes
     ----------
     kind
-        "shift", "drift", "noise", "sporadic".
+        "shift", "drift", "noise", "sporadic error"; of a drift and a sporadic error with its course.
     unit
         What sizes are measured in, in words.
     faults
@@ -34,7 +34,7 @@ class FaultGroup:
     @property
     def axis(self) -> str:
         """What stands beside the axis of sizes."""
-        return f"size of the {words.kind_in_words(self.kind)}, {self.unit}"
+        return f"size of the {fault_words.kind_of(self.faults[0])}, {self.unit}"
 
     @property
     def parts(self) -> list[slice]:
@@ -49,7 +49,7 @@ def signed_size(fault: FaultAppraisal) -> float:
 
 
 def fault_groups(faults: Iterable[FaultAppraisal], analyte_unit: str) -> list[FaultGroup]:
-    """Errors that belong on one axis; a second error of the same size (say a slower drift) starts a group of its own."""
+    """Errors that belong on one axis; a second error of the same size starts a group of its own."""
     groups: list[dict[float, FaultAppraisal]] = []
     for fault in faults:
         like = [one for one in groups if _same_axis(next(iter(one.values())), fault) and signed_size(fault) not in one]
@@ -60,9 +60,10 @@ def fault_groups(faults: Iterable[FaultAppraisal], analyte_unit: str) -> list[Fa
 
 
 def _same_axis(one: FaultAppraisal, other: FaultAppraisal) -> bool:
-    return (one.kind, one.unit) == (other.kind, other.unit)
+    return (one.kind, one.unit, one.over, one.share) == (other.kind, other.unit, other.over, other.share)
 
 
 def _ordered(group: dict[float, FaultAppraisal], analyte_unit: str) -> FaultGroup:
     faults = tuple(group[size] for size in sorted(group))
-    return FaultGroup(faults[0].kind, words.unit_in_words(faults[0].unit, analyte_unit), faults)
+    kind = " ".join(filter(None, [fault_words.kind_of(faults[0]), fault_words.course_of(faults[0])]))
+    return FaultGroup(kind, fault_words.unit_of(faults[0], analyte_unit), faults)

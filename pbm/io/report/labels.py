@@ -16,6 +16,7 @@ _WIDTH, _HEIGHT, _AWAY = (
     5.0,
 )  # a letter's width, a line's height, distance from the line: points
 
+_NO_POINTS = np.empty((0, 2))
 _SIDES = np.array([(0, 1), (0, -1), (1, 0), (-1, 0), (0.6, 1), (-0.6, 1), (0.6, -1), (-0.6, -1)])
 
 
@@ -35,7 +36,7 @@ def write_names(axes: Axes, lines: Sequence[Line], beside: Sequence[Points] = ()
     others = [axes.transData.transform(points) * scale for points in beside]
     frame = np.array(axes.get_window_extent().extents) * scale
     for place, line in enumerate(lines):
-        own, taken = drawn[place], np.vstack(drawn[:place] + drawn[place + 1 :] + others)
+        own, taken = drawn[place], np.vstack([_NO_POINTS, *drawn[:place], *drawn[place + 1 :], *others])
         boxes = _boxes(own, len(line.name))
         box = boxes[np.argmax(_room(boxes, own, taken, frame))]
         others.append(_grid(box))

@@ -1,4 +1,7 @@
-"""The report: an appraisal laid out as one HTML page. It sorts, formats and draws what the record holds, and computes nothing else."""
+"""The report: an appraisal, with the reasons of the plan where they are kept, laid out as one HTML page.
+
+It sorts, formats and draws what the records hold, and computes nothing else.
+"""
 
 from collections.abc import Iterator
 from dataclasses import dataclass
@@ -10,12 +13,17 @@ from jinja2 import Environment, FileSystemLoader, StrictUndefined, Template
 from markupsafe import Markup
 
 from pbm.io.atomic import replace_file
-from pbm.io.report import figures, fleet, words
+from pbm.io.report import fault_words, gaps, monitor_words, reasons, summary, words
+from pbm.io.report.error_plots import first_event_plot, unreliable_plot
 from pbm.io.report.groups import FaultGroup, fault_groups
-from pbm.io.report.shown import ShownMonitor, shown
+from pbm.io.report.look import drawing
+from pbm.io.report.surface_plot import surface_plot
 from pbm.io.report.svg import Album
-from pbm.records.appraisal import Appraisal, StreamAppraisal
+from pbm.io.report.trace_plot import trace_plot
+from pbm.io.report.until_plot import until_plot
+from pbm.records.appraisal import Appraisal, MonitorAppraisal, StreamAppraisal
 from pbm.records.judged import FaultAppraisal
+from pbm.records.tuning import StreamTuning, Tuning
 
 _HERE = Path(__file__).parent
 
@@ -32,11 +40,46 @@ class DrawnGroup:
 
 @dataclass(frozen=True, slots=True)
 class DrawnMonitor:
-    """A monitor and its plots; no trace where the appraisal holds none."""
+    """A monitor and its trace; no trace where the appraisal holds none."""
 
-    appraisal: ShownMonitor
+    monitor: MonitorAppraisal
     trace: Markup | None
+
+
+@dataclass(frozen=True, slots=True)
+class DrawnSearch:
+    """A search and its small multiples."""
+
+    shown: reasons.ShownSearch
+    surfaces: Markup | None
+
+
+@dataclass(frozen=True, slots=True)
+class Section:
+    """A stream with everything drawn, and where on the page it stands.
+
+    Attributes
+    ----------
+    anchor
+        Identifier.
+    stream
+        What was found.
+    monitors
+        Its monitors.
+    groups
+        Its errors, kind by kind.
+    searches
+        How its monitors were chosen.
+    together
+        Why there is a second monitor or none.
+    """
+
+    anchor: str
+    stream: StreamAppraisal
+    monitors: tuple[DrawnMonitor, ...]
     groups: tuple[DrawnGroup, ...]
+    searches: tuple[DrawnSearch, ...]
+    together: str
 
     @property
     def faults(self) -> tuple[FaultAppraisal, ...]:
@@ -44,17 +87,8 @@ class DrawnMonitor:
         return tuple(fault for drawn in self.groups for fault in drawn.group.faults)
 
 
-@dataclass(frozen=True, slots=True)
-class Section:
-    """A stream with its drawn monitors, and where on the page it stands."""
-
-    anchor: str
-    stream: StreamAppraisal
-    monitors: tuple[DrawnMonitor, ...]
-
-
-def write_report(path: Path, appraisal: Appraisal) -> None:
-    """Write the report; the same appraisal gives the same bytes.
+def write_report(path: Path, appraisal: Appraisal, tuning: Tuning | None = None) -> None:
+    """Write the report; the same records give the same bytes.
 
     Parameters
     ----------
@@ -62,51 +96,68 @@ def write_report(path: Path, appraisal: Appraisal) -> None:
         The HTML file; its folder must exist.
     appraisal
         What was found.
+    tuning
+        Why the plan's monitors are what they are, where that is kept.
     """
-    replace_file(path, report(appraisal).encode("utf-8"))
+    replace_file(path, report(appraisal, tuning).encode("utf-8"))
 
 
-def report(appraisal: Appraisal) -> str:
+def report(appraisal: Appraisal, tuning: Tuning | None = None) -> str:
     """The report as HTML text: no script, nothing loaded from elsewhere."""
     album = Album()
-    with figures.drawing():
-        sections = list(_sections(album, appraisal))
+    with drawing():
+        sections = list(_sections(album, appraisal, tuning.streams if tuning else {}))
     return _template().render(
         appraisal=appraisal,
         style=Markup((_HERE / "style.css").read_text(encoding="utf-8")),
         plot_style=album.styles(),
-        rows=fleet.fleet_rows(appraisal),
-        in_short=fleet.in_short(appraisal),
-        gaps=fleet.gaps(appraisal),
-        sections=[section for section in sections if section.monitors],
-        without=[section for section in sections if not section.monitors],
+        rows=summary.summary_rows(appraisal),
+        in_short=summary.in_short(appraisal),
+        gaps_found=gaps.gaps(appraisal),
+        sections=[section for section in sections if section.stream.judged],
+        without=[section for section in sections if not section.stream.judged],
     )
 
 
-def _sections(album: Album, appraisal: Appraisal) -> Iterator[Section]:
+def _sections(album: Album, appraisal: Appraisal, tuned: dict[str, StreamTuning]) -> Iterator[Section]:
     for place, stream in enumerate(appraisal.streams):
-        yield Section(fleet.anchor(place), stream, tuple(_drawn(album, stream, monitor) for monitor in shown(stream)))
+        why = tuned.get(stream.stream)
+        yield Section(
+            summary.anchor(place),
+            stream,
+            tuple(_drawn_monitor(album, one) for one in stream.monitors),
+            tuple(_drawn_groups(album, stream)),
+            tuple(DrawnSearch(one, surface_plot(one.search)) for one in reasons.shown_searches(stream, why))
+            if why
+            else (),
+            why.together if why else "",
+        )
 
 
-def _drawn(album: Album, stream: StreamAppraisal, monitor: ShownMonitor) -> DrawnMonitor:
-    unit = words.in_a_plot(stream.unit)
-    trace = figures.trace_plot(album, monitor, unit) if monitor.trace.day else None
-    groups = fault_groups(monitor.faults, unit)
-    return DrawnMonitor(monitor, trace, tuple(_drawn_group(album, group, stream.horizon_days) for group in groups))
+def _drawn_monitor(album: Album, monitor: MonitorAppraisal) -> DrawnMonitor:
+    unit = words.in_a_plot(monitor.measured_in)
+    return DrawnMonitor(monitor, trace_plot(album, monitor, unit) if monitor.trace.day else None)
 
 
-def _drawn_group(album: Album, group: FaultGroup, horizon_days: float) -> DrawnGroup:
-    return DrawnGroup(
-        group,
-        figures.unreliable_plot(album, group),
-        figures.until_plot(album, group, horizon_days),
-        figures.first_event_plot(album, group),
-    )
+def _drawn_groups(album: Album, stream: StreamAppraisal) -> Iterator[DrawnGroup]:
+    watched = bool(stream.monitors)
+    faults = stream.judged.faults if stream.judged else ()
+    for group in fault_groups(faults, words.in_a_plot(stream.unit)):
+        yield DrawnGroup(
+            group,
+            unreliable_plot(album, group, watched=watched),
+            until_plot(album, group, stream.horizon_days, watched=watched),
+            first_event_plot(album, group, watched=watched),
+        )
 
 
 @cache
 def _template() -> Template:
-    return environment().get_template("template.html")
+    made = environment()
+    made.globals.update(
+        {"summary": summary, "gaps": gaps, "errors": fault_words, "monitors": monitor_words, "reasons": reasons}
+    )
+    return made.get_template("appraisal.html")
 
 
 def environment() -> Environment:
@@ -119,7 +170,7 @@ def environment() -> Environment:
         lstrip_blocks=True,
         finalize=_printable,
     )
-    made.globals.update({"words": words, "fleet": fleet})
+    made.globals.update({"words": words})
     return made
 
 

@@ -9,8 +9,9 @@ from jinja2 import Template
 from markupsafe import Markup
 
 from pbm.io.atomic import replace_file
-from pbm.io.report import figures, survey_figures
+from pbm.io.report import survey_figures
 from pbm.io.report import words as report_words
+from pbm.io.report.look import drawing
 from pbm.io.report.page import environment
 from pbm.io.report.svg import Album
 from pbm.records.survey import StreamSurvey, Survey, Truncation
@@ -48,7 +49,7 @@ def write_survey_report(path: Path, survey: Survey) -> None:
 def survey_report(survey: Survey) -> str:
     """The report as HTML text: no script, nothing loaded from elsewhere."""
     album = Album()
-    with figures.drawing():
+    with drawing():
         sections = list(_sections(album, survey))
     return _template().render(
         survey=survey,

@@ -1,13 +1,13 @@
-"""How the report writes numbers, shares, intervals, errors and days: three significant digits, the same everywhere."""
+"""How the report writes numbers, shares, intervals, limits and days: three significant digits, the same everywhere."""
 
 import math
 import re
 
-from pbm.records.figures import Figure, Until
-from pbm.records.judged import FaultAppraisal
+from pbm.records.figures import AloneAndWith, Figure, Percentile, Until
 
 _RAISED = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 _NARROW = "\u202f"  # narrow no-break space: groups digits and stands before the per cent sign
+_PER_CENT = f"{_NARROW}%"
 _NOT_PRINTABLE = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\x7f\ud800-\udfff]")
 NONE = "–"
 _LONGEST = 24
@@ -35,8 +35,10 @@ def whole(count: int) -> str:
 
 
 def expected(value: float) -> str:
-    """An expected count, in which nothing below a thousandth matters."""
-    return "<0.001" if 0 < value < 0.001 else number(value)
+    """An expected count, in which nothing below a hundredth matters: two decimals below ten, else three significant digits."""
+    if value == 0 or abs(value) >= 9.995:
+        return number(value)
+    return "<0.01" if 0 < value < 0.005 else fixed(value, 2)
 
 
 def percent(share: float) -> str:
@@ -49,7 +51,7 @@ def percent(share: float) -> str:
         text = ">99.9"
     else:
         text = _signed(f"{share * 100:.1f}")
-    return f"{text}{_NARROW}%"
+    return text + _PER_CENT
 
 
 def interval(figure: Figure) -> str:
@@ -58,20 +60,30 @@ def interval(figure: Figure) -> str:
 
 
 def share_interval(figure: Figure) -> str:
-    """The interval of a share."""
-    return f"{percent(figure.low)} to {percent(figure.high)}"
+    """The interval of a share: "72.7 to 78.8 %"."""
+    return f"{percent(figure.low).removesuffix(_PER_CENT)} to {percent(figure.high)}"
 
 
-def saved(alone: float, beside: float) -> str:
-    """What share of a count the monitor saves; below 0 where there are more with it."""
-    return percent(1 - beside / alone) if alone else NONE
-
-
-def fewer(alone: float, beside: float) -> str:
-    """How many per cent fewer with the monitor than without it."""
-    if alone == 0:
+def fewer(found: AloneAndWith) -> str:
+    """How many per cent fewer with the monitor, or more."""
+    if found.alone.value == 0:
         return NONE
-    return f"{percent(abs(1 - beside / alone))} {'more' if beside > alone else 'fewer'}"
+    share = found.share_fewer.value
+    return f"{percent(abs(share))} {'more' if share < 0 else 'fewer'}"
+
+
+def share_fewer(found: AloneAndWith) -> str:
+    """The same under a heading that says "fewer"."""
+    return fewer(found).removesuffix(" fewer")
+
+
+def fewer_interval(found: AloneAndWith) -> str:
+    """The interval of that, in the same direction."""
+    if found.alone.value == 0:
+        return NONE
+    share = found.share_fewer
+    low, high = (-share.high, -share.low) if share.value < 0 else (share.low, share.high)
+    return share_interval(Figure(value=abs(share.value), low=low, high=high))
 
 
 def level(value: float, low: float, high: float) -> str:
@@ -83,41 +95,16 @@ def level(value: float, low: float, high: float) -> str:
     return fixed(value, max(0, 2 - power)) if -7 < power < 6 else number(value)
 
 
-def size_in_words(size: float) -> str:
-    """A signed error size: "+0.5", "−1"."""
-    return _signed(f"{size:+.3g}")
+def signed(value: float) -> str:
+    """A signed size: "+0.5", "−1"."""
+    return _signed(f"{value:+.3g}")
 
 
-def unit_in_words(unit: str, analyte_unit: str) -> str:
-    """What an error's size is measured in."""
-    return {"SD": "analytic SD", "unit": analyte_unit, "percent": "%", "": "times the analytic SD"}.get(unit, unit)
-
-
-def kind_in_words(kind: str) -> str:
-    """A kind of error as people call it."""
-    return "sporadic error" if kind == "sporadic" else kind
-
-
-def size_of(fault: FaultAppraisal) -> str:
-    """An error's size with its sign; noise has none."""
-    return f"{fault.size:.3g}" if fault.unit == "" else size_in_words(fault.sign * fault.size)
-
-
-def fault_in_words(fault: FaultAppraisal, analyte_unit: str) -> str:
-    """An error in the trade's words: "shift +0.5 TEa"."""
-    return f"{kind_in_words(fault.kind)} {size_of(fault)} {unit_in_words(fault.unit, analyte_unit)}"
-
-
-def shift_in_words(fault: FaultAppraisal, analyte_unit: str) -> str:
-    """An error's size in the unit of the analyte, at the median result; nothing where it has none or is given in it anyway."""
-    if fault.shift is None:
-        return ""
-    return f"{'+' if fault.shift > 0 else ''}{number(fault.shift)} {analyte_unit}"
-
-
-def results_until(count: float | None, horizon_days: float) -> str:
+def until(found: Percentile, horizon_days: float) -> str:
     """Affected results until detection; "over 7 days" where more are never found within the horizon."""
-    return number(count) if count is not None else f"over {days(horizon_days)}"
+    if found.value is None:
+        return f"over {days(horizon_days)}"
+    return whole(int(found.value)) if found.value.is_integer() else number(found.value)
 
 
 def mean_in_words(until: Until, never: float) -> str:
