@@ -37,18 +37,20 @@ def tune_folder(
     json: bool,
 ) -> None:
     """Tune the streams of a laboratory's folder; the options are those of the command."""
-    laboratory = read_checked_lab(folder.lab)
+    laboratory, lab_sha256 = read_checked_lab(folder.lab), lab_fingerprint(folder.lab)
     names = chosen_streams(folder.history, streams)
     kept = read_plan(folder.existing_plan()).streams if keep else None
     grid = QUICK_GRID if quick else WHOLE_GRID
     task = partial(tune_stream, lab=laboratory, seed=seed, by_hand=by_hand, kept=kept, grid=grid)
-    finished = FinishedStreams(folder.finished, Tuned, _decided_by(folder, by_hand, seed=seed, keep=keep, quick=quick))
+    decided_by = _decided_by(folder, lab_sha256, by_hand, seed=seed, keep=keep, quick=quick)
+    finished = FinishedStreams(folder.finished, Tuned, decided_by)
     done = over_streams(folder.history, names, task, workers, "Tuning", finished)
     found = {str(d.name): d.result for d in done if d.result is not None}
     tuned = {name: one.plan for name, one in found.items()}
     shares = {} if keep else share_fleet_budget(folder, laboratory, seed, workers, tuned)
     if tuned:
-        plan = with_rhythms(_merged(folder, tuned, seed, keep_others=bool(streams)), folder.history, laboratory, tuned)
+        plan = _merged(folder, lab_sha256, tuned, seed, keep_others=bool(streams))
+        plan = with_rhythms(plan, folder.history, laboratory, tuned)
         write_plan(folder.plan, plan)
         if not keep:
             reasons = {name: one.reasons for name, one in found.items() if one.reasons is not None}
@@ -59,10 +61,12 @@ def tune_folder(
     finished.remove(names)
 
 
-def _decided_by(folder: LabFolder, by_hand: ByHand, *, seed: int, keep: bool, quick: bool) -> dict[str, str]:
+def _decided_by(
+    folder: LabFolder, lab_sha256: str, by_hand: ByHand, *, seed: int, keep: bool, quick: bool
+) -> dict[str, str]:
     """What decides a stream's monitors beside its history; all of it, or an interrupted tune would go on with what is no longer so."""
     return {
-        "lab.toml": lab_fingerprint(folder.lab),
+        "lab.toml": lab_sha256,
         "seed": str(seed),
         "by hand": repr(by_hand),
         "kept plan": plan_fingerprint(folder.plan) if keep else "",
@@ -70,7 +74,7 @@ def _decided_by(folder: LabFolder, by_hand: ByHand, *, seed: int, keep: bool, qu
     }
 
 
-def _merged(folder: LabFolder, tuned: dict[str, StreamPlan], seed: int, *, keep_others: bool) -> Plan:
+def _merged(folder: LabFolder, lab_sha256: str, tuned: dict[str, StreamPlan], seed: int, *, keep_others: bool) -> Plan:
     """The new plan; where only some streams were tuned, the others of an existing plan are kept."""
     before = read_plan(folder.plan) if keep_others and folder.plan.exists() else None
     made = Made(
@@ -78,7 +82,7 @@ def _merged(folder: LabFolder, tuned: dict[str, StreamPlan], seed: int, *, keep_
         at=datetime.now(UTC).replace(microsecond=0),
         history=history_mark(folder.history),
         seed=seed,
-        lab_sha256=lab_fingerprint(folder.lab),
+        lab_sha256=lab_sha256,
         versions=versions(),
     )
     streams = dict(sorted({**(before.streams if before else {}), **tuned}.items()))

@@ -5,7 +5,6 @@ import re
 from collections.abc import Iterator
 from dataclasses import dataclass
 from enum import Enum
-from enum import Enum
 from types import UnionType
 from typing import Annotated, Any, Union, get_args, get_origin, get_type_hints
 
@@ -116,8 +115,6 @@ def _holds(hint: Any, info: ArgumentInfo | OptionInfo) -> str:
     least = f", at least {info.min:g}" if info.min is not None else ""
     if issubclass(kind, Enum):
         return " or ".join(one.value for one in kind)
-    if issubclass(kind, Enum):
-        return ", ".join(f"`{one.value}`" for one in kind)
     return HOLDS[kind.__name__] + least
 
 
