@@ -49,10 +49,10 @@ class Sent:
 
 
 def write_folder(folder: Path, samples: Sequence[StreamSample], feed: str = "") -> Path:
-    """A folder whose plan has a monitor by EWMA for every stream; `feed` is what `[feed]` of lab.toml says."""
+    """A folder whose plan has a monitor by EWMA for every stream of the samples, or for one; `feed` is `[feed]` of lab.toml."""
     folder.mkdir(parents=True, exist_ok=True)
     (folder / "lab.toml").write_text(lab_toml() + (f"\n[feed]\n{feed}\n" if feed else ""), encoding="utf-8")
-    streams = {stream_name(one.analyte, one.line): _stream_plan(one) for one in samples}
+    streams = {stream_name(one.analyte, one.line): _stream_plan(one) for one in samples} or {"sodium@line-2": USUAL}
     write_plan(folder / "plan.toml", Plan(made=MADE, streams=streams))
     return folder
 
@@ -60,6 +60,10 @@ def write_folder(folder: Path, samples: Sequence[StreamSample], feed: str = "") 
 def _stream_plan(sample: StreamSample) -> StreamPlan:
     values = sample.value[: max(1, len(sample) // 3)]
     centre, spread = float(np.median(values)), float(np.ptp(np.quantile(values, [0.25, 0.75]))) / 1.349 or 1.0
+    return _watched(sample.analyte.unit, centre, spread)
+
+
+def _watched(unit: str, centre: float, spread: float) -> StreamPlan:
     half = 3.4 * spread * (WEIGHT / (2 - WEIGHT)) ** 0.5
     monitor = MonitorPlan(
         admit=Admit(low=centre - 3 * spread, high=centre + 3 * spread),
@@ -70,9 +74,7 @@ def _stream_plan(sample: StreamSample) -> StreamPlan:
         budget_per_day=0.033,
         spread=spread,
     )
-    return StreamPlan(
-        unit=sample.analyte.unit, verdict="useful", reason="for a test", results_per_day=100, monitors=(monitor,)
-    )
+    return StreamPlan(unit=unit, verdict="useful", reason="for a test", results_per_day=100, monitors=(monitor,))
 
 
 def laboratory(results: int) -> tuple[Laboratory, list[StreamSample]]:
@@ -114,6 +116,9 @@ def _read(message: bytes) -> tuple[str, list[str]]:
         }
         found.append(json.dumps(one) + "\n")
     return one["analyser"], found
+
+
+USUAL = _watched("mmol/L", 140.0, 3.0)
 
 
 class Watch:
