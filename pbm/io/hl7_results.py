@@ -202,7 +202,7 @@ def _as_sent(signs: Delimiters, fields: Fields) -> str:
 def _unit(signs: Delimiters, text: str) -> str:
     """OBX-6: its code; the whole of a unit such as 10^9/L whose sign was not escaped."""
     code = signs.first(text)
-    return signs.unescape(text) if code.isdigit() else code
+    return signs.unescape(text) if code.isdecimal() else code
 
 
 def _common(header: Header, order: Order) -> _Common:
@@ -232,8 +232,8 @@ def _specimen(signs: Delimiters, specimen: Fields, order: Order) -> str:
 
 def _in_iso(text: str, zone: str) -> str:
     """A time of HL7 (YYYYMMDDHHMM[SS[.S]][+/-ZZZZ]) in the basic form of ISO 8601; "" if it does not tell the minute."""
-    if len(text) < _TO_THE_MINUTE or not text[:_TO_THE_MINUTE].isdigit():
-        return "" if text.isdigit() else text
+    if len(text) < _TO_THE_MINUTE or not text[:_TO_THE_MINUTE].isdecimal():
+        return "" if text.isdecimal() else text
     own = "" if text[-5:-4] in ("+", "-") else zone
     return f"{text[:8]}T{text[8:]}{own}"
 
@@ -241,7 +241,7 @@ def _in_iso(text: str, zone: str) -> str:
 def _age(birth: str, time: str) -> str:
     """Whole years from a birth date to a time; of the date nothing else is kept."""
     day = birth[:8]
-    if len(day) < 4 or not (day + time[:8]).isdigit() or len(time) < 8:
+    if len(day) < 4 or not (day + time[:8]).isdecimal() or len(time) < 8:
         return ""
     years = int(time[:4]) - int(day[:4]) - (time[4:8] < day[4:])
     return str(years) if years >= 0 else ""

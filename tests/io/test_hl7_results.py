@@ -338,6 +338,7 @@ def test_a_patients_specimen_says_so_or_nothing(role: str) -> None:
         ("", ""),
         ('""', ""),
         ("unknown", ""),
+        ("19²01231", ""),
         ("196103020715+0000", "70"),
     ],
 )
