@@ -12,34 +12,15 @@ from sqlalchemy import (
     LargeBinary,
     MetaData,
     SmallInteger,
-    String,
     Table,
-    TypeDecorator,
     UniqueConstraint,
     event,
     literal_column,
 )
-from sqlalchemy.engine import Dialect
+
+from pbm.io.store_types import NUMBER, TEXT
 
 SCHEMA_VERSION = 2
-# SQLite makes a row number of INTEGER only; elsewhere 32 bits would not last.
-_Number = BigInteger().with_variant(Integer, "sqlite")
-
-
-class _AnyText(TypeDecorator[str]):
-    """Text for PostgreSQL, which takes no NUL: a feed may hold one, and must not be stopped by it. U+E000 marks what stands for one."""
-
-    impl = String
-    cache_ok = True
-
-    def process_bind_param(self, value: str | None, dialect: Dialect) -> str | None:
-        return value and value.replace("\ue000", "\ue000e").replace("\0", "\ue0000")
-
-    def process_result_value(self, value: str | None, dialect: Dialect) -> str | None:
-        return value and value.replace("\ue0000", "\0").replace("\ue000e", "\ue000")
-
-
-_Text = String().with_variant(_AnyText(), "postgresql")
 
 metadata = MetaData()
 
@@ -55,12 +36,10 @@ schema = Table(
 streams = Table(
     "streams",
     metadata,
-    Column("id", _Number, primary_key=True, autoincrement=False),
-    Column("analyte", _Text, nullable=False),
-    Column("analyser", _Text, nullable=False),
-    Column(
-        "newest", _Text, nullable=False, comment="the newest times that its monitors have taken, ascending, as JSON"
-    ),
+    Column("id", NUMBER, primary_key=True, autoincrement=False),
+    Column("analyte", TEXT, nullable=False),
+    Column("analyser", TEXT, nullable=False),
+    Column("newest", TEXT, nullable=False, comment="the newest times that its monitors have taken, ascending, as JSON"),
     UniqueConstraint("analyte", "analyser"),
     comment="Every stream met, watched or not.",
 )
@@ -68,19 +47,19 @@ streams = Table(
 results = Table(
     "results",
     metadata,
-    Column("seq", _Number, primary_key=True, autoincrement=False, comment="order of arrival, from 1"),
+    Column("seq", NUMBER, primary_key=True, autoincrement=False, comment="order of arrival, from 1"),
     Column("stream", ForeignKey("streams.id"), nullable=False),
-    Column("specimen", _Text, nullable=False, comment='"" where not given'),
+    Column("specimen", TEXT, nullable=False, comment='"" where not given'),
     Column("time", BigInteger, nullable=False),
     Column("value", Float, nullable=False, comment="in the unit of the stream; of a censored result the limit printed"),
     Column("censor", SmallInteger, nullable=False, comment='-1 for "<", +1 for ">", else 0'),
-    Column("ward", _Text, nullable=False, comment='"" where not given'),
-    Column("patient", _Text, nullable=False, comment='keyed token where repeats of a patient are limited, else ""'),
-    Column("left_out", _Text, nullable=False, comment='why no monitor may take it (a rerun, too late), else ""'),
+    Column("ward", TEXT, nullable=False, comment='"" where not given'),
+    Column("patient", TEXT, nullable=False, comment='keyed token where repeats of a patient are limited, else ""'),
+    Column("left_out", TEXT, nullable=False, comment='why no monitor may take it (a rerun, too late), else ""'),
     Column("feed", ForeignKey("feeds.id"), nullable=False),
     Column("edition", Integer, nullable=False, comment="of the feed: a feed begun anew has the next number"),
-    Column("sex", _Text, nullable=False, comment='F or M, "" where not known'),
-    Column("age", _Text, nullable=False, comment='age band, "" where not known'),
+    Column("sex", TEXT, nullable=False, comment='F or M, "" where not known'),
+    Column("age", TEXT, nullable=False, comment='age band, "" where not known'),
     Index("results_of_a_stream", "stream", "seq"),
     comment="Every patient result, once.",
 )
@@ -111,7 +90,7 @@ monitors = Table(
         autoincrement=False,
         comment="place of the monitor in the stream's plan, from 0",
     ),
-    Column("settings", _Text, nullable=False, comment="SHA-256 of the settings under which the state goes on"),
+    Column("settings", TEXT, nullable=False, comment="SHA-256 of the settings under which the state goes on"),
     Column("state", LargeBinary, nullable=False),
     Column("taken", BigInteger, nullable=False, comment="results offered"),
     Column(
@@ -129,14 +108,14 @@ monitors = Table(
 alarms = Table(
     "alarms",
     metadata,
-    Column("id", _Number, primary_key=True, autoincrement=False, comment="order of opening, from 1"),
+    Column("id", NUMBER, primary_key=True, autoincrement=False, comment="order of opening, from 1"),
     Column("stream", ForeignKey("streams.id"), nullable=False),
     Column("monitor", Integer, nullable=False),
     Column("seq", ForeignKey("results.seq"), nullable=False, comment="the result that opened the episode"),
     Column("time", BigInteger, nullable=False),
-    Column("specimen", _Text, nullable=False),
-    Column("side", _Text, nullable=False, comment="HIGH or LOW"),
-    Column("statistic", _Text, nullable=False),
+    Column("specimen", TEXT, nullable=False),
+    Column("side", TEXT, nullable=False, comment="HIGH or LOW"),
+    Column("statistic", TEXT, nullable=False),
     Column("value", Float, nullable=False, comment="the statistic, on its own scale"),
     Column("control_limit", Float, nullable=False, comment="the limit it crossed, on its own scale"),
     Column(
@@ -158,7 +137,7 @@ alarms = Table(
     Column("size_in_tea", Float),
     Column("expected_unreliable", Float),
     Column("last_control", BigInteger, comment="last control event before the alarm: recorded, or else scheduled"),
-    Column("plan_sha256", _Text, nullable=False, comment="the plan in force"),
+    Column("plan_sha256", TEXT, nullable=False, comment="the plan in force"),
     Column("shadow", Boolean, nullable=False, comment="kept off the bench: the watch ran on trial"),
     Column("last_control_passed", Boolean, comment="whether its controls were accepted; empty where that is not known"),
     UniqueConstraint("stream", "monitor", "seq"),
@@ -169,9 +148,9 @@ alarms = Table(
 feeds = Table(
     "feeds",
     metadata,
-    Column("id", _Number, primary_key=True, autoincrement=False),
-    Column("source", _Text, nullable=False, unique=True),
-    Column("position", _Text, nullable=False, comment="where to go on; kept in the same transaction as the results"),
+    Column("id", NUMBER, primary_key=True, autoincrement=False),
+    Column("source", TEXT, nullable=False, unique=True),
+    Column("position", TEXT, nullable=False, comment="where to go on; kept in the same transaction as the results"),
     Column("delivered", BigInteger, nullable=False, comment="pieces that it brought since the store began"),
     Column("removed", BigInteger, nullable=False, comment="of its results and pieces set aside: removed as too old"),
     comment="Every feed, and how far it was read.",
@@ -180,19 +159,19 @@ feeds = Table(
 set_aside = Table(
     "set_aside",
     metadata,
-    Column("id", _Number, primary_key=True, autoincrement=False),
+    Column("id", NUMBER, primary_key=True, autoincrement=False),
     Column("feed", ForeignKey("feeds.id"), nullable=False),
     Column("place", BigInteger, nullable=False, comment="line of the feed"),
-    Column("reason", _Text, nullable=False),
-    Column("found", _Text, nullable=False, comment="the field at fault, never the whole line"),
-    Column("stream", _Text, nullable=False, comment="as far as known"),
+    Column("reason", TEXT, nullable=False),
+    Column("found", TEXT, nullable=False, comment="the field at fault, never the whole line"),
+    Column("stream", TEXT, nullable=False, comment="as far as known"),
     comment="What a feed held that was not taken as a result.",
 )
 
 tallies = Table(
     "tallies",
     metadata,
-    Column("reason", _Text, primary_key=True),
+    Column("reason", TEXT, primary_key=True),
     Column("count", BigInteger, nullable=False),
     comment="How much was set aside for each reason since the store began, duplicates among them.",
 )
@@ -200,13 +179,13 @@ tallies = Table(
 audit = Table(
     "audit",
     metadata,
-    Column("id", _Number, primary_key=True, autoincrement=False),
+    Column("id", NUMBER, primary_key=True, autoincrement=False),
     Column("at", BigInteger, nullable=False, comment="clock of the computer"),
-    Column("what", _Text, nullable=False),
-    Column("plan_before", _Text, nullable=False, comment='SHA-256 of the plan until then, "" if none'),
-    Column("plan_after", _Text, nullable=False),
-    Column("detail", _Text, nullable=False),
-    Column("hash", _Text, nullable=False, comment="SHA-256 over the entry and the hash of the one before"),
+    Column("what", TEXT, nullable=False),
+    Column("plan_before", TEXT, nullable=False, comment='SHA-256 of the plan until then, "" if none'),
+    Column("plan_after", TEXT, nullable=False),
+    Column("detail", TEXT, nullable=False),
+    Column("hash", TEXT, nullable=False, comment="SHA-256 over the entry and the hash of the one before"),
     comment="What was done to the watch, never changed afterwards.",
 )
 
@@ -225,18 +204,18 @@ for _dialect, _statements in (("sqlite", _NEVER_CHANGED), ("postgresql", _NEVER_
 audit_head = Table(
     "audit_head",
     metadata,
-    Column("entries", _Number, primary_key=True, autoincrement=False, comment="how many the audit has"),
-    Column("hash", _Text, nullable=False, comment="of the last one"),
+    Column("entries", NUMBER, primary_key=True, autoincrement=False, comment="how many the audit has"),
+    Column("hash", TEXT, nullable=False, comment="of the last one"),
     comment="One row: where the audit ends, so that a cut end is noticed.",
 )
 
 messages = Table(
     "messages",
     metadata,
-    Column("sender", _Text, primary_key=True, comment="sending application and facility"),
-    Column("control_id", _Text, primary_key=True),
+    Column("sender", TEXT, primary_key=True, comment="sending application and facility"),
+    Column("control_id", TEXT, primary_key=True),
     Column("sha256", LargeBinary, primary_key=True, comment="of the content"),
-    Column("code", _Text, nullable=False, comment="the acknowledgement that was answered"),
+    Column("code", TEXT, nullable=False, comment="the acknowledgement that was answered"),
     Column("at", BigInteger, nullable=False, comment="when it came, by the clock of the computer"),
     Column("seq", BigInteger, nullable=False, comment="the last result that was kept before its answer"),
     comment="Every HL7 message answered: sent again, it gets the same answer and counts once.",
@@ -246,12 +225,12 @@ messages = Table(
 annotations = Table(
     "annotations",
     metadata,
-    Column("id", _Number, primary_key=True, autoincrement=False),
+    Column("id", NUMBER, primary_key=True, autoincrement=False),
     Column("stream", ForeignKey("streams.id"), nullable=False),
-    Column("specimen", _Text, nullable=False),
+    Column("specimen", TEXT, nullable=False),
     Column("time", BigInteger, nullable=False, comment="when the result was measured, as the feed says"),
-    Column("status", _Text, nullable=False, comment="C corrected, D deleted, W wrong"),
-    Column("value", _Text, nullable=False, comment='as corrected, as written; "" where none is given'),
+    Column("status", TEXT, nullable=False, comment="C corrected, D deleted, W wrong"),
+    Column("value", TEXT, nullable=False, comment='as corrected, as written; "" where none is given'),
     Column("at", BigInteger, nullable=False, comment="when the word came, by the clock of the computer"),
     Column("feed", ForeignKey("feeds.id"), nullable=False),
     Column("place", BigInteger, nullable=False),
@@ -262,33 +241,33 @@ annotations = Table(
 events = Table(
     "events",
     metadata,
-    Column("id", _Number, primary_key=True, autoincrement=False),
+    Column("id", NUMBER, primary_key=True, autoincrement=False),
     Column("time", BigInteger, nullable=False, comment="when it happened"),
     Column(
         "kind",
-        _Text,
+        TEXT,
         nullable=False,
         comment="calibration, reagent lot, maintenance, control accepted or rejected, note",
     ),
-    Column("analyte", _Text, nullable=False, comment='"" for every analyte of the analyser'),
-    Column("analyser", _Text, nullable=False, comment='"" for every analyser'),
-    Column("detail", _Text, nullable=False, comment="lot, control material and value, or words of a person"),
-    Column("source", _Text, nullable=False, comment="the feed that brought it, or who entered it"),
+    Column("analyte", TEXT, nullable=False, comment='"" for every analyte of the analyser'),
+    Column("analyser", TEXT, nullable=False, comment='"" for every analyser'),
+    Column("detail", TEXT, nullable=False, comment="lot, control material and value, or words of a person"),
+    Column("source", TEXT, nullable=False, comment="the feed that brought it, or who entered it"),
     Column("at", BigInteger, nullable=False, comment="when it came, by the clock of the computer"),
     Column("seq", BigInteger, nullable=False, comment="the last result that came before it"),
-    Column("effect", _Text, nullable=False, comment='what the watch did because of it, "" if nothing'),
+    Column("effect", TEXT, nullable=False, comment='what the watch did because of it, "" if nothing'),
     comment="Laboratory events.",
 )
 
 notices = Table(
     "notices",
     metadata,
-    Column("id", _Number, primary_key=True, autoincrement=False),
+    Column("id", NUMBER, primary_key=True, autoincrement=False),
     Column("time", BigInteger, nullable=False, comment="when it began"),
-    Column("kind", _Text, nullable=False, comment="quiet, clock skew and the like"),
-    Column("analyte", _Text, nullable=False, comment='"" for every analyte of the analyser'),
-    Column("analyser", _Text, nullable=False, comment='"" for every analyser'),
-    Column("text", _Text, nullable=False),
+    Column("kind", TEXT, nullable=False, comment="quiet, clock skew and the like"),
+    Column("analyte", TEXT, nullable=False, comment='"" for every analyte of the analyser'),
+    Column("analyser", TEXT, nullable=False, comment='"" for every analyser'),
+    Column("text", TEXT, nullable=False),
     Column("closed_at", BigInteger, comment="when it ended; empty while it lasts"),
     UniqueConstraint("time", "kind", "analyte", "analyser"),
     comment="What the watch tells beside alarms.",
@@ -302,6 +281,6 @@ heartbeat = Table(
     Column("pid", Integer, nullable=False),
     Column("last_result", BigInteger, comment="time of the newest result kept"),
     Column("last_arrival", BigInteger, comment="when the last result came, by the clock of the computer"),
-    Column("state", _Text, nullable=False, comment="of feeds and streams, as JSON"),
+    Column("state", TEXT, nullable=False, comment="of feeds and streams, as JSON"),
     comment="One row: the sign of life of the watch.",
 )
