@@ -71,7 +71,7 @@ def export(to: FolderArgument, lab: LabOption = None, json: LinesOption = False)
     try:
         to.mkdir(exist_ok=True)
         for path, count in export_store(place, to, as_json=json):
-            typer.echo(f"{path}: {count:,} rows")
+            typer.echo(f"{path}: {count:,} row{'s' * (count != 1)}")
     except OSError as error:
         raise InputError(
             f"{to} cannot be written: {error.strerror}. Name a folder where there is room and this user may write."
