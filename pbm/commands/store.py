@@ -1,5 +1,6 @@
 """`pbm store check` and `pbm store export FOLDER`: whether what `pbm watch` keeps is whole, and all of it as files for other programs."""
 
+import re
 from collections.abc import Iterator
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
@@ -13,6 +14,8 @@ if TYPE_CHECKING:
     from pbm.io.store_check import Checked
     from pbm.io.store_place import Place
 
+_HASH = re.compile(r"[0-9a-f]{8,64}")
+
 app = typer.Typer(
     help="Look after the store that pbm watch writes.",
     no_args_is_help=True,
@@ -25,7 +28,7 @@ HeadOption = Annotated[
     typer.Option(
         "--head",
         metavar="HASH",
-        help="A hash of the audit that was noted earlier; it must still be in it.",
+        help="A hash of the audit that was noted earlier, or its first digits; it must still be in it.",
         show_default=False,
     ),
 ]
@@ -43,6 +46,8 @@ def check(lab: LabOption = None, head: HeadOption = "", json: JsonOption = False
 
     Example:  pbm store check
     """
+    if head and not _HASH.fullmatch(head):
+        raise InputError(f'--head takes a hash of the audit, at least its first 8 digits; found "{head}".')
     place, folder = _existing(lab)
     found = []
     for one in _checks(place, folder, head):

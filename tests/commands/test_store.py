@@ -75,6 +75,8 @@ def test_a_hash_that_was_noted_is_looked_for(folder: Path) -> None:
     assert pbm("store", "check", "--lab", folder, "--head", noted).returncode == 0
     done = pbm("store", "check", "--lab", folder, "--head", "0" * 64)
     assert done.returncode == 1 and "no entry has the hash 0000" in done.stdout
+    for wrong in (noted[:7], "xyz" * 4):
+        assert pbm("store", "check", "--lab", folder, "--head", wrong).returncode == 2
 
 
 def test_export_names_each_file_and_its_rows(folder: Path) -> None:

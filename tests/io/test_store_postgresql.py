@@ -80,6 +80,16 @@ def test_a_user_who_may_not_write_is_told(postgresql_server: Server, place: Plac
         Store(place.set(username="looker"))
 
 
+def test_a_user_who_owns_nothing_but_the_schema_can_write(postgresql_server: Server, place: Place) -> None:
+    assert isinstance(place, URL)
+    postgresql_server.execute("CREATE ROLE keeper LOGIN", str(place.database))
+    postgresql_server.execute("CREATE SCHEMA watch AUTHORIZATION keeper", str(place.database))
+    own = place.set(username="keeper")
+    with begun(own) as store:
+        store.keep(batch())
+    assert StoreReader(own).alarms() == [ALARM]
+
+
 def test_a_server_that_is_too_old_is_refused(place: Place, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr("pbm.io.store_engine.OLDEST_POSTGRESQL", 990_000)
     with pytest.raises(FeedError, match="the store needs 99 or later"):
