@@ -1,11 +1,16 @@
 """What `pbm watch --shadow` tells: that it is on trial, and at the end the alarms seen against those that the plan predicted."""
 
+from typing import TYPE_CHECKING
+
 from pbm.commands.tables import table
 from pbm.io.store import Store
 from pbm.records.plan import Plan
 from pbm.records.snapshot import Batch
-from pbm.stages.shadow import SHADOW, ShadowAccount, Trial, together
 
+if TYPE_CHECKING:
+    from pbm.stages.shadow import Trial
+
+SHADOW = "shadow"  # the feed under whose name the store keeps what the trial has met so far
 OPENING = (
     "On trial (--shadow): alarms are kept in the store and shown to nobody. The trial goes on over restarts; a watch without --shadow "
     "ends it."
@@ -16,6 +21,8 @@ class OnTrial:
     """A trial, as far as it has come."""
 
     def __init__(self, plan: Plan, store: Store) -> None:
+        from pbm.stages.shadow import ShadowAccount  # its intervals take time to load, and only a trial needs them
+
         self._account = ShadowAccount(plan, store.position(SHADOW))
 
     def add(self, batch: Batch) -> dict[str, str]:
@@ -23,6 +30,8 @@ class OnTrial:
         return {SHADOW: self._account.add(batch)} if batch.results else {}
 
     def __str__(self) -> str:
+        from pbm.stages.shadow import together
+
         trials = self._account.streams()
         if not trials:
             return "On trial: no result of a watched stream has come yet."
@@ -31,7 +40,7 @@ class OnTrial:
         return "\n".join(["Alarms of the trial so far:", "", table(head, rows)])
 
 
-def _row(one: Trial) -> list[str]:
+def _row(one: "Trial") -> list[str]:
     low, high = one.interval
     return [
         one.name,

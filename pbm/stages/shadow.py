@@ -14,7 +14,6 @@ from pbm.records.plan import Plan
 from pbm.records.snapshot import Batch
 from pbm.records.stream import StreamName
 
-SHADOW = "shadow"  # the feed under whose name the store keeps what the trial has met so far
 LEVEL = 0.9
 
 
