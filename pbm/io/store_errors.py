@@ -13,6 +13,9 @@ _MAY_NOT_WRITE = "{place} or its folder may not be written. Give this user the r
 _LOCKED = "{place} has been locked by another program for too long. Close the program that writes to it."
 _FULL = "The disk that holds {place} is full. Free some space."
 _DAMAGED = "{place} is damaged. Move it and the files beside it away, and restore a copy or start afresh."
+_REFUSED = (
+    "{place} refuses this user: {said}. Give the user the right to create tables in the schema watch and to write them."
+)
 _UNREACHED = "{place} cannot be reached, or refuses this user: {said}. See that the server runs, and that `store` in lab.toml is right."
 # By the name of SQLite's error or PostgreSQL's SQLSTATE, or how it begins.
 _CAUSES = {
@@ -28,7 +31,8 @@ _CAUSES = {
     "SQLITE_IOERR": "The disk that holds {place} fails to read or write. Check the disk.",
     "53100": _FULL,
     "55P03": _LOCKED,
-    "42501": "{place} refuses this user: {said}. Give the user the right to create tables there and to write them.",
+    "42501": _REFUSED,
+    "3F000": _REFUSED,
     "25006": "{place} can only be read (a standby server, or a transaction set to read only). Name the primary server.",
     "57P": "The server of {place} is shutting down or starting. Try again when it runs.",
     "XX00": "{place} is damaged: {said}. Restore a copy of the database or start afresh.",

@@ -28,7 +28,11 @@ schema = Table(
     "schema",
     metadata,
     Column(
-        "version", Integer, primary_key=True, comment="layout of these tables; another version of pbm may need another"
+        "version",
+        Integer,
+        primary_key=True,
+        autoincrement=False,
+        comment="layout of these tables; another version of pbm may need another",
     ),
     comment="One row.",
 )
