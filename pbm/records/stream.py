@@ -1,7 +1,7 @@
 """A stream: one analyte on one analyser, its name (`sodium@line-2`) and its history in columns."""
 
 from dataclasses import dataclass, fields
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 import numpy.typing as npt
@@ -13,8 +13,7 @@ LONGEST_ANALYSER = 60
 RERUN_HOURS = 24  # a further result of a specimen within so many hours of one that counts is a rerun
 
 
-@dataclass(frozen=True, slots=True, order=True)
-class StreamName:
+class StreamName(NamedTuple):
     """Analyte and analyser, written `analyte@analyser`."""
 
     analyte: str
