@@ -17,6 +17,7 @@ from pbm.records.message import Answered, MessageKey
 from pbm.records.reading import Chunk, SetAside
 from pbm.records.result import Result
 from pbm.records.snapshot import Batch, KeptResult
+from pbm.stages.estimate import WINDOW
 from pbm.stages.live import Live
 from tests.io.store_samples import ALARM, FEED, batch, begun, tables
 from tests.live_laboratory import MINUTE, SODIUM, START, every_line, laboratory, results, two_lines
@@ -54,6 +55,10 @@ def test_the_last_thousand_are_those_that_count(place: Place) -> None:
         store.keep(batch(results=[*kept([140] * 1100), *late], alarms=[]))
         assert sweep(store, START + 9999 * MINUTE) == 100
         assert len(store.recent_results(SODIUM, 9999)) == KEPT_RESULTS
+
+
+def test_as_many_stay_as_an_onset_is_estimated_from() -> None:
+    assert KEPT_RESULTS >= WINDOW
 
 
 def test_a_result_that_an_alarm_is_about_stays(place: Place) -> None:

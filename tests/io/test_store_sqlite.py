@@ -2,6 +2,8 @@
 
 import os
 import sqlite3
+from contextlib import closing
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -11,7 +13,8 @@ from sqlalchemy.exc import OperationalError
 from pbm.errors import FeedError, InputError, StoreWaits
 from pbm.io.store import Store
 from pbm.io.store_reader import StoreReader
-from tests.io.store_samples import ALARM, batch, begun, results_kept, tables
+from pbm.records.message import Answered, MessageKey
+from tests.io.store_samples import ALARM, SNAPSHOT, batch, begun, results_kept, tables
 from tests.live_laboratory import SODIUM
 from tests.small_disk import enlarge, nobody_may_write, small_disk
 
@@ -158,6 +161,39 @@ def test_on_a_disk_without_space_nothing_that_was_kept_is_lost_and_it_goes_on_wh
 def _pragma(store: Store, what: str) -> int:
     with store._connection.begin():
         return int(store._connection.execute(text(f"PRAGMA {what}")).scalar_one())
+
+
+def test_of_a_log_that_was_cut_anywhere_whole_batches_are_left(path: Path, tmp_path: Path) -> None:
+    """What a power cut leaves: all of the first batches, with their alarms, states, positions and answers, and nothing of the next."""
+    with Store(path) as store:
+        store._connection.exec_driver_sql("PRAGMA wal_autocheckpoint = 0")
+        store._connection.rollback()
+        ends = [tables(path)]
+        store.begin(1, "watch begun", "sha", "", [SNAPSHOT])
+        ends.append(tables(path))
+        for n in range(8):
+            key = MessageKey("LIS", str(n), f"{n:064x}")
+            store.keep(
+                batch(
+                    results=results_kept(1000 * n, 20),
+                    alarms=[(3, ALARM)],
+                    snapshots=[replace(SNAPSHOT, taken=n + 1)],
+                    positions={"live.csv": str(n)},
+                    messages=[Answered(key, "AA", n)],
+                )
+            )
+            ends.append(tables(path))
+        log = path.with_name("watch.sqlite-wal").read_bytes()
+        for cut in range(len(log) // 60, len(log) + 1, len(log) // 60):
+            (folder := tmp_path / f"cut-{cut}").mkdir()
+            copy = folder / "watch.sqlite"
+            copy.write_bytes(path.read_bytes())
+            copy.with_name("watch.sqlite-wal").write_bytes(log[:cut])
+            with closing(sqlite3.connect(copy)) as connection:
+                made = connection.execute("select count(*) from sqlite_master").fetchone()[0]
+            if made:
+                assert tables(copy) in ends
+        assert tables(copy) == ends[-1]
 
 
 def test_every_commit_reaches_the_disk(path: Path) -> None:
