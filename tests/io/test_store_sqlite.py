@@ -184,7 +184,7 @@ def test_of_a_log_that_was_cut_anywhere_whole_batches_are_left(path: Path, tmp_p
             )
             ends.append(tables(path))
         log = path.with_name("watch.sqlite-wal").read_bytes()
-        for cut in range(len(log) // 60, len(log) + 1, len(log) // 60):
+        for cut in [*range(0, len(log), len(log) // 60), len(log)]:
             (folder := tmp_path / f"cut-{cut}").mkdir()
             copy = folder / "watch.sqlite"
             copy.write_bytes(path.read_bytes())
