@@ -30,7 +30,7 @@ _CORRECTED: dict[str, Literal["C", "D", "W"]] = {"C": "C", "D": "D", "W": "W"}
 _NOT_FINAL, _FINAL, _WITHOUT_RESULT = ("P", "R", "S"), ("", "A", "B", "F", "U", "V"), ("I", "N", "O", "X")
 _NUMBERS = ("NM", "ST", "")
 _OFF_SCALE = {"<": -1, ">": 1}
-_KNOWN_TEXTS = 65_536
+_KNOWN_TEXTS = 16_384
 _TO_THE_MINUTE = 12  # digits of a time
 _LONGEST_CORRECTED = 40
 
@@ -67,6 +67,8 @@ class ResultReader:
         self._settings, self._pooled = lab.feed, lab.extract.analyser is None
         self._test = lru_cache(_KNOWN_TEXTS)(self._find_test)
         self._number = lru_cache(_KNOWN_TEXTS)(read_value)
+        # Few different ones, each met again and again.
+        self._unit, self._name = lru_cache(_KNOWN_TEXTS)(_unit), lru_cache(_KNOWN_TEXTS)(Delimiters.first)
 
     def read(self, header: Header, segments: Iterable[Fields], place: int, at: int) -> list[Read]:
         """What a message holds, in its order.
@@ -107,7 +109,7 @@ class ResultReader:
             test,
             analyser,
             value,
-            _unit(signs, fields[6]),
+            self._unit(signs, fields[6]),
             common.specimen,
             common.ward,
             common.kind,
@@ -131,11 +133,11 @@ class ResultReader:
             return ""
         level, text = self._settings.analyser_level, one.fields[18] or one.device
         levels = text.split(signs.repetition) if signs.repetition else [text]
-        return signs.first(levels[level - 1]) if len(levels) >= level else ""
+        return self._name(signs, levels[level - 1]) if len(levels) >= level else ""
 
     def _status(self, signs: Delimiters, one: Observation, common: _Common) -> str:
         """OBX-11 of an observation that is a result or a later word on one."""
-        status = signs.first(one.fields[11])
+        status = self._name(signs, one.fields[11])
         if one.of_specimen:
             raise _AtTheDoorError("an observation of the specimen itself")
         if len(common.specimen) > LONGEST_NAME:

@@ -7,6 +7,7 @@ import re
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import lru_cache
+from typing import NamedTuple
 
 Fields = list[str]
 _BEFORE = "\ufeff\r\n"  # what may stand before a header: a byte order mark, blank lines
@@ -16,8 +17,7 @@ _LINE_FEEDS = {"\r", "\n", "\t"}
 _HEX = re.compile(r"X((?:[0-9A-Fa-f]{2})+)")
 
 
-@dataclass(frozen=True, slots=True)
-class Delimiters:
+class Delimiters(NamedTuple):
     """The signs that part a message; "" where MSH-2 gives none.
 
     Attributes
@@ -57,10 +57,15 @@ class Delimiters:
 
     def first(self, text: str) -> str:
         """The first component of the first repetition of a field, unescaped; "" for the null value `""`."""
-        for sign in (self.repetition, self.component, self.subcomponent):
-            if sign and sign in text:
-                text = text.split(sign, 1)[0]
-        text = self.unescape(text)
+        _, component, repetition, escape, subcomponent, _ = self
+        if repetition and repetition in text:
+            text = text.split(repetition, 1)[0]
+        if component in text:
+            text = text.split(component, 1)[0]
+        if subcomponent and subcomponent in text:
+            text = text.split(subcomponent, 1)[0]
+        if escape and escape in text:
+            text = self.unescape(text)
         return "" if text == '""' else text
 
 
