@@ -209,16 +209,12 @@ class _Run:
 
     async def _next(self, worker: ThreadPoolExecutor) -> tuple[Feed, Chunk] | None:
         """The next of the queue; while there is none, the taker is called now and then."""
-        if not self._queue.empty():
-            return self._queue.get_nowait()
-        coming = asyncio.create_task(self._queue.get())
-        try:
-            while not (await asyncio.wait({coming}, timeout=self._every))[0]:
+        while True:
+            try:
+                async with asyncio.timeout(self._every):
+                    return await self._queue.get()
+            except TimeoutError:
                 await self._keep(worker, [])
-        except BaseException:
-            coming.cancel()
-            raise
-        return coming.result()
 
     async def _read_until_stopped(self) -> None:
         """Fill the queue until every feed has ended, one has failed, or a signal came; then mark its end."""
