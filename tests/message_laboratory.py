@@ -79,8 +79,8 @@ def _watched(unit: str, centre: float, spread: float) -> StreamPlan:
 
 def laboratory(results: int) -> tuple[Laboratory, list[StreamSample]]:
     """At least so many results of all streams, in which sodium of line-2 goes wrong half-way."""
-    days = max(1, round(results / 4000))
-    made = Laboratory(days, volume=max(0.05, results / (4000 * days)), seed=5)
+    days = max(1, round(results / 3700))
+    made = Laboratory(days, volume=max(0.05, results / (3600 * days)), seed=5)
     onset = int(made.sample(*STREAMS[0]).time[0]) + days * 12 * HOUR
     return made, [
         made.sample(analyte, line, (Fault("sodium", "line-2", onset, "shift", 1.0, "TEa"),))
