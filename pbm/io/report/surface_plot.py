@@ -55,7 +55,9 @@ def _panel(search: Search, surface: Surface, top: float, place: int) -> Markup:
         Markup('<path class="range" d="M{}L{}Z"/>').format(_points(xs, best), _points(xs[::-1], worst[::-1])),
         Markup('<path class="alone" d="M{:g} {:g}H{:g}"/>').format(_LEFT, alone, _LEFT + width),
         Markup('<path class="best" d="M{}"/>').format(_points(xs, best)),
-        *(Markup('<circle cx="{:.1f}" cy="{:.1f}" r="2.2"/>').format(x, y) for x, y in zip(xs, best, strict=True)),
+        Markup('<path class="dots" d="{}"/>').format(
+            "".join(f"M{x:.1f} {y:.1f}h0" for x, y in zip(xs, best, strict=True))
+        ),
         *_parameters(xs, list(columns), surface.parameter),
     ]
     return Markup('<g transform="translate({} {})">{}</g>').format(left, under, Markup("").join(parts))
@@ -68,12 +70,12 @@ def _title(surface: Surface) -> str:
 def _scale(top: float) -> list[Markup]:
     """Lines and names of round scores."""
     step = next(one * 10.0**power for power in range(-9, 12) for one in _TICKS[:-1] if top / (one * 10.0**power) <= 5)
-    found = []
-    for count in range(int(top / step) + 1):
-        y = _height(count * step, top)
-        found.append(Markup('<path class="rule" d="M{} {:.1f}H{}"/>').format(_LEFT, y, _WIDTH - _RIGHT))
-        found.append(_text(_LEFT - 4, y + 3, f"{count * step:g}", "end"))
-    return found
+    heights = [(count * step, _height(count * step, top)) for count in range(int(top / step) + 1)]
+    rules = "".join(f"M{_LEFT} {y:.1f}H{_WIDTH - _RIGHT}" for _, y in heights)
+    return [
+        Markup('<path class="rule" d="{}"/>').format(rules),
+        *(_text(_LEFT - 4, y + 3, f"{score:g}", "end") for score, y in heights),
+    ]
 
 
 def _parameters(xs: Sequence[float], values: Sequence[float], name: str) -> list[Markup]:

@@ -1,7 +1,7 @@
 """matplotlib figures as inline SVG on one page: no identifier shared, no font or address of their own, the same bytes each time.
 
 What the page already knows (namespaces, fonts, document type) is taken out, and so are groups that only nest; styles become classes shared
-by all figures; identifiers stay only where something refers to them; coordinates keep a hundredth of a point. Figures are drawn inside
+by all figures; identifiers stay only where something refers to them; coordinates keep a tenth of a point. Figures are drawn inside
 their axes' limits, so they need no clipping.
 """
 
@@ -33,10 +33,10 @@ LOOK: dict[Any, Any] = {
     "xtick.labelcolor": "#1d1d1b",
     "ytick.labelcolor": "#1d1d1b",
     "axes.linewidth": 0.7,
-    "xtick.major.width": 0.7,
-    "ytick.major.width": 0.7,
-    "xtick.major.size": 3,
-    "ytick.major.size": 3,
+    "xtick.major.size": 0,  # the grid tells where a number belongs
+    "ytick.major.size": 0,
+    "xtick.major.pad": 6,
+    "ytick.major.pad": 5,
     "xtick.minor.size": 0,
     "ytick.minor.size": 0,
     "axes.grid": True,
@@ -49,7 +49,7 @@ LOOK: dict[Any, Any] = {
     "axes.facecolor": "none",
 }
 _NO_STAMP = {"Date": None, "Creator": None, "Format": None, "Type": None}
-_LONG = re.compile(r"-?\d+\.\d{3,}(?:e-?\d+)?")
+_LONG = re.compile(r"-?\d+\.\d{2,}(?:e-?\d+)?")
 _GEOMETRY = ("d", "x", "y", "transform")
 _FAMILY = re.compile(r"font-family: [^;]*;? ?")
 _NO_TURN = re.compile(r"^rotate\(-?0[ )]")
@@ -125,8 +125,8 @@ def _invisible(element: ElementTree.Element) -> bool:
 
 
 def _shortened(geometry: str) -> str:
-    """Rounded to a hundredth; a path of straight lines without the letter that a reader of paths takes as said."""
-    short = " ".join(_LONG.sub(lambda found: f"{float(found[0]):.2f}".rstrip("0").rstrip("."), geometry).split())
+    """Rounded to a tenth; a path of straight lines without the letter that a reader of paths takes as said."""
+    short = " ".join(_LONG.sub(lambda found: f"{float(found[0]):.1f}".removesuffix(".0"), geometry).split())
     return short if "C" in short or "Q" in short else short.replace(" L ", " ")
 
 

@@ -34,7 +34,8 @@ SIZES = {
 
 def figure(value: float, wide: float = 0.12, top: float = math.inf) -> Figure:
     """A figure with an interval of the given relative half-width."""
-    return Figure(value=min(value, top), low=min(value * (1 - wide), top), high=min(value * (1 + wide), top))
+    low, high = sorted((value * (1 - wide), value * (1 + wide)))
+    return Figure(value=min(value, top), low=min(low, top), high=min(high, top))
 
 
 def both_ways(alone: float, beside: float, wide: float = 0.12) -> AloneAndWith:

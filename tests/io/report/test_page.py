@@ -10,25 +10,37 @@ from pathlib import Path
 
 import pytest
 
-from pbm.io.report import words
+from pbm.io.report import fault_words, words
 from pbm.io.report.page import report, write_report
-from pbm.records.appraisal import Appraisal, MonitorAppraisal, StreamAppraisal
-from tests.io.report import sample
+from pbm.records.appraisal import Appraisal, MonitorAppraisal
+from pbm.records.figures import AloneAndWith
+from pbm.records.judged import Judged
+from pbm.records.tuning import Tuning
+from tests.io.report import sample, variants
 from tests.io.report.parsed import Page, plain
+from tests.io.report.variants import judged_of
 
 CASES = {
     "three": sample.THREE,
     "empty": sample.appraisal(),
     "none useful": sample.appraisal(sample.TSH, sample.TSH),
     "hostile": sample.hostile(),
-    "two monitors": sample.appraisal(sample.SODIUM.model_copy(update={"monitors": sample.SODIUM.monitors * 2})),
+    "two monitors": sample.appraisal(variants.with_imprecision(sample.SODIUM)),
+    "no monitor": sample.appraisal(variants.unwatched(sample.ALBUMIN)),
+    "harming": sample.appraisal(variants.harming(sample.ALBUMIN)),
+    "reasons": sample.appraisal(variants.as_chosen(sample.SODIUM), sample.TSH),
+}
+TUNED: dict[str, Tuning] = {
+    "reasons": variants.tuning(
+        sodium__line_2=variants.reasons(together="One monitor is enough"), tsh__immuno=variants.reasons()
+    )
 }
 all_cases = pytest.mark.parametrize("case", CASES)
 
 
 @cache
 def text_of(case: str) -> str:
-    return report(CASES[case])
+    return report(CASES[case], TUNED.get(case))
 
 
 @cache
@@ -90,8 +102,11 @@ def test_every_figure_says_what_is_seen(case: str) -> None:
 def test_every_figure_names_its_axes_and_lines(case: str) -> None:
     for plot in page_of(case).of("svg"):
         told = plain(plot)
+        if "panels" in plot.attributes["class"]:
+            assert "weight" in told and "EWMA" in told
+            continue
         assert "size of the" in told or "day of the held-out history" in told
-        assert "controls + monitor" in told or "upper limit" in told
+        assert "controls alone" in told or "upper limit" in told
 
 
 def test_the_page_fits_the_window_and_the_paper() -> None:
@@ -105,7 +120,7 @@ def test_the_page_fits_the_window_and_the_paper() -> None:
 
 @all_cases
 def test_the_same_appraisal_gives_the_same_page(case: str) -> None:
-    assert report(CASES[case].model_copy(deep=True)) == text_of(case)
+    assert report(CASES[case].model_copy(deep=True), TUNED.get(case)) == text_of(case)
 
 
 def test_another_process_with_other_settings_writes_the_same_bytes(tmp_path: Path) -> None:
@@ -147,61 +162,57 @@ def figures_of(monitor: MonitorAppraisal) -> Iterator[str]:
     """Every figure of a monitor as it is written on the page."""
     yield words.sentence(monitor.words)
     yield words.percent(monitor.admitted)
+    assert monitor.low is not None and monitor.high is not None
     for value in (monitor.centre, monitor.low, monitor.high):
         yield words.level(value, monitor.low, monitor.high)
     alarms = monitor.false_alarms
     yield f"{alarms.episodes} in {alarms.days} days; the budget allows {words.expected(alarms.allowed)}"
-    yield f"between {words.expected(alarms.interval[0])} and {words.expected(alarms.interval[1])}"
-    yield "The budget is kept." if alarms.kept else "The budget is not kept."
-    for worst in (monitor.worst_unreliable, monitor.worst_final):
-        for figure in (worst.alone, worst.with_monitor):
-            yield words.expected(figure.value)
-            yield words.interval(figure)
-    yield words.percent(max(fault.schedule_error for fault in monitor.faults))
+    yield f"A month: {words.expected(alarms.a_month.value)} ({words.interval(alarms.a_month)})"
+    yield "The budget is kept." if alarms.kept else "The budget is NOT kept."
+    yield "The training days predicted 0 to 4"
 
 
-def rows_of(monitor: MonitorAppraisal, unit: str) -> Iterator[list[str]]:
-    """What each row of the tables of all figures must hold, by error and table."""
-    for fault in monitor.faults:
-        name = words.fault_in_words(fault, unit)
-        counts = [
-            fault.unreliable.alone,
-            fault.unreliable.with_monitor,
-            fault.unreliable_final.alone,
-            fault.unreliable_final.with_monitor,
-        ]
-        yield [
-            name,
-            words.shift_in_words(fault, unit),
-            *(f"{words.expected(one.value)} {words.interval(one)}" for one in counts),
-        ]
+def paired(found: AloneAndWith) -> Iterator[str]:
+    """A figure alone, with the monitor, and the difference."""
+    for figure in (found.alone, found.with_monitor):
+        yield f"{words.expected(figure.value)} {words.interval(figure)}"
+    yield f"{words.share_fewer(found)} {words.fewer_interval(found)}"
+
+
+def rows_of(judged: Judged, unit: str) -> Iterator[list[str]]:
+    """What each row of the tables must hold, by error and table."""
+    for fault in judged.faults:
+        name = fault_words.fault_in_words(fault, unit)
+        final = list(paired(fault.unreliable_final))[:2]
+        yield [name, fault_words.shift_in_words(fault, unit), *paired(fault.unreliable), *final]
         ways = (fault.by_first_event.schedule, fault.by_first_event.monitor, fault.by_first_event.both)
         yield [name, *(f"{words.percent(one.value)} {words.share_interval(one)}" for one in ways)]
-        yield [
-            name,
-            f"before it {words.percent(fault.before_first_event.value)}, {words.share_interval(fault.before_first_event)}",
-        ]
-        for way in (fault.until.schedule, fault.until.monitor, fault.until.both):
-            median, p95 = (words.results_until(one, sample.HORIZON) for one in (way.median, way.p95))
-            yield [name, f"{median} 95 %: {p95} mean {words.mean_in_words(way)}; never {words.percent(way.never)}"]
+        for way in ("schedule", "monitor", "both"):
+            until, never = getattr(fault.until, way), getattr(fault.never, way).value
+            told = words.until(until.median, sample.HORIZON)
+            if until.p5.value is not None:
+                told += f" {words.until(until.p5, sample.HORIZON)} to {words.until(until.p95, sample.HORIZON)}"
+            hours = words.number(getattr(fault.until_hours, way).mean.value)
+            yield [name, f"{told} mean {words.mean_in_words(until, never)}; {hours} h; never {words.percent(never)}"]
+    for part in judged.by_onset:
+        yield [part.when, words.number(part.results_per_hour), *list(paired(part.unreliable))[:2]]
+    for row in judged.spacing:
+        yield [row.controls, words.number(row.events_per_day), *list(paired(row.unreliable))[:2]]
+    assert judged.peers is not None
+    for peer in judged.peers.compared:
+        yield [peer.title, peer.settings, f"{words.expected(peer.unreliable.value)} {words.interval(peer.unreliable)}"]
+    for found in (judged.unreliable, judged.unreliable_final, judged.yearly.unreliable, judged.yearly.unreliable_final):
+        yield list(paired(found))
 
 
 @pytest.mark.parametrize("place", range(len(sample.THREE.streams)))
 def test_every_fact_of_a_stream_stands_in_its_section(place: int) -> None:
     stream = sample.THREE.streams[place]
     told = plain(page_of("three").identified(f"stream-{place + 1}"))
-    facts = [
-        stream.stream,
-        stream.verdict,
-        stream.reason,
-        stream.allowable_error,
-        stream.schedule,
-        stream.first_day,
-        stream.last_day,
-    ]
+    facts = [stream.stream, stream.verdict, stream.reason, stream.first_day, stream.last_day]
+    judged = [stream.allowable_error, stream.schedule, stream.response_lag, words.whole(stream.onsets), "7 days"]
     numbers = [words.number(stream.results_per_day), words.whole(stream.held_out_results)]
-    tried = [stream.response_lag, words.whole(stream.onsets), "7 days"] if stream.monitors else []
-    for one in facts + numbers + tried:
+    for one in facts + (judged + numbers if stream.judged else []):
         assert " ".join(one.split()) in told
 
 
@@ -213,29 +224,49 @@ def test_every_figure_of_the_record_stands_in_the_section_of_its_stream(place: i
     (monitor,) = stream.monitors
     for one in figures_of(monitor):
         assert " ".join(one.split()) in told
-    for parts in rows_of(monitor, stream.unit):
+    for parts in rows_of(judged_of(stream), stream.unit):
         assert [row for row in rows if all(" ".join(part.split()) in row for part in parts)], parts
 
 
-def test_the_summary_holds_each_stream_with_its_worst_case_and_alarms() -> None:
+@pytest.mark.parametrize("place", [0, 1, 2])
+def test_the_caution_stands_beside_the_spacing_table(place: int) -> None:
+    section = page_of("three").identified(f"stream-{place + 1}")
+    (beside,) = (one for one in section.inside if one.attributes.get("class") == "beside")
+    assert [one.tag for one in beside.inside if one.tag in ("table", "aside")] == ["table", "aside"]
+    assert judged_of(sample.THREE.streams[place]).spacing_caution in plain(beside)
+
+
+def test_each_stream_names_what_it_was_made_from_and_can_be_signed() -> None:
+    told = plain(page_of("three").identified("stream-1"))
+    for one in (
+        "pbm 0.1.0",
+        "numpy 2.2.1",
+        "20310302",
+        "ab" * 32,
+        "cd" * 32,
+        "ef" * 32,
+        "Decision Name Date and signature",
+    ):
+        assert one in told
+
+
+def test_the_summary_holds_each_stream_with_its_year_worst_error_and_alarms() -> None:
     rows = [plain(one) for one in page_of("three").identified("summary").inside if one.tag == "tr"]
     for stream in sample.THREE.streams:
         (row,) = (one for one in rows if one.startswith(stream.stream))
         assert stream.verdict in row
-        assert " ".join(words.number(stream.results_per_day).split()) in row
         if not stream.monitors:
             assert stream.reason in row
             continue
-        (monitor,) = stream.monitors
-        worst, alarms = monitor.worst_unreliable, monitor.false_alarms
+        judged = judged_of(stream)
+        year, worst, alarms = judged.yearly.unreliable, judged.worst_unreliable, judged.false_alarms
+        assert alarms is not None
         for part in (
-            monitor.brief,
-            f"{words.expected(worst.alone.value)} {words.interval(worst.alone)}",
-            f"{words.expected(worst.with_monitor.value)} {words.interval(worst.with_monitor)}",
-            words.saved(worst.alone.value, worst.with_monitor.value),
-            f"{alarms.episodes}, {'kept' if alarms.kept else 'NOT kept'} allowed {words.expected(alarms.allowed)}",
-            words.expected(alarms.episodes * 30 / 40),
-            f"{words.expected(alarms.interval[0] * 30 / 40)} to {words.expected(alarms.interval[1] * 30 / 40)}",
+            f"{words.expected(year.alone.value)} {words.expected(year.with_monitor.value)}",
+            f"{words.share_fewer(year)} {words.fewer_interval(year)}",
+            f"{words.expected(worst.alone.value)} {words.expected(worst.with_monitor.value)}",
+            f"{words.expected(alarms.a_month.value)} {words.interval(alarms.a_month)}",
+            f"1.00, {'kept' if alarms.kept else 'NOT kept'}",
         ):
             assert " ".join(part.split()) in row, part
 
@@ -266,94 +297,14 @@ def test_the_page_says_what_it_was_made_from() -> None:
         assert one in told
 
 
-def test_a_stream_without_a_monitor_has_its_reason_and_no_plot() -> None:
-    section = page_of("three").identified("stream-4")
-    assert sample.TSH.reason in plain(section)
-    assert not [one for one in section.inside if one.tag in ("svg", "figure", "table")]
-
-
-def test_a_laboratory_where_no_monitor_is_useful_is_told_so() -> None:
-    page = page_of("none useful")
-    assert page.of("svg") == []
-    assert "the controls alone stand" in plain(page.identified("summary"))
-    assert "2 not useful here" in plain(page.identified("summary"))
-
-
-def test_an_empty_appraisal_has_a_page() -> None:
-    page = page_of("empty")
-    assert "0 streams judged." in plain(page.identified("summary"))
-    assert page.of("table") == []
-
-
-def test_two_monitors_of_a_stream_stand_apart() -> None:
-    told = plain(page_of("two monitors").identified("stream-1"))
-    assert "The monitor (1 of 2)" in told
-    assert "The monitor (2 of 2)" in told
-    assert len(page_of("two monitors").of("svg")) == 8
-
-
-def plots_of(stream: StreamAppraisal) -> int:
-    return sum(1 + 3 * len({fault.kind for fault in monitor.faults}) for monitor in stream.monitors)
-
-
-def test_each_kind_of_error_has_three_plots_and_each_monitor_a_trace() -> None:
-    for place, stream in enumerate(sample.THREE.streams, 1):
-        plots = [one for one in page_of("three").identified(f"stream-{place}").inside if one.tag == "svg"]
-        assert len(plots) == plots_of(stream)
-
-
-def test_a_monitor_that_was_never_ready_has_no_trace() -> None:
-    (monitor,) = sample.ALBUMIN.monitors
-    bare = monitor.model_copy(
-        update={"trace": monitor.trace.model_copy(update={"day": (), "lowest": (), "highest": ()})}
-    )
-    page = Page(report(sample.appraisal(sample.ALBUMIN.model_copy(update={"monitors": (bare,)}))))
-    assert len(page.of("svg")) == 3
-
-
-def test_what_is_never_found_is_said_in_words() -> None:
-    never = sample.results_until(1e9, 160.0)
-    (monitor,) = sample.ALBUMIN.monitors
-    until = {"schedule": never, "monitor": never, "both": never}
-    faults = tuple(one.model_copy(update={"until": one.until.model_copy(update=until)}) for one in monitor.faults)
-    stream = sample.ALBUMIN.model_copy(update={"monitors": (monitor.model_copy(update={"faults": faults}),)})
-    page = Page(report(sample.appraisal(stream)))
-    assert page.wrong == []
-    assert any(
-        "more than half never found within 7 days, at any size" in plot.attributes["aria-label"]
-        for plot in page.of("svg")
-    )
-    assert "More than half never found within 7 days, even with the monitor: shift ±0.25" in plain(
-        page.identified("stream-1")
-    )
-    assert "over 7 days 95 %: over 7 days mean at least" in plain(page.identified("stream-1"))
-
-
-@pytest.mark.parametrize("scale", [1e-9, 1e-3, 1e6, 1e12])
-def test_very_small_and_very_large_levels_are_drawn(scale: float) -> None:
-    stream = sample.stream("odd@unit", "u", 1e5, sample.monitor(1e5, 4 * scale, 139 * scale, 30.0))
-    page = Page(report(sample.appraisal(stream)))
-    assert page.wrong == []
-    assert len(page.of("svg")) == 4
-    assert "nan" not in plain(page.identified("stream-1"))
-
-
-def test_a_single_size_and_a_single_moment_are_drawn() -> None:
-    (monitor,) = sample.SODIUM.monitors
-    trace = monitor.trace.model_copy(update={"day": (0.0,), "lowest": (139.0,), "highest": (139.0,)})
-    bare = monitor.model_copy(update={"faults": monitor.faults[:1], "trace": trace})
-    page = Page(report(sample.appraisal(sample.SODIUM.model_copy(update={"monitors": (bare,)}))))
-    assert page.wrong == []
-    assert len(page.of("svg")) == 4
-
-
 @pytest.mark.slow
 def test_forty_streams_make_a_page_below_five_megabytes() -> None:
     appraisal: Appraisal = sample.many(40)
-    text = report(appraisal)
+    reasons = {one.stream: variants.reasons() for one in appraisal.streams}
+    text = report(appraisal, variants.tuning().model_copy(update={"streams": reasons}))
     page = Page(text)
     assert page.wrong == []
-    assert len(page.of("svg")) == 160
+    assert len(page.of("svg")) == 200
     assert len(text.encode()) < 5e6
     identifiers = [one.attributes["id"] for one in page.elements if "id" in one.attributes]
     assert len(set(identifiers)) == len(identifiers)

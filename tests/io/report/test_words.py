@@ -5,7 +5,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from pbm.io.report import words
-from pbm.records.appraisal import ResultsUntil
+from pbm.records.figures import Figure, Percentile
+from tests.io.report import sample
 
 N = "\u202f"
 
@@ -53,10 +54,24 @@ def test_a_share_is_said_to_be_none_or_all_only_where_it_is(share: float, writte
     assert words.percent(share) == f"{written}{N}%"
 
 
-def test_an_expected_count_below_a_thousandth_is_said_to_be_so() -> None:
-    assert words.expected(0.0004) == "<0.001"
-    assert words.expected(0) == "0"
-    assert words.expected(0.0123) == "0.0123"
+@pytest.mark.parametrize(
+    ("value", "written"),
+    [
+        (0, "0"),
+        (0.0004, "<0.01"),
+        (0.0123, "0.01"),
+        (1.3333, "1.33"),
+        (9.996, "10.0"),
+        (1234.5, f"1{N}230"),
+        (-0.2, "−0.20"),
+    ],
+)
+def test_an_expected_count_has_no_more_digits_than_matter(value: float, written: str) -> None:
+    assert words.expected(value) == written
+
+
+def test_an_interval_of_shares_says_its_unit_once() -> None:
+    assert words.share_interval(Figure(value=0.75, low=0.727, high=0.788)) == f"72.7 to 78.8{N}%"
 
 
 @pytest.mark.parametrize(
@@ -75,18 +90,27 @@ def test_a_limit_has_as_many_decimals_as_tell_the_limits_apart(
 
 
 def test_more_with_the_monitor_than_without_is_told() -> None:
-    assert words.fewer(10, 12) == f"20.0{N}% more"
-    assert words.fewer(10, 4) == f"60.0{N}% fewer"
-    assert words.saved(10, 12) == f"−20.0{N}%"
-    assert words.saved(0, 0) == words.fewer(0, 0) == words.NONE
+    more = sample.both_ways(10, 12, 0.1)
+    assert words.fewer(more) == words.share_fewer(more) == f"20.0{N}% more"
+    assert words.fewer_interval(more) == f"18.0 to 22.0{N}%"
+    less = sample.both_ways(10, 4, 0.1)
+    assert words.fewer(less) == f"60.0{N}% fewer"
+    assert words.share_fewer(less) == f"60.0{N}%"
+    assert words.fewer_interval(less) == f"54.0 to 66.0{N}%"
+    assert words.fewer(sample.both_ways(0, 0)) == words.fewer_interval(sample.both_ways(0, 0)) == words.NONE
 
 
 def test_a_mean_over_what_was_never_found_is_a_lower_bound() -> None:
-    found = ResultsUntil(mean=120, median=100, p95=None, never=0.08)
-    assert words.mean_in_words(found) == "at least 120"
-    assert words.mean_in_words(found.model_copy(update={"never": 0.0})) == "120"
-    assert words.results_until(found.p95, 7) == "over 7 days"
-    assert words.results_until(found.p95, 1) == "over 1 day"
+    found = sample.until(120, 5000)
+    assert words.mean_in_words(found, 0.08).startswith("at least 1")
+    assert words.mean_in_words(found, 0.0) == words.number(found.mean.value)
+
+
+@pytest.mark.parametrize(
+    ("count", "written"), [(28.0, "28"), (1234.0, f"1{N}234"), (28.5, "28.5"), (None, "over 7 days")]
+)
+def test_results_until_detection_are_whole_where_they_are(count: float | None, written: str) -> None:
+    assert words.until(Percentile(value=count, low=None, high=None), 7) == written
 
 
 def test_a_sentence_starts_large_and_ends_with_a_stop() -> None:
