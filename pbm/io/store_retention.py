@@ -17,9 +17,9 @@ from pbm.io.store_schema import alarms, feeds, messages, results, set_aside, str
 
 KEPT_RESULTS = 1000
 KEPT_ASIDE = 10_000
-STEP = 1000  # rows looked at in one transaction
+STEP = 250  # rows looked at in one transaction
 _ROOM = 0.2  # share of a file of SQLite that may lie free before it is given back
-_PAGES = 500  # given back in one transaction
+_PAGES = 200  # given back in one transaction
 
 
 @dataclass(frozen=True, slots=True)
@@ -135,10 +135,8 @@ def _give_back(connection: Connection) -> bool:
     free, pages = (_pragma(connection, name) for name in ("freelist_count", "page_count"))
     if free <= _ROOM * pages:
         return False
-    cursor = connection.connection.cursor()
-    cursor.execute(f"PRAGMA incremental_vacuum({_PAGES})")
-    cursor.fetchall()  # a page a step: without this, one page is all that is given back
-    cursor.close()
+    for _ in range(_PAGES):  # the driver takes one step of a statement without rows, and a step is a page
+        connection.exec_driver_sql("PRAGMA incremental_vacuum(1)")
     return _pragma(connection, "freelist_count") < free
 
 
