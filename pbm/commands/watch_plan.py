@@ -18,6 +18,7 @@ from pbm.records.laboratory import Lab
 from pbm.records.plan import Plan
 from pbm.stages.live import Live
 from pbm.stages.liveness import CLOCK
+from pbm.stages.reorder import WAITING
 
 MOST_EVENTS = 100_000
 
@@ -71,6 +72,7 @@ class PlanFile:
             store.events(MOST_EVENTS),
             store.position(CLOCK),
             store.open_notices(),
+            store.position(WAITING),
         )
         changed = store.plan_in_force() not in ("", fingerprint)
         said = opening(live, going_on, changed=changed)
@@ -104,6 +106,7 @@ class PlanFile:
             store.events(MOST_EVENTS),
             old.liveness.state,
             store.open_notices(),
+            old.reorder.state,
         )
         live.skew = old.skew
         said = opening(live, going_on, changed=True)

@@ -9,14 +9,14 @@ from pbm.commands.tables import table
 from pbm.records.laboratory import Lab
 from pbm.records.notice import Notice
 from pbm.records.plan import Plan, StreamPlan
-from pbm.records.snapshot import CORRECTION, DUPLICATE, SENT_AGAIN, Batch
+from pbm.records.snapshot import CORRECTION, DUPLICATE, KNOWN_EVENT, SENT_AGAIN, Batch
 from pbm.records.stream import StreamName
 from pbm.stages.live import Live
 from pbm.stages.monitor import StreamMonitor
 from pbm.stages.states import state_of
 from pbm.stages.words import monitor_in_words
 
-_ORDINARY = (DUPLICATE, SENT_AGAIN)  # counted, not told one by one
+_ORDINARY = (DUPLICATE, SENT_AGAIN, KNOWN_EVENT)  # counted, not told one by one
 CAUTION = (
     "The monitors supplement control materials and never replace them; limits and actions are the laboratory director's decision. "
     "No alarm does not prove that there is no error."

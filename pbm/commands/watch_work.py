@@ -29,7 +29,7 @@ from pbm.records.alarm import Alarm
 from pbm.records.laboratory import Alarms, Lab
 from pbm.records.reading import Chunk
 from pbm.records.result import Result
-from pbm.records.snapshot import Batch
+from pbm.records.snapshot import Batch, Earlier
 from pbm.stages.alarm_line import alarm_line
 from pbm.stages.live import read_chunk
 from pbm.stages.reading import Reader
@@ -207,14 +207,12 @@ class _Work:
 
     def _made(self, given: Sequence[Chunk]) -> Batch:
         """The batch that chunks make, with what else is to be kept."""
-        live = self.plan.live
-        if given:
-            results = (item for chunk in given for item in chunk.items if isinstance(item, Result))
-            batch = live.take(
-                given, self.store.earlier(results, [one.key for chunk in given for one in chunk.messages])
-            )
-        else:
-            batch = Batch() if self._is_replay else live.tick(now())
+        live, at = self.plan.live, now()
+        asked = [item for chunk in given for item in chunk.items if isinstance(item, Result)]
+        waited = [] if self._is_replay else live.waited(given, at)
+        keys = [one.key for chunk in given for one in chunk.messages]
+        earlier = self.store.earlier([*asked, *waited], keys) if given or waited else Earlier()
+        batch = live.take(given, earlier) if given else Batch() if self._is_replay else live.tick(at, earlier)
         more = self.alarms_out.position() | (self.trial.add(batch) if self.trial else {}) | self._to_keep
         self._to_keep = {}
         return replace(batch, positions={**batch.positions, **more})
@@ -257,6 +255,8 @@ class _Work:
                 self.screen.say(
                     f"{file.unread} bytes at the end of {file.source} are no whole line yet; they wait for the next run."
                 )
+        if waiting := len(self.plan.live.reorder):
+            self.screen.say(f"{waiting} results still wait for their order; the next run takes them.")
         self.screen.say(*self.alarms_out.failures(), str(self.account), *[str(self.trial)] * (self.trial is not None))
         for source in self.sources:
             if source.file:

@@ -1,4 +1,4 @@
-"""How `pbm watch` receives HL7 messages and reads them, as the laboratory says in `[feed]` of `lab.toml`."""
+"""How `pbm watch` receives and reads live feeds, HL7 messages above all, as the laboratory says in `[feed]` of `lab.toml`."""
 
 import codecs
 from ipaddress import ip_network
@@ -57,6 +57,9 @@ class FeedSettings(Written):
         At the same time.
     idle_minutes
         After so long without a byte a connection is closed.
+    reorder_seconds
+        A result of a live feed of any kind waits for so long, so that results are taken in the order in which they were measured; alarms
+        then come so much later. With 0 they are taken as they arrive.
     """
 
     peers: tuple[Annotated[str, AfterValidator(_network)], ...] = ()
@@ -69,6 +72,7 @@ class FeedSettings(Written):
     largest_message: int = Field(default=1_000_000, ge=1_000, le=100_000_000)
     connections: int = Field(default=32, ge=1, le=1000)
     idle_minutes: Positive = 60.0
+    reorder_seconds: Annotated[float, Field(ge=0, le=600)] = 0.0
 
     @model_validator(mode="after")
     def _certificates_go_together(self) -> "FeedSettings":

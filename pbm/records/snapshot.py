@@ -12,7 +12,7 @@ from pbm.records.reading import Remark, SetAside
 from pbm.records.result import Result
 from pbm.records.stream import StreamName
 
-SENT_AGAIN, CORRECTION = "message sent again", "later word on a result"
+SENT_AGAIN, CORRECTION, KNOWN_EVENT = "message sent again", "later word on a result", "event known already"
 DUPLICATE, RERUN, REPEAT, LATE = "duplicate", "rerun of the specimen", "same patient again", "too late"
 
 

@@ -3,9 +3,10 @@
 - A result counts once. A further one of the same specimen in the stream within 24 hours is a rerun; with the same time and value it is a
   duplicate. A result without a specimen is a duplicate only of one in another edition of a feed.
 - Where repeats are limited, a result counts once for a patient in so many hours; within them another one is kept, and no monitor takes it.
-- Results are taken in order of arrival and never held back: an alarm must not wait for a later result, and neighbours may swap without
-  harm to a statistic. One that is older than the stream's newest results by more than `SLACK` is late: it is kept, and no monitor takes it.
-  The bar is the fifth newest time, so that a few times that lie in the future do not shut out what follows.
+- Results are taken in order of arrival: an alarm must not wait for a later result, and neighbours may swap without harm to a statistic; or,
+  where the laboratory asks for it, after a short wait in the order of their times (reorder.py). One that is older than the stream's newest
+  results by more than `SLACK`, or where they wait by anything, is late: it is kept, and no monitor takes it. The bar is the fifth newest
+  time, so that a few times that lie in the future do not shut out what follows.
 - Laboratory events reach the monitors that they are about (events.py); what comes, and when, says who is quiet (liveness.py, skew.py).
 """
 
@@ -34,6 +35,7 @@ from pbm.stages.live_batch import BatchWork, of_whom_is_kept
 from pbm.stages.liveness import Liveness
 from pbm.stages.monitor import StreamMonitor
 from pbm.stages.reading import Reader
+from pbm.stages.reorder import ReorderBuffer
 from pbm.stages.skew import ClockSkew
 
 SLACK = 90 * 60_000_000  # microseconds; more than the hour that clocks are put back
@@ -53,8 +55,11 @@ class LiveStream:
         """A result as it may be kept: sex and age only where a monitor that starts again must know them."""
         return of_whom_is_kept(result, result.sex if self._needs_sex else "", result.age if self._needs_age else "")
 
-    def is_late(self, time: int) -> bool:
-        """Whether a result comes too late for the monitors."""
+    def is_late(self, time: int, *, in_order: bool) -> bool:
+        """Whether a result comes too late for the monitors; `in_order` where results wait, so that they come in order or not at all."""
+        if in_order and self.newest:
+            # A time that lies far ahead of the others is a wrong one, and is no bar.
+            return time < max(one for one in self.newest if one <= self.newest[0] + SLACK)
         return len(self.newest) == NEWEST and time < self.newest[0] - SLACK
 
     def take(self, result: Result) -> list[Alarm]:
@@ -113,6 +118,7 @@ class Live:
                 )
         self.liveness, self.skew = Liveness(plan, lab.laboratory.zone), ClockSkew()
         self.desk = EventDesk(lab.events, self.streams)
+        self.reorder = ReorderBuffer(round(lab.feed.reorder_seconds * 1_000_000))
 
     @property
     def monitors(self) -> list[StreamMonitor]:
@@ -127,6 +133,7 @@ class Live:
         events: Iterable[LabEvent] = (),
         clock: str = "",
         notices: Sequence[Notice] = (),
+        waiting: str = "",
     ) -> list[StreamMonitor]:
         """Go on from the states that were kept; a monitor whose settings have changed begins afresh.
 
@@ -144,6 +151,8 @@ class Live:
             Position of the feed "clock": when everything was last heard.
         notices
             Those that are open.
+        waiting
+            Position of the feed "waiting": the results that wait for their order.
 
         Returns
         -------
@@ -154,6 +163,7 @@ class Live:
         self.desk.go_on(events)
         self.liveness.go_on(clock, notices)
         self.skew.go_on(notices)
+        self.reorder.go_on(waiting)
         going_on = []
         for name, stream in self.streams.items():
             stream.newest = list(newest.get(name, ()))
@@ -171,17 +181,28 @@ class Live:
         chunks
             Pieces of the feeds, in order of arrival; readings already made into results.
         earlier
-            What is kept of the same specimens; results taken here are added to it.
+            What is kept of the same specimens as in the chunks and as in `waited`; results taken here are added to it.
         """
         work = BatchWork(self, earlier)
         for chunk in chunks:
             work.take(chunk)
+        if work.last_arrival:
+            work.take_waiting(work.last_arrival)
         return work.batch()
 
-    def tick(self, now: int) -> Batch:
-        """Nothing came until `now`, by the clock of the computer: what there is to tell of that."""
+    def tick(self, now: int, earlier: Earlier) -> Batch:
+        """Nothing came until `now`, by the clock of the computer: what there is to tell of that, and the results that have waited."""
         self.liveness.tick(now)
-        return BatchWork(self, Earlier()).batch()
+        work = BatchWork(self, earlier)
+        work.take_waiting(now)
+        return work.batch()
+
+    def waited(self, chunks: Iterable[Chunk], now: int) -> list[Result]:
+        """The results that will have waited long enough when these chunks are taken, or by `now` where there are none."""
+        if not self.reorder.wait:
+            return []
+        last = max((chunk.arrived for chunk in chunks if chunk.arrived is not None), default=now)
+        return [one.result for one in self.reorder.over(last)]
 
     def alarms(self, result: Result) -> list[Alarm]:
         """Take a result that counts; the alarms that it opens."""

@@ -19,6 +19,7 @@ from pbm.io.store_reader import StoreReader
 from pbm.records.plan import Plan
 from pbm.records.result import Result
 from pbm.records.rhythm import Rhythm
+from pbm.stages.alarm_line import alarm_line
 from tests.commands.test_watch import FEED, csv, expected_alarms, kept, ndjson, pbm, wait_for_results
 from tests.commands.test_watch_events import running, stopped
 from tests.live_laboratory import (
@@ -374,6 +375,40 @@ def test_a_plan_with_an_unknown_stream_is_refused_with_words(folder: Path, name:
     done = once(folder)
     assert done.returncode == 2 and told in done.stderr and "Traceback" not in done.stderr
     assert not (folder / "watch.sqlite").exists(), "nothing was begun"
+
+
+# Results that wait for their order
+
+
+def test_results_that_wait_are_kept_through_a_stop_and_the_account_adds_up(
+    folder: Path, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Two runs of a feed whose neighbours have changed places, against one in order that does not wait."""
+    in_order = write_folder(tmp_path / "in-order", with_rhythms(every_line()))
+    text = (folder / "lab.toml").read_text()
+    (folder / "lab.toml").write_text(f"{text}\n[feed]\nreorder_seconds = 600\n")
+    clock = [START]
+
+    def now() -> int:
+        clock[0] += 1_000_000
+        return clock[0]
+
+    monkeypatch.setattr(watch_work, "now", now)
+    swapped = [one for n in range(0, 900, 6) for one in (*FEED[n + 3 : n + 6], *FEED[n : n + 3])]
+    first = pbm("watch", "--from", "-", "--lab", folder, stdin=ndjson(swapped[:450]))
+    assert "450 results still wait for their order; the next run takes them." in first.stderr
+    assert pbm("store", "check", "--lab", folder).returncode == 0
+    clock[0] += 3_600_000_000
+    monkeypatch.setattr(watch_work, "run", _then_idle(700))
+    second = pbm("watch", "--from", "-", "--lab", folder, stdin=ndjson(swapped[450:]))
+    assert "still wait" not in second.stderr
+    pbm("watch", "--from", "-", "--lab", in_order, stdin=ndjson(FEED))
+    assert kept(folder)["monitors"] == kept(in_order)["monitors"]
+    assert sorted(first.stdout.splitlines() + second.stdout.splitlines()) == sorted(
+        alarm_line(one, laboratory().analytes[one.stream.analyte], ZONE) for one in expected_alarms(FEED)
+    )
+    checked = pbm("store", "check", "--lab", folder)
+    assert checked.returncode == 0, checked.stdout
 
 
 # What one needs to see

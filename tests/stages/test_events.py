@@ -78,7 +78,7 @@ def test_an_event_reaches_the_monitors_of_its_streams_and_says_what_they_do(give
 def test_the_same_event_again_is_counted_as_a_duplicate() -> None:
     live = Live(LAB, every_line(), "")
     batch = take(live, event(), event(), event(time=START + MINUTE))
-    assert len(batch.events) == 2 and batch.tallies == {"duplicate": 1}
+    assert len(batch.events) == 2 and batch.tallies == {"event known already": 1}
     live.go_on([], {}, lambda *_: [], [one for _, one in batch.events])
     assert take(live, event()).events == []
 
