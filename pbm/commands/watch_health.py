@@ -7,6 +7,7 @@ health of the watch: whoever restarts a watch that is not healthy would not brin
 import json
 from collections import Counter
 from collections.abc import Sequence
+from contextlib import suppress
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from typing import Any
@@ -15,8 +16,9 @@ import typer
 
 from pbm.commands.clock import now
 from pbm.commands.folder import LabFolder
-from pbm.errors import FeedError, InputError
+from pbm.errors import FeedError, InputError, PlanError
 from pbm.io.lab_file import read_lab
+from pbm.io.plan_file import read_plan
 from pbm.io.store_place import store_place
 from pbm.io.store_reader import StoreReader
 from pbm.records.notice import Heartbeat, Notice
@@ -40,6 +42,8 @@ class Health:
         For a person.
     heartbeat, notices, states
         The sign of life, the notices that are open, and the state of every monitor; nothing where the store cannot be read.
+    off
+        Streams of plan.toml that have no monitor.
     """
 
     healthy: bool
@@ -47,6 +51,7 @@ class Health:
     heartbeat: Heartbeat | None = None
     notices: Sequence[Notice] = ()
     states: Sequence[tuple[Snapshot, State]] = ()
+    off: Sequence[str] = ()
 
 
 def tell_health(folder: LabFolder, *, json: bool) -> None:
@@ -66,8 +71,20 @@ def health_of(folder: LabFolder, at: int) -> Health:
         return Health(False, f"Not healthy: {error}")
     states = [(one, _state(one, notices)) for one in snapshots]
     ill = _illness(heartbeat, at)
-    told = f"Not healthy: {ill}" if ill else _in_words(heartbeat, at, states, notices)
-    return Health(not ill, told, heartbeat, notices, states)
+    off = _off(folder)
+    told = (
+        f"Not healthy: {ill}"
+        if ill
+        else _in_words(heartbeat, at, [*(state for _, state in states), *off.values()], notices)
+    )
+    return Health(not ill, told, heartbeat, notices, states, tuple(off))
+
+
+def _off(folder: LabFolder) -> dict[str, State]:
+    """Streams of the plan without a monitor; none where the plan cannot be read, which is no ill health of the watch."""
+    with suppress(PlanError):
+        return {name: "off" for name, stream in read_plan(folder.plan).streams.items() if not stream.monitors}
+    return {}
 
 
 def _state(one: Snapshot, notices: Sequence[Notice]) -> State:
@@ -95,11 +112,9 @@ def _illness(heartbeat: Heartbeat | None, at: int) -> str:
     return ""
 
 
-def _in_words(
-    heartbeat: Heartbeat | None, at: int, states: Sequence[tuple[Snapshot, State]], notices: Sequence[Notice]
-) -> str:
+def _in_words(heartbeat: Heartbeat | None, at: int, states: Sequence[State], notices: Sequence[Notice]) -> str:
     assert heartbeat is not None
-    counts = Counter(state for _, state in states)
+    counts = Counter(states)
     arrived = (
         "no result since it began"
         if heartbeat.last_arrival is None
@@ -126,6 +141,7 @@ def _as_json(health: Health) -> str:
         {"stream": str(s.stream), "monitor": s.monitor, "state": state, "admitted": s.admitted, "needed": s.needed}
         for s, state in health.states
     ]
+    given["monitors"] += [{"stream": name, "monitor": None, "state": "off"} for name in health.off]
     return json.dumps(given, ensure_ascii=False)
 
 

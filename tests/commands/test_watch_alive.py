@@ -217,6 +217,13 @@ def test_health_is_judged_by_the_age_of_the_last_sign_of_life(
     assert {one["state"] for one in given["monitors"]} <= {"armed", "warming", "open alarm", "quiet"}
 
 
+def test_a_stream_without_a_monitor_is_off(folder: Path) -> None:
+    write_plan(folder / "plan.toml", plan(sodium_line_1=[ewma()], tsh_line_1=[]))
+    once(folder)
+    given = json.loads(pbm("watch", "--health", "--json", "--lab", folder).stdout)
+    assert {one["stream"]: one["state"] for one in given["monitors"]}["tsh@line-1"] == "off"
+
+
 def test_a_watch_that_was_ended_is_known_to_be(folder: Path) -> None:
     once(folder)
     done = pbm("watch", "--health", "--lab", folder)
