@@ -107,21 +107,21 @@ class Store:
 
     def _find_runs(self, specimens: set[str], found: Earlier) -> None:
         names = self._names()
-        rows = self._connection.execute(RUNS, {"specimens": list(specimens)})
+        rows = RUNS.ask(self._connection, specimens=list(specimens))
         for stream, specimen, time, value, censor, left_out in rows:
             runs = found.runs.setdefault((names[stream], specimen), {})
             runs[time, value, censor] = left_out != RERUN
 
     def _find_unnamed(self, times: set[int], found: Earlier) -> None:
         names, sources = self._names(), {number: source for source, number in self._numbers.feeds.items()}
-        rows = self._connection.execute(UNNAMED_RESULTS, {"times": list(times)})
+        rows = UNNAMED_RESULTS.ask(self._connection, times=list(times))
         for stream, time, value, censor, feed, edition in rows:
             editions = found.unnamed.setdefault((names[stream], time, value, censor), set())
             editions.add(Edition(sources[feed], edition))
 
     def _find_visits(self, patients: set[str], found: Earlier) -> None:
         names = self._names()
-        for stream, patient, time in self._connection.execute(COUNTED_VISITS, {"patients": list(patients)}):
+        for stream, patient, time in COUNTED_VISITS.ask(self._connection, patients=list(patients)):
             found.visits.setdefault((names[stream], patient), []).append(time)
 
     def _names(self) -> dict[int, StreamName]:

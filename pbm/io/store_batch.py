@@ -8,6 +8,7 @@ from typing import Any
 from sqlalchemy import Connection, Table, bindparam, func, insert, select, update
 
 from pbm.io import store_audit, store_rows
+from pbm.io.store_prepared import Prepared
 from pbm.io.store_schema import (
     alarms,
     annotations,
@@ -139,7 +140,7 @@ class BatchRows:
     def _insert_messages(self, batch: Batch) -> None:
         if batch.messages:
             rows = [store_rows.message_row(one) | {"seq": self._last[results]} for one in batch.messages]
-            self._connection.execute(_INSERT[messages], rows)
+            _INSERT[messages].run(self._connection, rows)
 
     def _insert_events(self, given: Sequence[tuple[int, LabEvent]], before: int) -> None:
         self._insert_numbered(events, [store_rows.event_row(one) | {"seq": before + place} for place, one in given])
@@ -159,7 +160,7 @@ class BatchRows:
         for place, row in enumerate(rows):
             row[number] = first + place
         if rows:
-            self._connection.execute(_INSERT[table], rows)
+            _INSERT[table].run(self._connection, rows)
         self._last[table] += len(rows)
 
     def _number_streams(self, named: Iterable[StreamName]) -> None:
@@ -178,7 +179,7 @@ class BatchRows:
             count = delivered.get(source, 0)
             if source in self._feeds:
                 moved = {"of": self._feeds[source], "position": position, "count": count}
-                self._connection.execute(_MOVE_FEED, moved)
+                _MOVE_FEED.run(self._connection, [moved])
             else:
                 self._feeds[source] = len(self._feeds) + 1
                 row = {"id": self._feeds[source], "source": source, "position": position}
@@ -186,8 +187,7 @@ class BatchRows:
 
     def _add_to_tallies(self, counts: Mapping[str, int]) -> None:
         for reason, count in counts.items():
-            added = self._connection.execute(_ADD_TO_TALLY, {"of": reason, "more": count})
-            if added.rowcount == 0:
+            if _ADD_TO_TALLY.run(self._connection, [{"of": reason, "more": count}]) == 0:
                 self._connection.execute(insert(tallies).values(reason=reason, count=count))
 
     def _update_states(self, batch: Batch) -> None:
@@ -196,21 +196,22 @@ class BatchRows:
                 store_rows.snapshot_row(one) | {"of": self._streams[one.stream], "nth": one.monitor}
                 for one in batch.snapshots
             ]
-            self._connection.execute(_UPDATE_MONITOR, rows)
+            _UPDATE_MONITOR.run(self._connection, rows)
         if batch.newest:
             times = [{"of": self._streams[name], "newest": json.dumps(newest)} for name, newest in batch.newest.items()]
-            self._connection.execute(_UPDATE_STREAM, times)
+            _UPDATE_STREAM.run(self._connection, times)
 
 
-# Built once: building a statement costs more than running it.
-_INSERT = {table: insert(table) for table in (*_NUMBERED, messages)}
-_MOVE_FEED = (
+_INSERT = {table: Prepared(insert(table)) for table in (*_NUMBERED, messages)}
+_MOVE_FEED = Prepared(
     update(feeds)
     .where(feeds.c.id == bindparam("of"))
     .values(position=bindparam("position"), delivered=feeds.c.delivered + bindparam("count"))
 )
-_ADD_TO_TALLY = (
+_ADD_TO_TALLY = Prepared(
     update(tallies).where(tallies.c.reason == bindparam("of")).values(count=tallies.c.count + bindparam("more"))
 )
-_UPDATE_MONITOR = update(monitors).where(monitors.c.stream == bindparam("of"), monitors.c.monitor == bindparam("nth"))
-_UPDATE_STREAM = update(streams).where(streams.c.id == bindparam("of"))
+_UPDATE_MONITOR = Prepared(
+    update(monitors).where(monitors.c.stream == bindparam("of"), monitors.c.monitor == bindparam("nth"))
+)
+_UPDATE_STREAM = Prepared(update(streams).where(streams.c.id == bindparam("of")))

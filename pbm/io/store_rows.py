@@ -87,13 +87,10 @@ def codes_answered(connection: Connection, keys: Iterable[MessageKey]) -> dict[M
     numbers = {(one.sender, one.control_id) for one in keys}
     if not numbers:
         return {}
-    asked = {
-        "senders": list({sender for sender, _ in numbers}),
-        "control_ids": list({control_id for _, control_id in numbers}),
-    }
+    senders, control_ids = (list(set(one)) for one in zip(*numbers, strict=True))
     return {
         MessageKey(sender, control_id, sha256.hex()): code
-        for sender, control_id, sha256, code in connection.execute(ANSWERED, asked)
+        for sender, control_id, sha256, code in ANSWERED.ask(connection, senders=senders, control_ids=control_ids)
         if (sender, control_id) in numbers
     }
 
