@@ -27,7 +27,7 @@ def size_of(fault: FaultAppraisal) -> str:
 def course_of(fault: FaultAppraisal) -> str:
     """How a drift grows or which results a sporadic error hits; nothing for others."""
     over = f"over {words.whole(fault.over)} results" if fault.over is not None else ""
-    return over or (f"in {words.percent(fault.share)} of results" if fault.share is not None else "")
+    return over or (f"in {100 * fault.share:.3g}\u202f% of results" if fault.share is not None else "")
 
 
 def fault_in_words(fault: FaultAppraisal, analyte_unit: str) -> str:

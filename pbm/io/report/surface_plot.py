@@ -11,8 +11,9 @@ from markupsafe import Markup, escape
 from pbm.io.report import words
 from pbm.records.tuning import Search, Surface
 
-_ACROSS, _WIDTH, _HEIGHT = 3, 196, 150
-_LEFT, _RIGHT, _TOP, _BOTTOM = 34, 10, 24, 34
+_ACROSS, _WIDTH, _HEIGHT = 3, 196, 162
+_LEFT, _RIGHT, _TOP, _BOTTOM = 34, 10, 36, 34
+_NAME = 16  # where a panel's name begins
 _LETTER = 6  # width of a digit, with room to spare
 _TICKS = (1, 2, 2.5, 5, 10)
 
@@ -50,7 +51,8 @@ def _panel(search: Search, surface: Surface, top: float, place: int) -> Markup:
     best, worst = ([_height(one[i], top) for one in columns.values()] for i in (0, 1))
     alone = _height(search.schedule_alone, top)
     parts = [
-        _text(_LEFT, 14, _title(surface), "start", "name"),
+        _text(_NAME, 14, surface.statistic, "start", "name"),
+        _text(_NAME, 26, surface.more, "start"),
         *_scale(top),
         Markup('<path class="range" d="M{}L{}Z"/>').format(_points(xs, best), _points(xs[::-1], worst[::-1])),
         Markup('<path class="alone" d="M{:g} {:g}H{:g}"/>').format(_LEFT, alone, _LEFT + width),

@@ -21,6 +21,7 @@ from pbm.records.figures import Percentile, Until
 from pbm.records.judged import FaultAppraisal
 
 _LEAST, _STRIP = 0.9, 0.13
+_ROOM = 0.06  # share of the axis below the strip that the strip's own name needs
 Which = Callable[[FaultAppraisal], Until]
 
 
@@ -65,7 +66,8 @@ class _UntilScale:
         """Scale, ticks and strip."""
         axes.set_yscale("log")
         axes.set_ylim(_LEAST, self.ceiling)
-        ticks = [10.0**power for power in range(math.floor(math.log10(self.top)) + 1)]
+        highest = self.top * (_LEAST / self.top) ** _ROOM if self.used else self.top
+        ticks = [10.0**power for power in range(math.floor(math.log10(highest)) + 1)]
         names = [words.whole(round(tick)) for tick in ticks]
         if self.used:
             ticks.append(self.never)

@@ -12,7 +12,7 @@ def test_an_error_is_told_with_its_course() -> None:
     assert told["shift -0.5 TEa"] == "shift −0.5 TEa"
     assert told["noise x2"] == "noise 2 times the analytic SD"
     assert told["drift +1 TEa over 200 results"] == "drift +1 TEa over 200 results"
-    assert told["sporadic -1 TEa in 0.1 of results"] == "sporadic error −1 TEa in 10.0\u202f% of results"
+    assert told["sporadic -1 TEa in 0.1 of results"] == "sporadic error −1 TEa in 10\u202f% of results"
 
 
 def test_an_error_in_the_unit_of_the_analyte_says_so() -> None:

@@ -26,7 +26,7 @@ def test_errors_of_one_kind_and_unit_share_an_axis() -> None:
         ("shift", "TEa"),
         ("drift over 200 results", "TEa"),
         ("noise", "times the analytic SD"),
-        ("sporadic error in 10.0\u202f% of results", "TEa"),
+        ("sporadic error in 10\u202f% of results", "TEa"),
     ]
     assert groups[0].sizes == (-2, -1.5, -1, -0.75, -0.5, -0.25, 0.25, 0.5, 0.75, 1, 1.5, 2)
     assert groups[2].sizes == (1.5, 2, 3)

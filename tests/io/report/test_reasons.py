@@ -97,7 +97,7 @@ def test_each_statistic_has_a_panel_inside_the_figure() -> None:
     drawn = surface_plot(variants.search())
     assert drawn is not None
     assert drawn.count('class="name"') == drawn.count('class="best"') == 2
-    assert 'viewBox="0 0 392 150"' in drawn
+    assert 'viewBox="0 0 392 162"' in drawn
 
 
 def test_nothing_compared_draws_nothing() -> None:
