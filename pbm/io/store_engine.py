@@ -4,6 +4,7 @@ SQLite: a write-ahead log, every commit on the disk, every transaction begun IMM
 tables stand in the schema `watch`, and every commit waits for the server's disk.
 """
 
+import logging
 import os
 import sqlite3
 from pathlib import Path
@@ -90,6 +91,9 @@ def _postgresql(place: URL, *, to_write: bool) -> Engine:
         raise FeedError(
             f"The store {in_words(place)} is a PostgreSQL database, and psycopg is not installed. Install it: pip install 'pbm[postgres]'."
         ) from None
+
+    # It warns of what it raises as well; what is raised is told.
+    logging.getLogger("psycopg").addHandler(logging.NullHandler())
 
     @event.listens_for(engine, "connect")
     def set_up(connection: Any, _: Any) -> None:
