@@ -8,6 +8,7 @@ from sqlalchemy.exc import DBAPIError, OperationalError
 from pbm.errors import FeedError, StoreWaits
 from pbm.io.store_place import Place, in_words
 
+_SAFE = "What was kept before is safe."
 _KEPT = "What was kept before is safe, and the feed goes on from there when `pbm watch` is started again."
 _MAY_NOT_WRITE = "{place} or its folder may not be written. Give this user the right to write there."
 _LOCKED = "{place} has been locked by another program for too long. Close the program that writes to it."
@@ -37,7 +38,7 @@ _CAUSES = {
     "57P": "The server of {place} is shutting down or starting. Try again when it runs.",
     "XX00": "{place} is damaged: {said}. Restore a copy of the database or start afresh.",
 }
-_CAN_WAIT = (_FULL, _LOCKED)
+_CAN_WAIT = (_FULL, _LOCKED, _MAY_NOT_WRITE)
 
 
 @contextmanager
@@ -52,4 +53,6 @@ def told(place: Place) -> Iterator[None]:
         said = str(error.orig).partition("\n")[0].rstrip(".")
         cause = cause or (_UNREACHED if isinstance(error, OperationalError) and not name else None)
         words = (cause or "The store {place} cannot go on ({said}).").format(place=in_words(place), said=said)
-        raise (StoreWaits if cause in _CAN_WAIT else FeedError)(f"{words} {_KEPT}") from error
+        if cause in _CAN_WAIT:
+            raise StoreWaits(f"{words} {_SAFE}") from error
+        raise FeedError(f"{words} {_KEPT}") from error

@@ -209,3 +209,15 @@ def test_every_transaction_begins_immediate(path: Path) -> None:
         event.listen(store._connection.engine, "before_cursor_execute", lambda *given: said.append(given[2]))
         store.keep(batch())
     assert said[0] == "BEGIN IMMEDIATE"
+
+
+def test_a_store_that_turns_read_only_is_told_and_when_it_may_be_written_again_it_goes_on(path: Path) -> None:
+    with begun(path) as store:
+        store._connection.exec_driver_sql("PRAGMA query_only = 1")
+        store._connection.commit()
+        with pytest.raises(StoreWaits, match="may not be written"):
+            store.keep(batch())
+        store._connection.exec_driver_sql("PRAGMA query_only = 0")
+        store._connection.commit()
+        store.keep(batch())
+    assert len(tables(path)["results"]) == 3
