@@ -1,12 +1,14 @@
 """`pbm watch` and `pbm note`: laboratory events by every door, the same whichever it is, and through restarts."""
 
 import json
+import random
 import signal
 import sqlite3
 import subprocess
 import time
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
+from dataclasses import replace
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
@@ -15,8 +17,9 @@ import pytest
 
 from pbm.io.store_reader import StoreReader
 from pbm.records.result import Result
-from tests.commands.test_watch import FEED, RUN, csv, kept, ndjson, pbm, wait_for_results
-from tests.live_laboratory import every_line, write_folder
+from tests.commands.test_watch import FEED, RUN, csv, kept, ndjson, pbm, results_kept, wait_for_results
+from tests.contract.test_live_events import with_rhythms
+from tests.live_laboratory import MINUTE, every_line, two_lines, write_folder
 
 LOT_AT, CONTROL_AT, KEEP_AT = 300, 420, 600  # the places of results that are the first after each event
 
@@ -37,9 +40,9 @@ EVENTS = [
 ]
 
 
-def events_csv(some: Sequence[tuple[int, str, str, str, str]] = EVENTS) -> str:
+def events_csv(some: Sequence[tuple[int, str, str, str, str]] = EVENTS, feed: Sequence[Result] = FEED) -> str:
     lines = [
-        f"{iso(FEED[place].time)},{kind},{analyte},{analyser},{detail}"
+        f"{iso(feed[place].time)},{kind},{analyte},{analyser},{detail}"
         for place, kind, analyte, analyser, detail in some
     ]
     return "".join(f"{line}\n" for line in ["time,event,analyte,analyser,detail", *lines])
@@ -210,3 +213,51 @@ def test_an_event_file_that_grows_is_followed_with_the_feed(folder: Path) -> Non
         events.write_text(events_csv())
         wait_for_events(folder, 3)
         stopped(process)
+
+
+KILLS = 6
+
+
+@pytest.mark.slow
+def test_killed_at_random_points_events_notices_and_alarms_out_are_those_of_an_undisturbed_run(tmp_path: Path) -> None:
+    """Results and events grow while the watch is killed; each alarm goes out at least once, everything else exactly once."""
+    chance, feed = random.Random(4), with_pauses(two_lines(5, 24_000))
+    lots = [
+        (n, "reagent lot" if n % 2 else "control accepted", "sodium", f"line-{1 + n // 700 % 2}", f"n {n}")
+        for n in range(700, 24_000, 1401)
+    ]
+    folders = [write_folder(tmp_path / name, with_rhythms(every_line())) for name in ("killed", "whole")]
+    killed, whole = folders
+    for one in folders:
+        with (one / "lab.toml").open("a") as file:
+            file.write('\n[alarms]\nfile = "alarms.ndjson"\n')
+    (whole / "live.csv").write_text(csv(feed))
+    (whole / "events.csv").write_text(events_csv(lots, feed))
+    arguments = [("--from", one / "live.csv", "--events", one / "events.csv") for one in folders]
+    assert pbm("watch", *arguments[1], "--lab", whole, "--once").returncode == 0
+    inside = 0
+    for kill in range(KILLS):
+        until = len(feed) * (kill + 4) // (KILLS + 4)  # more than is read before the kill
+        # An event stands in its file before the results of its time do.
+        (killed / "events.csv").write_text(events_csv([lot for lot in lots if lot[0] <= until], feed))
+        (killed / "live.csv").write_text(csv(feed[:until]))
+        begun = results_kept(killed)
+        with running(killed, *arguments[0], "--once"):
+            wait_for_results(killed, begun + chance.randint(1, 1500))
+        inside += results_kept(killed) < until
+    assert inside > KILLS // 2, "the test must kill in the middle of the work"
+    (killed / "events.csv").write_text(events_csv(lots, feed))
+    (killed / "live.csv").write_text(csv(feed))
+    assert pbm("watch", *arguments[0], "--lab", killed, "--once").returncode == 0
+    assert kept(killed) == kept(whole)
+    assert kept_events(killed) == kept_events(whole)
+    readers = [StoreReader(one / "watch.sqlite") for one in folders]
+    notices = [sorted(reader.notices(10_000), key=str) for reader in readers]
+    assert notices[0] == notices[1] and {"quiet", "centre learned again"} <= {one.kind for one in notices[0]}
+    out = [[json.loads(line)["id"] for line in (one / "alarms.ndjson").read_text().splitlines()] for one in folders]
+    assert out[1] == sorted(set(out[0])) == list(range(1, len(kept(whole)["alarms"]) + 1))
+
+
+def with_pauses(feed: Sequence[Result]) -> list[Result]:
+    """Every thousand results nothing comes for an hour."""
+    return [replace(one, time=one.time + place // 1000 * 60 * MINUTE) for place, one in enumerate(feed)]
