@@ -78,6 +78,10 @@ class Estimate:
         """The difference, draw by draw."""
         return Estimate(self.value - other.value, self.drawn - other.drawn)
 
+    def swayed(self, by: float, normal: Floats, lowest: float, highest: float) -> "Estimate":
+        """With what one unit of something that draws of days do not show would change, times a normal deviate in each draw (b,)."""
+        return Estimate(self.value, np.clip(self.drawn + by * normal, lowest, highest))
+
     def times(self, factor: float) -> "Estimate":
         """A multiple."""
         return Estimate(factor * self.value, factor * self.drawn)

@@ -5,7 +5,7 @@ results are read until the monitor's first alarm or the horizon. The same onsets
 are not blurred by the draw.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -34,6 +34,8 @@ class Stretch:
         The analyte's error model and how it is reported.
     chance
         The random part of the faults, drawn once.
+    level
+        Bias that all results have in control already, in TEa: what if calibration or lot were others.
     """
 
     time: Integers
@@ -43,13 +45,25 @@ class Stretch:
     error: ErrorModel
     reporting: Reporting
     chance: Chance
+    level: float = 0.0
 
     def __len__(self) -> int:
         return len(self.time)
 
     def prepared(self, preparation: Preparation) -> Floats:
         """The results as prepared for a statistic, shape (n,)."""
-        return preparation.all(self.value, self.censor, self.mix)
+        return preparation.all(self.measured, self.censor, self.mix)
+
+    @property
+    def measured(self) -> Floats:
+        """The results at their level, shape (n,)."""
+        if self.level == 0:
+            return self.value
+        return np.where(self.censor == 0, self.value + self.level * self.error.tea(self.value), self.value)
+
+    def at_level(self, level: float) -> "Stretch":
+        """The same results at another level."""
+        return replace(self, level=level)
 
 
 def draw_onsets(first: int, last: int, count: int, random: np.random.Generator) -> Integers:
@@ -110,14 +124,15 @@ def trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats) -> Tri
     """Try a fault at the given onsets; `passed`, (k + 1,) or (r, k + 1), is the schedule's chance of passing the first i events."""
     if fault.kind == "drift":
         return _drift_trial(stretch, fault, onsets, passed)
-    error = stretch.error
-    values, censor = inflict(stretch.value, stretch.censor, fault, error, stretch.reporting, stretch.chance)
-    p = _chance_unreliable(stretch.value, fault, error, fault.bias(stretch.value, error))
+    error, x = stretch.error, stretch.value
+    values, censor = inflict(stretch.measured, stretch.censor, fault, error, stretch.reporting, stretch.chance)
+    p = _chance_unreliable(x, fault, error, fault.bias(x, error), stretch.level)
     return Trial(fault, onsets, values, censor, stretch.mix, onsets.at, onsets.end, exposure(onsets, p, passed))
 
 
-def _chance_unreliable(x: Floats, fault: Fault, error: ErrorModel, bias: Floats) -> Floats:
-    return fault.share_hit * chance_unreliable(error.tea(x), bias, error.sd(x), fault.multiple)
+def _chance_unreliable(x: Floats, fault: Fault, error: ErrorModel, bias: Floats, level: float) -> Floats:
+    tea = error.tea(x)
+    return fault.share_hit * chance_unreliable(tea, bias, error.sd(x), fault.multiple, level * tea)
 
 
 def _drift_trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats) -> Trial:
@@ -128,10 +143,12 @@ def _drift_trial(stretch: Stretch, fault: Fault, onsets: Onsets, passed: Floats)
     ages = (np.arange(len(rows)) - np.repeat(starts, onsets.length) + 1).astype(np.float64)
     growth, x = fault.growth(ages), stretch.value[rows]
     chance = Chance(stretch.chance.cell[rows], stretch.chance.normal[rows], stretch.chance.uniform[rows])
-    values, censor = inflict(x, stretch.censor[rows], fault, stretch.error, stretch.reporting, chance, growth)
+    values, censor = inflict(
+        stretch.measured[rows], stretch.censor[rows], fault, stretch.error, stretch.reporting, chance, growth
+    )
     p = np.zeros((len(onsets.at), int(onsets.length.max())))
     inside = np.arange(p.shape[1])[None, :] < onsets.length[:, None]
-    p[inside] = _chance_unreliable(x, fault, stretch.error, growth * fault.bias(x, stretch.error))
+    p[inside] = _chance_unreliable(x, fault, stretch.error, growth * fault.bias(x, stretch.error), stretch.level)
     return Trial(fault, onsets, values, censor, stretch.mix.rows(rows), starts, ends, exposure(onsets, p, passed))
 
 

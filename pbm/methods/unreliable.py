@@ -59,7 +59,9 @@ def chance_beyond(tea: Floats, bias: Floats, sd: Floats) -> Floats:
     return beyond
 
 
-def chance_unreliable(tea: Floats, bias: Floats, sd: Floats, multiple: float = 1.0) -> Floats:
+def chance_unreliable(
+    tea: Floats, bias: Floats, sd: Floats, multiple: float = 1.0, level: Floats | float = 0.0
+) -> Floats:
     """p(x, f): the chance beyond TEa under the fault less the chance in control, elementwise.
 
     Parameters
@@ -68,5 +70,7 @@ def chance_unreliable(tea: Floats, bias: Floats, sd: Floats, multiple: float = 1
         Of each result, in the same unit.
     multiple
         Factor by which the fault multiplies the analytic SD.
+    level
+        Bias that is there in control as well.
     """
-    return chance_beyond(tea, bias, multiple * sd) - chance_beyond(tea, np.zeros_like(bias), sd)
+    return chance_beyond(tea, bias + level, multiple * sd) - chance_beyond(tea, np.zeros_like(bias) + level, sd)

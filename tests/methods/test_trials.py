@@ -183,3 +183,27 @@ def test_the_stop_comes_after_the_response_lag(
     for r in range(len(at)):
         assert stop[r] == stop_by_counting(int(to_alarm[r]), int(at[r]), int(end[r]), size, unit, time)
         assert alarm[r] == (to_alarm[r] or end[r] - at[r])
+
+
+@pytest.mark.parametrize("fault", FAULTS, ids=str)
+def test_at_another_level_results_are_shifted_in_control_already(fault: Fault) -> None:
+    """Under a shift of 1 TEa at a level of 0.3 TEa they are what they are under a shift of 1.3 TEa, and unreliable less what they were."""
+    history = stretch(600)
+    higher, followed = history.at_level(0.3), onsets(history, [100], length=200)
+    passed = np.ones(followed.edges.shape[1] + 1)
+    uncensored = history.censor == 0
+    np.testing.assert_allclose(
+        higher.measured[uncensored], (history.value + 0.3 * history.error.tea(history.value))[uncensored]
+    )
+    np.testing.assert_array_equal(higher.measured[~uncensored], history.value[~uncensored])
+    one, other = (
+        trial(given, Fault("shift", size, "TEa"), followed, passed) for given, size in ((higher, 1.0), (history, 1.3))
+    )
+    np.testing.assert_allclose(one.values, other.values, atol=0.1 + 1e-9)
+    in_control = trial(history, Fault("shift", 0.3, "TEa"), followed, passed)
+    stop = followed.length
+    expected = other.exposure.unreliable(stop) - in_control.exposure.unreliable(stop)
+    assert one.exposure.unreliable(stop) == pytest.approx(expected)
+    assert trial(history.at_level(0.0), fault, followed, passed).exposure.unreliable(stop) == pytest.approx(
+        trial(history, fault, followed, passed).exposure.unreliable(stop)
+    )

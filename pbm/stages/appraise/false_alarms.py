@@ -13,7 +13,7 @@ from pbm.records.appraisal import Trace
 from pbm.records.figures import Figure
 from pbm.records.judged import FalseAlarms, NoFault
 from pbm.stages.appraise.ground import DRAWS, Ground
-from pbm.stages.appraise.watch import Running, Watch
+from pbm.stages.appraise.watch import Level, Running, alarms_by
 from pbm.stages.appraise.written import figure, rounded
 
 MONTH = 30
@@ -55,15 +55,13 @@ def _share_of_time(ground: Ground, in_alarm: Mask) -> Figure:
     return figure(days.ratio(lasting * in_alarm, lasting))
 
 
-def no_fault(ground: Ground, watch: Watch) -> NoFault:
+def no_fault(ground: Ground, levels: Sequence[Level]) -> NoFault:
     """The chance of an alarm at the same onsets where nothing is wrong."""
-    alarm = watch.without_fault(ground.onsets)
-    found = alarm > 0
-    by_first = found & (alarm <= ground.onsets.to_first_event)
-    return NoFault(
-        by_first_event=figure(ground.days.mean(by_first.astype(np.float64))),
-        within_horizon=figure(ground.days.mean(found.astype(np.float64))),
+    first, horizon = (
+        ground.mean([alarms_by(level.without_fault, by) for level in levels], highest=1.0)
+        for by in (ground.onsets.to_first_event, ground.onsets.length)
     )
+    return NoFault(by_first_event=figure(first), within_horizon=figure(horizon))
 
 
 def trace_of(ground: Ground, path: Floats) -> Trace:

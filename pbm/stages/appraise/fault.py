@@ -1,10 +1,12 @@
 """One fault at every onset: what finds it, when, and what it costs until then, with the schedule alone and with the monitors beside it."""
 
+import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
-from pbm.methods.day_bootstrap import DayBootstrap, Estimate, Mask, average
+from pbm.methods.day_bootstrap import Estimate, Mask, average
 from pbm.methods.detection import Detection, by_both, by_monitor, by_schedule
 from pbm.methods.faults import Fault
 from pbm.methods.jit import Floats, Integers
@@ -12,12 +14,14 @@ from pbm.methods.trials import Trial, alarm_and_stop, trial
 from pbm.records.figures import Until, UntilWays, Ways
 from pbm.records.judged import FaultAppraisal, OnsetTime, OnsetWhen
 from pbm.stages.appraise.ground import Ground
-from pbm.stages.appraise.watch import Watch
+from pbm.stages.appraise.watch import Level, alarms_by
 from pbm.stages.appraise.written import alone_and_with, figure, percentile, rounded
 
 SHARES = (0.05, 0.5, 0.95)
 PARTS: tuple[OnsetWhen, ...] = ("day", "night", "weekend")
+Z = 1.6449  # of a 90 % interval
 Three = tuple[Estimate, Estimate, Estimate]  # the schedule alone, the monitors alone, both
+Detections = tuple[Detection, Detection, Detection]
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,6 +46,41 @@ class PartCosts:
 
 
 @dataclass(frozen=True, slots=True)
+class Run:
+    """A fault at every onset, at one level of the analyser; each array (r,).
+
+    Attributes
+    ----------
+    tried
+        The fault tried.
+    to_alarm
+        With which affected result the alarm comes; 0 where there is none.
+    alarm, stop
+        The same, the horizon where there is none; and how many are reported until the stop.
+    results, hours
+        Results and hours until detection by the schedule alone, by the monitors alone, by both.
+    """
+
+    tried: Trial
+    to_alarm: Integers
+    alarm: Integers
+    stop: Integers
+    results: Detections
+    hours: Detections
+
+    @property
+    def costs(self) -> tuple[Floats, Floats, Floats, Floats]:
+        """Unreliable results without and with the monitors, and those of them that are final, at each onset."""
+        exposure, length = self.tried.exposure, self.tried.onsets.length
+        return (
+            exposure.unreliable(length),
+            exposure.unreliable(self.stop),
+            exposure.unreliable_final(length),
+            exposure.unreliable_final(self.alarm),
+        )
+
+
+@dataclass(frozen=True, slots=True)
 class FaultFound:
     """A fault tried, with the estimates from which averages over the faults are made.
 
@@ -49,10 +88,8 @@ class FaultFound:
     ----------
     fault, weight
         The fault, and its weight in averages.
-    tried
-        At every onset.
-    alarm, stop : (r,)
-        With which affected result the alarm comes, and how many are reported until the stop; the horizon where there is none.
+    runs
+        At the level of the held-out days, and where it wanders below and above it.
     costs, parts
         The estimates.
     beyond_false_alarms
@@ -63,49 +100,23 @@ class FaultFound:
 
     fault: Fault
     weight: float
-    tried: Trial
-    to_alarm: Integers
-    alarm: Integers
-    stop: Integers
+    runs: list[Run]
     costs: Costs
     parts: dict[OnsetWhen, PartCosts]
     beyond_false_alarms: Estimate
     record: FaultAppraisal
 
 
-@dataclass(frozen=True, slots=True)
-class _Ways:
-    """Results and hours until detection: by the schedule alone, by the monitors alone, by both."""
-
-    results: tuple[Detection, Detection, Detection]
-    hours: tuple[Detection, Detection, Detection]
-
-    @classmethod
-    def of(cls, ground: Ground, passed: Floats, to_alarm: Integers) -> "_Ways":
-        onsets = ground.onsets
-        results = by_schedule(onsets, passed), by_monitor(onsets, to_alarm), by_both(onsets, passed, to_alarm)
-        events, alarm = ground.event_hours, ground.hours_until(to_alarm)[:, None]
-        horizon = ground.hours_until(onsets.length)
-        points = events, alarm, np.column_stack([events, alarm])
-        timed = [way.timed(each, horizon) for way, each in zip(results, points, strict=True)]
-        return cls(results, (timed[0], timed[1], timed[2]))
-
-
-def appraise_fault(ground: Ground, watch: Watch, fault: Fault, weight: float, without_fault: Integers) -> FaultFound:
-    """Try a fault; `without_fault` (r,) is when the alarm comes at the same onsets where nothing is wrong, 0 for never."""
-    around, onsets, days = ground.around, ground.onsets, ground.days
-    survival = around.chance_of_passing(fault, onsets)
-    tried = trial(ground.stretch, fault, onsets, survival.passed)
-    to_alarm = watch.results_to_alarm(tried)
-    alarm, stop = _stopped(ground, to_alarm)
-    ways = _Ways.of(ground, survival.passed, to_alarm)
-    exposure = tried.exposure
-    alone, beside = exposure.unreliable(onsets.length), exposure.unreliable(stop)
-    final_alone, final_beside = exposure.unreliable_final(onsets.length), exposure.unreliable_final(alarm)
-    blind = exposure.unreliable(_stopped(ground, without_fault)[1])
-    costs = Costs(days.mean(alone), days.mean(beside), days.mean(final_alone), days.mean(final_beside))
-    beyond = days.mean(np.where(np.isclose(blind, beside, rtol=1e-9, atol=0.0), 0.0, blind - beside))
-    parts = {part: _part(ground, part, ways, alone, beside) for part in PARTS if part in ground.parts}
+def appraise_fault(ground: Ground, levels: list[Level], fault: Fault, weight: float) -> FaultFound:
+    """Try a fault at every onset and each level."""
+    survival = ground.around.chance_of_passing(fault, ground.onsets)
+    runs = [_run(ground, level, fault, survival.passed) for level in levels]
+    costs = [run.costs for run in runs]
+    alone, beside, final_alone, final_beside = (ground.mean([one[i] for one in costs]) for i in range(4))
+    correctable = [ground.mean([one[i] - one[i + 2] for one in costs]) for i in range(2)]
+    saved = [_saved(ground, run, level) for run, level in zip(runs, levels, strict=True)]
+    beyond = ground.mean(saved, lowest=-math.inf)
+    parts = {part: _part(ground, part, runs, costs) for part in PARTS if part in ground.parts}
     record = FaultAppraisal(
         label=str(fault),
         kind=fault.kind,
@@ -116,19 +127,38 @@ def appraise_fault(ground: Ground, watch: Watch, fault: Fault, weight: float, wi
         share=fault.share if fault.kind == "sporadic" else None,
         weight=weight,
         shift=_typical_shift(ground, fault),
-        by_first_event=_three_figures(_by_first(ground, ways)),
-        never=_three_figures(_means(days, [way.never for way in ways.results])),
-        until=_until_ways(days, ways.results),
-        until_hours=_until_ways(days, ways.hours),
-        unreliable=alone_and_with(costs.alone, costs.beside),
-        unreliable_final=alone_and_with(costs.final_alone, costs.final_beside),
-        unreliable_correctable=alone_and_with(days.mean(alone - final_alone), days.mean(beside - final_beside)),
+        by_first_event=_three_figures(_by_first(ground, runs)),
+        never=_three_figures(_three(ground, [[way.never for way in run.results] for run in runs], highest=1.0)),
+        until=_until_ways(ground, [run.results for run in runs]),
+        until_hours=_until_ways(ground, [run.hours for run in runs]),
+        unreliable=alone_and_with(alone, beside),
+        unreliable_final=alone_and_with(final_alone, final_beside),
+        unreliable_correctable=alone_and_with(correctable[0], correctable[1]),
         beyond_false_alarms=figure(beyond),
-        no_more_than_false_alarms=_no_more_than(ground, to_alarm, without_fault),
+        no_more_than_false_alarms=_no_more_than(ground, runs, levels),
         by_onset=tuple(onset_time(ground, part, found) for part, found in parts.items()),
         schedule_error=rounded(float(survival.error.max())),
     )
-    return FaultFound(fault, weight, tried, to_alarm, alarm, stop, costs, parts, beyond, record)
+    return FaultFound(fault, weight, runs, Costs(alone, beside, final_alone, final_beside), parts, beyond, record)
+
+
+def _run(ground: Ground, level: Level, fault: Fault, passed: Floats) -> Run:
+    onsets = ground.onsets
+    tried = trial(level.stretch, fault, onsets, passed)
+    to_alarm = level.watch.results_to_alarm(tried)
+    alarm, stop = _stopped(ground, to_alarm)
+    results = by_schedule(onsets, passed), by_monitor(onsets, to_alarm), by_both(onsets, passed, to_alarm)
+    events, at_alarm = ground.event_hours, ground.hours_until(to_alarm)[:, None]
+    points, horizon = (events, at_alarm, np.column_stack([events, at_alarm])), ground.hours_until(onsets.length)
+    schedule, monitor, both = (way.timed(each, horizon) for way, each in zip(results, points, strict=True))
+    return Run(tried, to_alarm, alarm, stop, results, (schedule, monitor, both))
+
+
+def _saved(ground: Ground, run: Run, level: Level) -> Floats:
+    """Unreliable results saved at each onset beyond those that the alarms without a fault save."""
+    blind = run.tried.exposure.unreliable(_stopped(ground, level.without_fault)[1])
+    beside = run.tried.exposure.unreliable(run.stop)
+    return np.where(np.isclose(blind, beside, rtol=1e-9, atol=0.0), 0.0, blind - beside)
 
 
 def _stopped(ground: Ground, to_alarm: Integers) -> tuple[Integers, Integers]:
@@ -142,51 +172,71 @@ def _typical_shift(ground: Ground, fault: Fault) -> float | None:
     return rounded(float(fault.bias(np.median(ground.stretch.value, keepdims=True), ground.stretch.error)[0]))
 
 
-def _means(days: DayBootstrap, each: list[Floats], within: Mask | None = None) -> Three:
-    schedule, monitor, both = (days.mean(one, within) for one in each)
+def _three(
+    ground: Ground, levels: Sequence[Sequence[Floats]], within: Mask | None = None, highest: float = math.inf
+) -> Three:
+    """Means of three figures, by the schedule alone, the monitors alone and both, given at each level."""
+    schedule, monitor, both = (ground.mean([one[i] for one in levels], within, highest=highest) for i in range(3))
     return schedule, monitor, both
 
 
-def _by_first(ground: Ground, ways: _Ways, within: Mask | None = None) -> Three:
-    return _means(ground.days, [way.by(ground.onsets.to_first_event) for way in ways.results], within)
+def _by_first(ground: Ground, runs: list[Run], within: Mask | None = None) -> Three:
+    first = ground.onsets.to_first_event
+    return _three(ground, [[way.by(first) for way in run.results] for run in runs], within, highest=1.0)
 
 
 def _three_figures(found: Three) -> Ways:
     return Ways(schedule=figure(found[0]), monitor=figure(found[1]), both=figure(found[2]))
 
 
-def _until_ways(days: DayBootstrap, found: tuple[Detection, Detection, Detection]) -> UntilWays:
-    schedule, monitor, both = (_until(days, way) for way in found)
+def _until_ways(ground: Ground, levels: list[Detections]) -> UntilWays:
+    schedule, monitor, both = (_until(ground, [one[i] for one in levels]) for i in range(3))
     return UntilWays(schedule=schedule, monitor=monitor, both=both)
 
 
-def _until(days: DayBootstrap, found: Detection) -> Until:
-    p5, median, p95 = (percentile(one) for one in days.percentiles(found, SHARES))
-    return Until(mean=figure(days.mean(found.mean_each())), p5=p5, median=median, p95=p95)
+def _until(ground: Ground, levels: list[Detection]) -> Until:
+    told = zip(SHARES, ground.days.percentiles(levels[0], SHARES), strict=True)
+    p5, median, p95 = (percentile(_swayed(found, [one.quantile(share) for one in levels[1:]])) for share, found in told)
+    return Until(mean=figure(ground.mean([one.mean_each() for one in levels])), p5=p5, median=median, p95=p95)
 
 
-def _no_more_than(ground: Ground, to_alarm: Integers, without_fault: Integers) -> bool:
+def _swayed(found: tuple[float | None, ...], others: list[float | None]) -> tuple[float | None, ...]:
+    """A percentile whose interval counts the wandering of the level as well, as far as it lies within the horizon at each level."""
+    value, *ends = found
+    known = [one for one in others if one is not None]
+    if value is None or len(known) < 2:
+        return found
+    half = Z * abs(known[1] - known[0]) / 2
+    low, high = (None if end is None else math.hypot(end - value, half) for end in ends)
+    return value, None if low is None else max(value - low, 0.0), None if high is None else value + high
+
+
+def _no_more_than(ground: Ground, runs: list[Run], levels: list[Level]) -> bool:
     """Neither by the first event nor within the horizon is the chance of an alarm above that without a fault, over its interval."""
-    first = ground.onsets.to_first_event
     more = [
-        ground.days.mean(_alarms_by(to_alarm, by) - _alarms_by(without_fault, by))
-        for by in (first, ground.onsets.length)
+        ground.mean(
+            [
+                alarms_by(run.to_alarm, by) - alarms_by(one.without_fault, by)
+                for run, one in zip(runs, levels, strict=True)
+            ],
+            lowest=-1.0,
+            highest=1.0,
+        )
+        for by in (ground.onsets.to_first_event, ground.onsets.length)
     ]
     return all(one.interval[0] <= 0 for one in more)
 
 
-def _alarms_by(to_alarm: Integers, results: Integers) -> Floats:
-    return ((to_alarm > 0) & (to_alarm <= results)).astype(np.float64)
-
-
-def _part(ground: Ground, part: OnsetWhen, ways: _Ways, alone: Floats, beside: Floats) -> PartCosts:
-    which, days = ground.parts[part].onsets, ground.days
+def _part(
+    ground: Ground, part: OnsetWhen, runs: list[Run], costs: list[tuple[Floats, Floats, Floats, Floats]]
+) -> PartCosts:
+    which = ground.parts[part].onsets
     return PartCosts(
-        by_first=_by_first(ground, ways, which),
-        until=_means(days, [way.mean_each() for way in ways.results], which),
-        hours=_means(days, [way.mean_each() for way in ways.hours], which),
-        alone=days.mean(alone, which),
-        beside=days.mean(beside, which),
+        by_first=_by_first(ground, runs, which),
+        until=_three(ground, [[way.mean_each() for way in run.results] for run in runs], which),
+        hours=_three(ground, [[way.mean_each() for way in run.hours] for run in runs], which),
+        alone=ground.mean([one[0] for one in costs], which),
+        beside=ground.mean([one[1] for one in costs], which),
     )
 
 

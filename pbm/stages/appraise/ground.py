@@ -1,11 +1,13 @@
 """The held-out days of a stream as every figure meets them: onsets, the days and hours they fall on, control events, draws of days."""
 
+import math
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from pbm.methods.clock_time import MICROSECONDS_PER_DAY, MICROSECONDS_PER_HOUR, local_microseconds
-from pbm.methods.day_bootstrap import DayBootstrap, Mask
+from pbm.methods.day_bootstrap import DayBootstrap, Estimate, Mask
 from pbm.methods.expected import Onsets, follow, instants_of_events
 from pbm.methods.jit import Floats, Integers
 from pbm.methods.part_of_week import hours_of_parts, parts_of_week
@@ -42,6 +44,8 @@ class Ground:
         Hours from each onset to the control events after it.
     parts
         The parts of the week that have onsets.
+    sway : (b,)
+        A normal deviate for each draw: how far the level lies from that of the held-out days, in SD of its wandering.
     """
 
     around: Surroundings
@@ -51,6 +55,7 @@ class Ground:
     days: DayBootstrap
     event_hours: Floats
     parts: dict[str, Part]
+    sway: Floats
 
     @classmethod
     def of(cls, around: Surroundings, history: StreamHistory, split: Split) -> "Ground":
@@ -60,12 +65,24 @@ class Ground:
         days = DayBootstrap.of(split.days[onsets.at], DRAWS, around.random("bootstrap"))
         events = instants_of_events(onsets, around.event_positions(history.time), around.event_times(history.time))
         hours = (events - history.time[onsets.at][:, None]) / MICROSECONDS_PER_HOUR
-        return cls(around, stretch, split, onsets, days, hours, _parts(around, history.time, split, onsets))
+        parts = _parts(around, history.time, split, onsets)
+        sway = around.random("level").standard_normal(DRAWS)
+        return cls(around, stretch, split, onsets, days, hours, parts, sway)
 
     @property
     def held_out(self) -> slice:
         """The held-out results."""
         return slice(self.split.at, len(self.stretch))
+
+    def mean(
+        self, levels: Sequence[Floats], within: Mask | None = None, lowest: float = 0.0, highest: float = math.inf
+    ) -> Estimate:
+        """Mean of a figure known at each onset (r,): at the level of the held-out days, and where given one SD of it below and above."""
+        found = self.days.mean(levels[0], within)
+        if len(levels) == 1:
+            return found
+        below, above = (float(each[... if within is None else within].mean()) for each in levels[1:])
+        return found.swayed((above - below) / 2, self.sway, lowest, highest)
 
     def hours_until(self, count: Integers) -> Floats:
         """Hours from each onset to its affected result `count` (r,), shape (r,)."""

@@ -237,7 +237,7 @@ def _nearest_to_tea(found: list[FaultFound]) -> list[FaultFound]:
 
 
 def _tried_at(ground: Ground, found: FaultFound, few: Onsets, which: Integers) -> tuple[Trial, Floats]:
-    passed = found.tried.exposure.passed[which]
+    passed = found.runs[0].tried.exposure.passed[which]
     return trial(ground.stretch, found.fault, few, passed), passed
 
 

@@ -93,12 +93,13 @@ def _passed(fault: Fault, schedule: _Schedule, longest: Floats | None) -> Floats
 
 
 def _under(ground: Ground, found: FaultFound, schedule: _Schedule, passed: Floats) -> Costs:
-    exposure, days = found.tried.exposure.under(schedule.onsets, passed), ground.days
+    length = schedule.onsets.length
+    exposed = [(run, run.tried.exposure.under(schedule.onsets, passed)) for run in found.runs]
     return Costs(
-        days.mean(exposure.unreliable(schedule.onsets.length)),
-        days.mean(exposure.unreliable(found.stop)),
-        days.mean(exposure.unreliable_final(schedule.onsets.length)),
-        days.mean(exposure.unreliable_final(found.alarm)),
+        ground.mean([one.unreliable(length) for _, one in exposed]),
+        ground.mean([one.unreliable(run.stop) for run, one in exposed]),
+        ground.mean([one.unreliable_final(length) for _, one in exposed]),
+        ground.mean([one.unreliable_final(run.alarm) for run, one in exposed]),
     )
 
 

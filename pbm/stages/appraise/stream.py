@@ -25,7 +25,7 @@ from pbm.stages.appraise.ground import Ground
 from pbm.stages.appraise.peers import peers_of
 from pbm.stages.appraise.sentences import SPACING_CAUTION, objections, onset_times_in_words, reason_in_words
 from pbm.stages.appraise.spacing import spacing_table
-from pbm.stages.appraise.watch import Running, Watch
+from pbm.stages.appraise.watch import Level, Running, levels_of
 from pbm.stages.appraise.written import alone_and_with, rounded, worst_case
 from pbm.stages.from_plan import faults_of
 from pbm.stages.surroundings import Surroundings
@@ -101,9 +101,10 @@ def _described(around: Surroundings, plan: StreamPlan, days: tuple[int, int]) ->
 
 def _judged(ground: Ground, plan: StreamPlan, peers: PeersTried) -> StreamAppraisal:
     around, split, time = ground.around, ground.split, ground.stretch.time
-    watch = Watch(tuple(Running.of(one, ground.stretch, ground.onsets) for one in plan.monitors))
+    levels = levels_of(ground, plan.monitors)
+    watch = levels[0].watch
     monitors = tuple(_monitor(ground, one, running) for one, running in zip(plan.monitors, watch.monitors, strict=True))
-    judged, gain = _figures(ground, plan, watch, monitors, peers)
+    judged, gain = _figures(ground, plan, levels, monitors, peers)
     found = _described(around, plan, (int(split.days[split.at]), int(split.days[-1]))).model_copy(
         update={
             "held_out_results": len(time) - split.at,
@@ -150,13 +151,14 @@ def _in_unit(ground: Ground, running: Running, s: float) -> float:
 
 
 def _figures(
-    ground: Ground, plan: StreamPlan, watch: Watch, monitors: tuple[MonitorAppraisal, ...], peers: PeersTried
+    ground: Ground,
+    plan: StreamPlan,
+    levels: list[Level],
+    monitors: tuple[MonitorAppraisal, ...],
+    peers: PeersTried,
 ) -> tuple[Judged, Gain]:
-    without_fault = watch.without_fault(ground.onsets)
-    found = [
-        appraise_fault(ground, watch, fault, weight, without_fault)
-        for fault, weight in faults_of(ground.around.analyte)
-    ]
+    watch = levels[0].watch
+    found = [appraise_fault(ground, levels, fault, weight) for fault, weight in faults_of(ground.around.analyte)]
     labels, weights = [one.record.label for one in found], [one.weight for one in found]
     alone, beside = [one.costs.alone for one in found], [one.costs.beside for one in found]
     final_alone, final_beside = [one.costs.final_alone for one in found], [one.costs.final_beside for one in found]
@@ -170,7 +172,7 @@ def _figures(
     parts = _parts(ground, found)
     return Judged(
         false_alarms=together,
-        no_fault=no_fault(ground, watch) if monitors else None,
+        no_fault=no_fault(ground, levels) if monitors else None,
         faults=tuple(one.record for one in found),
         unreliable=unreliable,
         unreliable_final=alone_and_with(average(final_alone, weights), average(final_beside, weights)),

@@ -289,7 +289,8 @@ def test_a_stream_without_a_monitor_is_told_with_its_reason() -> None:
     assert judged(found).false_alarms is None and judged(found).peers is None and judged(found).objections == ()
     with_one = faults_of(appraised())
     for label, fault in faults_of(found).items():
-        assert fault.unreliable.alone == fault.unreliable.with_monitor == with_one[label].unreliable.alone
+        assert fault.unreliable.alone == fault.unreliable.with_monitor
+        assert fault.unreliable.alone.value == with_one[label].unreliable.alone.value
         assert fault.by_first_event.both == fault.by_first_event.schedule and fault.never.monitor.value == 1
 
 
