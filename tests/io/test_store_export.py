@@ -2,6 +2,7 @@
 
 import csv
 import json
+import tracemalloc
 from collections.abc import Iterator
 from dataclasses import replace
 from pathlib import Path
@@ -93,6 +94,20 @@ def test_rows_are_read_some_at_a_time(place: Place, tmp_path: Path, monkeypatch:
         counts = {path.stem: count for path, count in export_store(place, tmp_path, as_json=False)}
     assert counts["results"] == 50
     assert [int(row["seq"]) for row in read(tmp_path / "results.csv")] == list(range(1, 51))
+
+
+def test_memory_does_not_grow_with_the_store(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(store_export, "_STEP", 500)
+    peaks = []
+    with begun(path := tmp_path / "watch.sqlite") as store:
+        for n, count in enumerate((2_000, 18_000)):
+            store.keep(batch(results=results_kept(100_000 * n, count), alarms=[], set_aside=[]))
+            tracemalloc.start()
+            list(export_store(path, tmp_path, as_json=False))
+            peaks.append(tracemalloc.get_traced_memory()[1])
+            tracemalloc.stop()
+    assert len(read(tmp_path / "results.csv")) == 20_000
+    assert peaks[1] < 1.5 * peaks[0]
 
 
 def test_an_export_that_breaks_off_leaves_the_older_files_whole(

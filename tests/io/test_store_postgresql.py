@@ -1,6 +1,7 @@
 """The store in a PostgreSQL database: what is refused, what is told, and that no password is."""
 
 import shutil
+import sys
 from pathlib import Path
 
 import psycopg
@@ -43,6 +44,13 @@ def test_a_server_that_cannot_be_reached_is_told_without_the_password(opened: ty
     with pytest.raises(FeedError, match="cannot be reached") as told:
         opened(place)
     assert "tern-secret" not in str(told.value) and "\n" not in str(told.value)
+
+
+@pytest.mark.parametrize("opened", [Store, StoreReader])
+def test_without_its_library_it_says_what_to_install(opened: type, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setitem(sys.modules, "psycopg", None)
+    with pytest.raises(FeedError, match=r"Install it: pip install 'pbm\[postgres\]'"):
+        opened(store_place("postgresql://watcher@/laboratory", Path()))
 
 
 def test_a_database_that_is_not_there_is_told(postgresql_server: Server) -> None:
