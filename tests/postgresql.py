@@ -63,7 +63,12 @@ def why_not() -> str:
 def binaries() -> Path | None:
     """The folder of the server's programs."""
     found = [path.parent for place in _PLACES for path in Path(place).glob("**/bin/initdb")]
-    return max(found, default=None)
+    return max(found, key=_version, default=None)
+
+
+def _version(programs: Path) -> float:
+    version = programs.parent.name
+    return float(version) if version.replace(".", "", 1).isdigit() else 0.0
 
 
 @contextmanager
