@@ -120,6 +120,7 @@ class _Work:
     removal: Removal
     options: Options
     _in_hand: tuple[Sequence[Chunk], Sequence[Chunk], Batch] | None = None
+    _noted: Chunk | None = None
     _waits_since: float | None = None
 
     def __post_init__(self) -> None:
@@ -186,19 +187,20 @@ class _Work:
             return
         if plan:
             self.plan, self.account.live = plan, plan.live
+            self.trial = OnTrial(plan.plan, self.store) if self.trial else None
             self.screen.say(f"New plan in force: {plan.opening}")
 
     def _taken(self, chunks: Sequence[Chunk]) -> tuple[Sequence[Chunk], Batch]:
         """All that is taken now, and the batch that it makes; the monitors have moved once it is made, so it is made once."""
         if self._in_hand is None or self._in_hand[0] is not chunks:
             given = [*chunks, *self._notes()]
-            self._in_hand = (chunks, given, self._made(given))
+            self._in_hand, self._noted = (chunks, given, self._made(given)), None
         return self._in_hand[1:]
 
     def _notes(self) -> list[Chunk]:
-        """What people have noted, if anything is new."""
-        notes = self.notes.new()
-        return [notes if self._is_replay else replace(notes, arrived=now())] if notes else []
+        """What people have noted, if anything is new; the same again until it is in a batch."""
+        self._noted = self._noted or self.notes.new()
+        return [self._noted if self._is_replay else replace(self._noted, arrived=now())] if self._noted else []
 
     @property
     def _is_replay(self) -> bool:

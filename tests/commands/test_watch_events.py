@@ -15,6 +15,8 @@ from typing import Any
 
 import pytest
 
+from pbm.errors import StoreWaits
+from pbm.io.store import Store
 from pbm.io.store_reader import StoreReader
 from pbm.records.result import Result
 from tests.commands.test_watch import FEED, RUN, csv, kept, ndjson, pbm, results_kept, wait_for_results
@@ -149,6 +151,22 @@ def test_a_note_is_taken_up_by_the_running_watch_once_and_kept_through_a_restart
     assert pbm("watch", "--from", live, "--lab", folder, "--once").returncode == 0
     assert [row[1] for row in kept_events(folder)] == ["restart"]
     assert StoreReader(folder / "watch.sqlite").events()[0].source == "note by kim"
+
+
+def test_a_note_that_meets_a_store_that_waits_is_not_lost(folder: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    assert pbm("note", "maintenance", "--analyser", "line-2", "--lab", folder).returncode == 0
+    asked, earlier = [0], Store.earlier
+
+    def waits_first(self: Store, *given: Any) -> Any:
+        asked[0] += 1
+        if asked[0] == 1:
+            raise StoreWaits("The disk is full.")
+        return earlier(self, *given)
+
+    monkeypatch.setattr(Store, "earlier", waits_first)
+    done = pbm("watch", "--from", "-", "--lab", folder, stdin=ndjson(FEED[:30]))
+    assert "The store takes results again; nothing was lost." in done.stderr
+    assert [row[1] for row in kept_events(folder)] == ["maintenance"]
 
 
 def wait_for_events(folder: Path, count: int) -> None:
