@@ -157,7 +157,8 @@ feeds = Table(
     Column("position", TEXT, nullable=False, comment="where to go on; kept in the same transaction as the results"),
     Column("delivered", BigInteger, nullable=False, comment="pieces that it brought since the store began"),
     Column("removed", BigInteger, nullable=False, comment="of its results and pieces set aside: removed as too old"),
-    comment="Every feed, and how far it was read.",
+    comment="Every feed, and how far it was read; beside them `clock` (when everything was last heard), `waiting` (results that wait "
+    "for their order), `shadow` (what a trial has met) and `alarms out` (the last alarm that is out).",
 )
 
 set_aside = Table(
