@@ -18,6 +18,7 @@ from pbm.io.store_engine import writing_engine
 from pbm.io.store_errors import told
 from pbm.io.store_migrations import migrate
 from pbm.io.store_place import Place
+from pbm.io.store_prepared import asking
 from pbm.io.store_questions import COUNTED_VISITS, RUNS, UNNAMED_RESULTS
 from pbm.io.store_retention import Sweep
 from pbm.io.store_schema import (
@@ -95,7 +96,7 @@ class Store:
         """
         asked = list(some)
         found = Earlier()
-        with told(self.place), self._connection.begin():
+        with told(self.place), asking(self._connection):
             found.answered.update(store_rows.codes_answered(self._connection, messages))
             if named := {one.specimen for one in asked if one.specimen}:
                 self._find_runs(named, found)

@@ -16,6 +16,7 @@ from sqlalchemy.pool import NullPool, StaticPool
 
 from pbm.errors import FeedError
 from pbm.io.store_place import Place, in_words
+from pbm.io.store_prepared import driver_cursor
 from pbm.io.writer_lock import hold_advisory_lock
 
 LOCK_SECONDS = 10.0
@@ -75,7 +76,8 @@ def _sqlite(path: Path) -> Engine:
 
     @event.listens_for(engine, "begin")
     def begin(connection: Connection) -> None:
-        connection.exec_driver_sql("BEGIN IMMEDIATE")
+        with driver_cursor(connection) as cursor:
+            cursor.execute("BEGIN IMMEDIATE")
 
     return engine
 

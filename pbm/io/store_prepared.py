@@ -6,7 +6,7 @@ are results.
 """
 
 from collections.abc import Iterator, Mapping, Sequence
-from contextlib import contextmanager
+from contextlib import AbstractContextManager, contextmanager, nullcontext
 from operator import itemgetter
 from typing import Any
 
@@ -35,7 +35,7 @@ class Prepared:
         if connection.dialect.name != "sqlite":
             return connection.execute(self._statement, list(rows)).rowcount
         text, values = self._written.get(key := frozenset(rows[0])) or self._write(connection, key)
-        with _errors(connection) as cursor:
+        with driver_cursor(connection) as cursor:
             return int(cursor.executemany(text, map(values, rows)).rowcount)
 
     def _write(self, connection: Connection, names: frozenset[str]) -> tuple[str, Any]:
@@ -69,7 +69,7 @@ class PreparedQuestion:
         lengths = tuple(map(len, filled.values()))
         text, places = self._written.get(lengths) or self._write(connection, lengths, filled)
         values = [filled[place.name][place.nth] if isinstance(place, _Place) else place for place in places]
-        with _errors(connection) as cursor:
+        with driver_cursor(connection) as cursor:
             rows: Sequence[Sequence[Any]] = cursor.execute(text, values).fetchall()
             return rows
 
@@ -93,13 +93,18 @@ class _Place:
         self.name, self.nth = name, nth
 
 
+def asking(connection: Connection) -> AbstractContextManager[object]:
+    """What questions are asked in: on SQLite nothing, since who asks is the only one that writes; elsewhere a transaction."""
+    return nullcontext() if connection.dialect.name == "sqlite" else connection.begin()
+
+
 def _length(count: int) -> int:
     """The next power of two."""
     return 1 << (count - 1).bit_length()
 
 
 @contextmanager
-def _errors(connection: Connection) -> Iterator[Any]:
+def driver_cursor(connection: Connection) -> Iterator[Any]:
     """A cursor of the driver, whose errors come out as those of the engine do."""
     cursor = connection.connection.cursor()
     error_class = connection.dialect.loaded_dbapi.Error

@@ -7,7 +7,7 @@ from dataclasses import replace
 from pathlib import Path
 
 import pytest
-from sqlalchemy import event, text
+from sqlalchemy import text
 from sqlalchemy.exc import OperationalError
 
 from pbm.errors import FeedError, InputError, StoreWaits
@@ -206,9 +206,11 @@ def test_every_commit_reaches_the_disk(path: Path) -> None:
 def test_every_transaction_begins_immediate(path: Path) -> None:
     with begun(path) as store:
         said: list[str] = []
-        event.listen(store._connection.engine, "before_cursor_execute", lambda *given: said.append(given[2]))
+        driver = store._connection.connection.dbapi_connection
+        assert isinstance(driver, sqlite3.Connection)
+        driver.set_trace_callback(said.append)
         store.keep(batch())
-    assert said[0] == "BEGIN IMMEDIATE"
+    assert said[0] == "BEGIN IMMEDIATE" and said[-1] == "COMMIT"
 
 
 def test_a_store_that_turns_read_only_is_told_and_when_it_may_be_written_again_it_goes_on(path: Path) -> None:
