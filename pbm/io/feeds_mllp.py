@@ -38,27 +38,37 @@ def listen(address: str, settings: FeedSettings) -> socket.socket:
     InputError
         If it is no address, cannot be used, or would be open to anybody.
     """
-    parts = urlsplit(address)
-    try:
-        host, port = parts.hostname or "127.0.0.1", parts.port
-    except ValueError:
-        host, port = "", None
-    if port is None or parts.path not in ("", "/") or parts.query or parts.fragment or parts.username:
+    scheme = address.partition(":")[0]
+    host, port = _host_and_port(address)
+    if port is None:
         raise InputError(
-            f'"{address}" is no address to listen at. Give {parts.scheme}://HOST:PORT, such as {parts.scheme}://127.0.0.1:2575.'
+            f'"{address}" is no address to listen at. Give {scheme}://HOST:PORT, such as {scheme}://127.0.0.1:2575.'
         )
     try:
         family, _, _, _, place = socket.getaddrinfo(host, port, type=socket.SOCK_STREAM, flags=socket.AI_PASSIVE)[0]
-        if not (ip_address(place[0]).is_loopback or settings.peers or parts.scheme == "mllps"):
+        if not (ip_address(place[0]).is_loopback or settings.peers or scheme == "mllps"):
             raise InputError(
                 f"{address} can be reached from other computers, and feed.peers in lab.toml does not say from which. Name them there "
-                f'(peers = ["10.1.2.3"]), or listen at {parts.scheme}://127.0.0.1:{port}.'
+                f'(peers = ["10.1.2.3"]), or listen at {scheme}://127.0.0.1:{port}.'
             )
         return socket.create_server((str(place[0]), port), family=family, backlog=128)
-    except OSError as error:
+    except (OSError, UnicodeError) as error:
+        said = getattr(error, "strerror", None) or "not the name of a computer"
         raise InputError(
-            f"Nothing can listen at {address}: {error.strerror}. Another program may use the port, or the address is not of this computer."
+            f"Nothing can listen at {address}: {said}. Another program may use the port, or the address is not of this computer."
         ) from None
+
+
+def _host_and_port(address: str) -> tuple[str, int | None]:
+    """Host and port of an address; no port if it is none."""
+    try:
+        parts = urlsplit(address)
+        host, port = parts.hostname or "localhost", parts.port
+    except ValueError:
+        return "", None
+    if parts.path not in ("", "/") or parts.query or parts.fragment or parts.username:
+        return "", None
+    return "127.0.0.1" if host == "localhost" else host, port  # "localhost" may be ::1 alone
 
 
 class MllpFeed(Feed):
