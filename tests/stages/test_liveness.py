@@ -237,3 +237,34 @@ def test_a_notice_of_what_a_new_plan_no_longer_watches_is_closed() -> None:
 )
 def test_lengths_of_time_in_words(microseconds: int, words: str) -> None:
     assert duration(microseconds) == words
+
+
+# The clock of a replay
+
+
+def believed(liveness: Liveness, results: Sequence[tuple[StreamName, int]]) -> list[Notice]:
+    for name, time in results:
+        liveness.hear(name, liveness.believed(time))
+    return liveness.said()
+
+
+def test_a_wrong_date_in_a_replay_is_not_the_clock() -> None:
+    feed = merged(every(1, T0 + HOUR), every(1, T0 + HOUR, SODIUM_2), every(1, T0 + HOUR, TSH))
+    for place in (20, 21, 90):
+        feed[place] = (feed[place][0], feed[place][1] + 400 * 24 * HOUR)
+    assert not believed(Liveness(watched(), ZONE), feed)
+
+
+def test_a_replay_goes_on_after_days_without_results_and_through_a_restart() -> None:
+    later = T0 + 10 * 24 * HOUR
+    feed = [*every(1, T0 + HOUR), *every(1, later + HOUR, start=later)]
+    whole = Liveness(watched(), ZONE)
+    said = believed(whole, feed)
+    ended = [one for one in said if one.closed_at is not None and one.analyser == "line-1"]
+    assert ended and ended[0].closed_at == later + 4 * MINUTE, "the fifth result in a row makes it sure"
+    for cut in range(58, 68):
+        first = Liveness(watched(), ZONE)
+        before = believed(first, feed[:cut])
+        second = Liveness(watched(), ZONE)
+        second.go_on(first.state, [one for one in latest(before) if one.closed_at is None])
+        assert before + believed(second, feed[cut:]) == said
