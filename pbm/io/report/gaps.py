@@ -10,6 +10,7 @@ from pbm.records.figures import AloneAndWith
 from pbm.records.judged import FaultAppraisal, Judged, OnsetTime
 
 LITTLE = 0.1
+_FEW = 3
 Which = Callable[[Judged], list[FaultAppraisal]]
 
 
@@ -110,8 +111,9 @@ def _not_tried(watched: Sequence[StreamAppraisal]) -> Iterator[str]:
         if without:
             missing.setdefault(without, []).append(name)
     for streams, kinds in missing.items():
-        where = "any stream" if len(streams) == len(watched) else ", ".join(streams)
-        yield f"{', '.join(kinds)} on {where}"
+        named = len(streams) <= _FEW
+        where = ", ".join(streams) if named else f"{len(streams)} of {len(watched)} streams"
+        yield f"{', '.join(kinds)} on {'any stream' if len(streams) == len(watched) else where}"
 
 
 def where_it_does_not_help(stream: StreamAppraisal, judged: Judged) -> Iterator[str]:

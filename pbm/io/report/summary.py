@@ -95,8 +95,8 @@ def rates(appraisal: Appraisal) -> str:
     found = sorted({one.judged.yearly.per_year for one in appraisal.streams if one.judged})
     if not found:
         return "no error conditions assumed"
-    told = words.number(found[0]) if len(found) == 1 else f"{words.number(found[0])} to {words.number(found[-1])}"
-    return f"{told.removesuffix('.00')} error conditions on each stream (an assumption, not an estimate)"
+    told = f"{found[0]:g}" if len(found) == 1 else f"{found[0]:g} to {found[-1]:g}"
+    return f"{told} error conditions on each stream (an assumption, not an estimate)"
 
 
 def _a_month(bench: Bench, alarms: list[FalseAlarms]) -> str:

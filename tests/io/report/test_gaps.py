@@ -71,6 +71,8 @@ def test_kinds_of_error_that_were_not_tried_are_named() -> None:
     assert told(sample.THREE, "not tried") == f"{all_but_shift} on sodium@line-2, albumin@line-1"
     assert told(sample.appraisal(sample.SODIUM), "not tried") == f"{all_but_shift} on any stream"
     assert told(sample.appraisal(sample.CALCIUM), "not tried") == ""
+    many = sample.appraisal(*(sample.SODIUM.model_copy(update={"stream": f"s@{i}"}) for i in range(5)), sample.CALCIUM)
+    assert told(many, "not tried") == f"{all_but_shift} on 5 of 6 streams"
 
 
 def test_a_stream_s_page_tells_where_its_monitor_does_not_help_and_what_check_objects_to() -> None:

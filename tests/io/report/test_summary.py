@@ -57,7 +57,7 @@ def test_the_year_is_said_to_rest_on_an_assumption() -> None:
 def test_rates_that_differ_between_streams_are_told_as_a_range() -> None:
     judged = judged_of(sample.SODIUM)
     other = with_judged(sample.SODIUM, yearly=judged.yearly.model_copy(update={"per_year": 12.0}))
-    assert summary.rates(sample.appraisal(sample.SODIUM, other)).startswith("5.00 to 12.0 error conditions")
+    assert summary.rates(sample.appraisal(sample.SODIUM, other)).startswith("5 to 12 error conditions")
 
 
 @pytest.mark.parametrize(("kept", "told"), [(True, "together: kept."), (False, "together: NOT kept.")])
