@@ -26,9 +26,13 @@ def reason_in_words(gain: Gain, average: AloneAndWith, worst: WorstCase, alarms:
         [
             f"on held-out days {saved}",
             *(["no more than its false alarms would save"] if gain.by_chance else []),
-            f"{alarms.episodes} alarms in {alarms.days} days, the budget allows {alarms.allowed:.2g}: {kept}",
+            f"{_alarms(alarms)} in {alarms.days} days, the budget allows {alarms.allowed:.2g}: {kept}",
         ]
     )
+
+
+def _alarms(found: FalseAlarms) -> str:
+    return f"{found.episodes} {'alarm' if found.episodes == 1 else 'alarms'}"
 
 
 def objections(gain: Gain, average: AloneAndWith, alarms: Sequence[tuple[str, FalseAlarms]]) -> Iterator[str]:
@@ -37,7 +41,7 @@ def objections(gain: Gain, average: AloneAndWith, alarms: Sequence[tuple[str, Fa
         if not found.kept:
             low, high = found.interval
             yield (
-                f"{whose}: {found.episodes} alarms in {found.days} held-out days, the budget allows {found.allowed:.2g} "
+                f"{whose}: {_alarms(found)} in {found.days} held-out days, the budget allows {found.allowed:.2g} "
                 f"(90 % interval of the expected count {low:.2g} to {high:.2g})"
             )
     if gain.by_chance:
