@@ -3,7 +3,7 @@
 Level and noise are in units of the analytic SD. A level stays within 0.3 SD, which is under a tenth of TEa for every analyte here.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 from datetime import date, timedelta
 
 import numpy as np
@@ -49,6 +49,11 @@ class Levels:
     def lot_at(self, time: Ints) -> Ints:
         """Reagent lot in force at each time, counted from 1."""
         return np.asarray(np.cumsum(self.new_lot)[self._place(time)])
+
+    def since(self, time: int) -> "Levels":
+        """The steps at a time and later."""
+        later = self.time >= time
+        return Levels(*(getattr(self, field.name)[later] for field in fields(self)))
 
     def _place(self, time: Ints) -> Ints:
         return np.clip(np.searchsorted(self.time, time, side="right") - 1, 0, None)

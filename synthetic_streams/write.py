@@ -13,6 +13,7 @@ from synthetic_streams.account import account
 from synthetic_streams.analytes import STREAMS, stream_name
 from synthetic_streams.clock import HOUR, midnight, utc_text
 from synthetic_streams.controls import ControlResults, measure_controls
+from synthetic_streams.events import event_lines
 from synthetic_streams.export import clean_lines, control_lines, export_lines, ndjson_lines, write_lines
 from synthetic_streams.faults import Fault
 from synthetic_streams.lab_file import lab_toml
@@ -100,7 +101,10 @@ def write_laboratory(
     write_lines(target / "lab.toml", [lab_toml()])
     spoiled, size = _write_history(target, laboratory, samples, controls, days)
     live = [sample.rows(sample.time >= start) for sample in samples]
-    sent = _write_live(target, laboratory, live, [c.rows(c.time >= start) for c in controls])
+    live_controls = [c.rows(c.time >= start) for c in controls]
+    sent = _write_live(target, laboratory, live, live_controls)
+    steps = [laboratory.levels(analyte, line).since(start) for analyte, line in STREAMS]
+    write_lines(target / "live-events.csv", event_lines(steps, live_controls, laboratory.hours))
     write_json(target / "faults.json", {"faults": [fault_truth(fault, live) for fault in chosen]})
     counted = account(spoiled)
     write_json(target / "truth.json", _setting(laboratory, days) | {"export": counted, "levels": _levels(laboratory)})

@@ -35,7 +35,7 @@ def demo(folder: FolderArgument = Path("tern-bay"), workers: WorkersOption = Non
     _step("4  pbm appraise: prove them on the last third, beside the control schedule")
     appraise(lab=folder, workers=workers, seed=seed)
     _step("5  pbm watch: the two live days")
-    watch(from_=[str(folder / "live.csv")], lab=folder, once=True)
+    watch(from_=[str(folder / "live.csv")], lab=folder, once=True, events=folder / "live-events.csv")
     typer.echo(f"\nWhat was wrong in those two days: {folder / 'faults.json'}")
     typer.echo(f"The report to read: {folder / 'reports' / 'appraisal.html'}")
 

@@ -11,7 +11,7 @@ from synthetic_streams import live_start
 from synthetic_streams.__main__ import fault_of, main
 from synthetic_streams.clock import HOUR
 
-FILES = {"lab.toml", "extract", "controls.csv", "live.csv", "live.ndjson", "live-controls.csv", "messages.hl7",
+FILES = {"lab.toml", "extract", "controls.csv", "live.csv", "live.ndjson", "live-controls.csv", "live-events.csv", "messages.hl7",
          "faults.json", "truth.json"}  # fmt: skip
 
 

@@ -4,7 +4,7 @@ import csv
 import hashlib
 import json
 from collections import Counter
-from datetime import datetime
+from datetime import UTC, datetime
 from pathlib import Path
 
 import numpy as np
@@ -201,3 +201,27 @@ def test_live_files_tell_the_same_results_and_the_fault_is_in_them(written: Writ
         assert int(result["reported"]) - int(result["without"]) == 3
     assert len(fault["results"]) == sum(t["time"] >= fault["onset"] for t in told if (t["specimen"], t["time"]) in live
                                         and (t["analyte"], t["analyser"]) == ("sodium", "line-2"))  # fmt: skip
+
+
+def test_events_of_the_live_days_are_those_of_the_truth_and_of_the_controls(tmp_path: Path) -> None:
+    write_laboratory(tmp_path, days=60, volume=0.2)
+    rows = [line.split(",") for line in (tmp_path / "live-events.csv").read_text().splitlines()]
+    assert rows[0] == ["time", "event", "analyte", "analyser", "detail"]
+    assert [row[0] for row in rows[1:]] == sorted(row[0] for row in rows[1:])
+    truth = json.loads((tmp_path / "truth.json").read_text())
+    begin = truth["live_start"]
+    steps = {
+        (step["time"], "reagent lot" if step["new_lot"] else "calibration", stream)
+        for stream, told in truth["levels"].items()
+        for step in told
+        if step["time"] >= begin
+    }
+    of_levels = {(_utc(row[0]), row[1], f"{row[2]}@{row[3]}") for row in rows[1:] if not row[1].startswith("control")}
+    assert of_levels == steps and steps
+    controls = [line.split(",") for line in (tmp_path / "live-controls.csv").read_text().splitlines()[1:]]
+    last_level = sorted((row[0], f"control {row[5]}", row[1], row[2]) for row in controls if row[3] == "2")
+    assert sorted(tuple(row[:4]) for row in rows[1:] if row[1].startswith("control")) == last_level
+
+
+def _utc(text: str) -> str:
+    return datetime.fromisoformat(text).astimezone(UTC).isoformat().replace("+00:00", "Z")
