@@ -53,4 +53,4 @@ def decode(content: bytes, declared: str, fall_back: str) -> tuple[str, str]:
 
 def _told(declared: str, encoding: str) -> str:
     name = codecs.lookup(encoding).name
-    return f"MSH-18 says {declared}, read as {name}" if declared else f"not UTF-8, read as {name}"
+    return f"MSH-18 says {declared[:40]}, read as {name}" if declared else f"not UTF-8, read as {name}"

@@ -33,6 +33,7 @@ _OFF_SCALE = {"<": -1, ">": 1}
 _KNOWN_TEXTS = 16_384
 _TO_THE_MINUTE = 12  # digits of a time
 _LONGEST_CORRECTED = 40
+_LONGEST_FIELD = 500  # characters; what is remembered of texts must stay small, whatever is sent
 
 
 class _AtTheDoorError(Exception):
@@ -92,6 +93,8 @@ class ResultReader:
 
     def _read(self, signs: Delimiters, one: Observation, common: _Common, place: int, at: int) -> Read:
         fields = one.fields
+        if max(map(len, fields)) > _LONGEST_FIELD:
+            return SetAside(place, "a field too long for a result")
         test, analyser = self._test(fields[3], signs), self._analyser(signs, one)
         time = _in_iso(signs.first(fields[19]), common.zone) or _in_iso(common.time, common.zone)
         try:
@@ -215,14 +218,19 @@ def _common(header: Header, order: Order) -> _Common:
     return _Common(
         specimen=_specimen(signs, specimen, order),
         kind=signs.first(specimen[11]) or PATIENT,
-        ward=signs.first(order.visit[3]),
-        patient=signs.first(order.patient[3]),
-        sex=signs.first(order.patient[8]),
+        ward=_short(signs.first(order.visit[3])),
+        patient=_short(signs.first(order.patient[3])),
+        sex=_short(signs.first(order.patient[8])),
         birth=signs.first(order.patient[7]),
         time=status_time if whole else sent,
         time_is_of="OBR-22" if whole else "MSH-7",
         zone=sent[-5:] if sent[-5:-4] in ("+", "-") else "",
     )
+
+
+def _short(text: str) -> str:
+    """The text, unless it is longer than any name or number."""
+    return text if len(text) <= LONGEST_NAME else ""
 
 
 def _specimen(signs: Delimiters, specimen: Fields, order: Order) -> str:

@@ -185,3 +185,24 @@ def test_a_frame_without_end_takes_no_more_memory_than_a_frame() -> None:
     _, peak = tracemalloc.get_traced_memory()
     tracemalloc.stop()
     assert peak < 400_000
+
+
+def test_long_fields_that_differ_every_time_are_not_remembered() -> None:
+    reader, law = MessageReader(LAB), Reader(LAB, patient_kinds=("P",), patient_key=b"k")
+
+    def take(first: int, last: int) -> None:
+        for number in range(first, last):
+            long = f"{number}" + "9" * 20_000
+            pid = f"PID|1||{long}||||19600101|{long}"
+            given = oru(obx(test=long), obx(long), obx(unit=long), obx(analyser=long), obx(flags=long), pid=pid)
+            content = given.replace(b"|ED", b"|" + long.encode())
+            found = reader.read(content, number, 5)
+            assert found.message
+            read_chunk(Chunk("x", 1, found.items, "", [found.message]), law)
+
+    take(0, 20)
+    tracemalloc.start()
+    take(20, 320)
+    held, _ = tracemalloc.get_traced_memory()
+    tracemalloc.stop()
+    assert held < 3_000_000
