@@ -9,8 +9,11 @@ from typing import Any
 import numpy as np
 import pytest
 
+from pbm.errors import InputError
 from pbm.io.appraisal_file import read_appraisal
+from pbm.io.tuning_file import write_tuning
 from tests.commands.written_laboratory import FIRST, WrittenLaboratory, pbm
+from tests.io.report import variants
 
 LAB = """
 [faults]
@@ -169,3 +172,20 @@ def test_other_monitors_are_tried_within_the_same_budget(appraised: Path) -> Non
         assert found["plan"].false_alarms == stream.judged.false_alarms
         assert all(one.unreliable.value <= peers.alone.value for one in found.values())
         assert {one.false_alarms.allowed for one in found.values()} == {3.0}
+
+
+def test_the_report_tells_why_a_monitor_was_chosen_and_that_the_plan_was_edited_since(folder: Path) -> None:
+    reports = folder / "reports"
+    assert "Why this monitor" not in (reports / "appraisal.html").read_text(encoding="utf-8")
+    write_tuning(reports / "tuning.json", variants.tuning(sodium__line_1=variants.reasons()))
+    assert pbm(folder, "appraise", "sodium@line-1", *QUICKLY).exit_code == 0
+    page = (reports / "appraisal.html").read_text(encoding="utf-8")
+    assert "Why this monitor" in page
+    assert "it was edited by hand" in page
+
+
+def test_reasons_that_cannot_be_read_stop_it_in_words_before_the_work(folder: Path) -> None:
+    (folder / "reports" / "tuning.json").write_text("{", encoding="utf-8")
+    found = pbm(folder, "appraise", "sodium@line-1", *QUICKLY)
+    assert isinstance(found.exception, InputError)
+    assert "Run `pbm tune` again, or move the file away." in str(found.exception)
