@@ -23,6 +23,7 @@ from pbm.records.quantities import (
     Signs,
     Written,
 )
+from pbm.records.units import spellings
 from pbm.records.watching import EventRules, Quiet
 
 
@@ -290,9 +291,6 @@ class Range(Written):
         return self
 
 
-MICRO_SIGN, GREEK_MU = "\u00b5", "\u03bc"
-
-
 class Analyte(Written):
     """One measurand: unit, resolution, TEa, analytic SD, spellings, controls and the errors to guard against.
 
@@ -311,7 +309,7 @@ class Analyte(Written):
     names
         Other spellings in extract and feed; the name of the table itself always counts.
     unit_names
-        Other spellings of the same unit.
+        Other spellings of the same unit. Litre as L or l, micro as u or its sign, 10* as 10^, and [IU] as IU are known without being given.
     reportable
         The method's limits: below and above them it prints "<" and ">".
     plausible
@@ -344,10 +342,9 @@ class Analyte(Written):
     faults: tuple[FaultList, ...] = Field(default=DEFAULT_FAULTS, min_length=1)
 
     def known_units(self) -> tuple[str, ...]:
-        """The unit and its other spellings, the unit first; the micro sign and the Greek letter that looks the same count as one."""
+        """The unit and its other spellings, the unit first, each with those that mean the same in UCUM."""
         written = (self.unit, *self.unit_names)
-        signs = str.maketrans({MICRO_SIGN: GREEK_MU, GREEK_MU: MICRO_SIGN})
-        return tuple(dict.fromkeys([*written, *(unit.translate(signs) for unit in written)]))
+        return tuple(dict.fromkeys([*written, *(text for unit in written for text in spellings(unit))]))
 
 
 def spelling_clashes(spellings: Mapping[str, Iterable[str]]) -> Iterator[str]:

@@ -44,7 +44,7 @@ def test_rows_lie_stream_by_stream_in_the_order_of_the_file() -> None:
         ({"value": "HEM"}, "not a number", "HEM", "sodium@line-2"),
         ({"value": "remark " * 20}, "not a number", ("remark " * 20)[:40], "sodium@line-2"),
         ({"unit": "mg/dL"}, "unit is not mmol/L", "mg/dL", "sodium@line-2"),
-        ({"unit": "mmol/l"}, "unit is not mmol/L", "mmol/l", "sodium@line-2"),
+        ({"unit": "mEq/L"}, "unit is not mmol/L", "mEq/L", "sodium@line-2"),
         ({"unit": ""}, "no unit given", "", "sodium@line-2"),
         ({"time": " "}, "no time", "", "sodium@line-2"),
         ({"time": "soon"}, "not a time", "soon", "sodium@line-2"),
