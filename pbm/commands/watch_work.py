@@ -140,7 +140,8 @@ class _Work:
         if self.trial:
             self.screen.say(ON_TRIAL)
             return
-        self.screen.say(*(f"Open: {self.line(one)}" for one in self.store.open_alarms() if not one.shadow))
+        for one in self.store.open_alarms():
+            self.screen.say(f"Open: {self.line(one)}{'  raised on trial' * one.shadow}")
         zone = self.lab.laboratory.zone
         self.screen.say(*(f"Open: {notice_line(one, zone)}" for one in self.store.open_notices()))
 

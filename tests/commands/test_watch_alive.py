@@ -270,6 +270,14 @@ def test_after_the_trial_alarms_are_shown_and_a_later_trial_counts_from_its_begi
     assert row.split()[4] == str(in_second)
 
 
+def test_an_alarm_that_a_trial_leaves_open_is_told_when_the_trial_is_over(folder: Path) -> None:
+    some = results(shifted_values(1, 200, {150: 6.0}))
+    once(folder, some, "--shadow")
+    done = once(folder, some)
+    opened = [line for line in done.stderr.splitlines() if line.startswith("Open:") and "NOTICE" not in line]
+    assert len(opened) == 1 and opened[0].endswith("  raised on trial")
+
+
 # Alarms out
 
 
