@@ -142,7 +142,7 @@ def count(folder: Path, table: str) -> int:
 
 @pytest.mark.slow
 def test_killed_cut_off_and_sent_twice_it_counts_every_result_once(tmp_path: Path) -> None:
-    check_exactly_once(tmp_path, results=1_500, kills=3, seed=1)
+    check_exactly_once(tmp_path, results=1_000, kills=3, seed=1)
 
 
 @pytest.mark.full
