@@ -18,6 +18,7 @@ _FRAME, _STRIP_FRAME = (0.158, 0.185, 0.815, 0.775), (0.062, 0.2, 0.93, 0.7)
 _INK, _PETROL, _RUST, _MUTED = "#1d1d1b", "#0a5c6b", "#a8500b", "#8a8a86"
 _DAYS = ("Mon", "Tue", "Wed", "Thu", "Fri", "Sat", "Sun")
 _MONTHS_SHOWN = 14
+_ROOM_FOR_A_NAME = 0.95
 _LEFT, _WIDE, _TOP = 34, 26, 19
 
 
@@ -74,8 +75,14 @@ def distribution_plot(
     axes.stairs(counts, edges, color=_PETROL, linewidth=0.9)
     top = 1.16 * (counts.max() or 1)
     axes.vlines(distribution.median, 0, 0.93 * top, color=_INK, linewidth=1.1)
+    at_the_axis = distribution.median - edges[0] < 0.15 * (edges[-1] - edges[0])
     axes.text(
-        distribution.median, 0.94 * top, f"median {distribution.median:.4g}", ha="center", va="bottom", fontsize=8
+        distribution.median,
+        0.94 * top,
+        f"median {distribution.median:.4g}",
+        ha="left" if at_the_axis else "center",
+        va="bottom",
+        fontsize=8,
     )
     inside = [limit for limit in limits if limit is not None and edges[0] < limit < edges[-1]]
     axes.vlines(inside, 0, 0.8 * top, color=_RUST, linewidth=1.1, linestyle=(0, (4, 2)))
@@ -117,8 +124,9 @@ def medians_plot(album: Album, stream: StreamSurvey, unit: str) -> Markup | None
         left, right = max(begin, 0) - 0.5, min(end, len(days)) - 0.5
         shown = min(max(month.median, low - room), high + room)
         axes.hlines(shown, left, right, color=_RUST, linewidth=2.0)
-        ticks.append(left)
-        names.append(month.month)
+        if left < _ROOM_FOR_A_NAME * len(days):
+            ticks.append(left)
+            names.append(month.month)
     every = max(1, math.ceil(len(ticks) / _MONTHS_SHOWN))
     axes.set_xticks(ticks[::every], names[::every], ha="left")
     axes.set_xlim(-0.5, len(days) - 0.5)
@@ -166,5 +174,5 @@ def _sheet(
     canvas = Canvas(figsize=inches)
     axes = canvas.add_axes(frame)
     axes.set_xlabel(across)
-    axes.set_ylabel(along)
+    axes.set_ylabel(along, labelpad=1)
     return canvas, axes
