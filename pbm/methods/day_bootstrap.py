@@ -26,7 +26,7 @@ from pbm.methods.jit import Floats, Integers
 
 Mask = npt.NDArray[np.bool_]
 LEVEL = 0.9
-GRID = 256  # places at which the distribution of results until detection is drawn
+GRID = 128  # places at which the distribution of results until detection is drawn
 NEGLIGIBLE = 1e-15  # chances far below it are denormal numbers, which are slow
 TIE = 1e-9  # shares that differ by less are the same but for rounding
 _THURSDAY, _WEEK, _SATURDAY = 3, 7, 5  # 1970-01-01 was a Thursday; Monday is 0
@@ -148,7 +148,7 @@ class DayBootstrap:
         return Estimate(float(part.sum() / whole.sum()), drawn)
 
     def _drawn(self, each: Floats) -> Floats:
-        """Sum over the days that each draw takes, shape (b,); without BLAS, whose sums could depend on the number of its threads."""
+        """Sum over the days that each draw takes, shape (b,); without BLAS, whose threads wait for each other on a busy machine."""
         by_day = np.bincount(self.day, weights=each, minlength=self.taken.shape[1])
         drawn: Floats = np.einsum("bd,d->b", self.taken, by_day)
         return drawn
@@ -175,7 +175,8 @@ class DayBootstrap:
         cell = day * len(grid) + np.minimum(np.searchsorted(grid, delay), len(grid) - 1)
         days = self.taken.shape[1]
         mass = np.bincount(cell, weights=chance, minlength=days * len(grid)).reshape(days, len(grid))
-        return grid, (self.taken @ mass.cumsum(axis=1)) / self._drawn(np.ones(len(self.day)))[:, None]
+        reached = np.einsum("bd,dg->bg", self.taken, mass.cumsum(axis=1))
+        return grid, reached / self._drawn(np.ones(len(self.day)))[:, None]
 
 
 def _percentile(share: float, delay: Floats, told: Floats, grid: Floats, reached: Floats) -> tuple[float | None, ...]:

@@ -4,6 +4,7 @@ Each onset contributes a small distribution: the schedule finds the fault at its
 result T. Together the fault is found at the earlier of the two. What neither finds within the horizon stays as a chance of "never".
 """
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -43,11 +44,15 @@ class Detection:
 
     def quantile(self, share: float) -> float | None:
         """Delay by which this share of all faults is found; None if it never is."""
-        counts, chances = self.delay.ravel(), self.chance.ravel() / len(self.horizon)
-        order = np.argsort(counts, kind="stable")
-        reached = np.cumsum(chances[order])
-        place = int(np.searchsorted(reached, share - 1e-12))
-        return float(counts[order][place]) if place < len(order) else None
+        return self.quantiles((share,))[0]
+
+    def quantiles(self, shares: Sequence[float]) -> list[float | None]:
+        """The same for several shares."""
+        counted = self.chance.ravel() > 0
+        delays, chances = self.delay.ravel()[counted], self.chance.ravel()[counted] / len(self.horizon)
+        order = np.argsort(delays, kind="stable")
+        places = np.searchsorted(np.cumsum(chances[order]), np.array(shares) - 1e-12)
+        return [float(delays[order[place]]) if place < len(order) else None for place in places.tolist()]
 
     def timed(self, hours: Floats, horizon: Floats) -> "Detection":
         """The same in hours, those of each point (r, k) and those followed (r,)."""

@@ -190,13 +190,16 @@ def _three_figures(found: Three) -> Ways:
 
 
 def _until_ways(ground: Ground, levels: list[Detections]) -> UntilWays:
-    schedule, monitor, both = (_until(ground, [one[i] for one in levels]) for i in range(3))
+    """The control schedule finds an error at the same events whatever the level of the patients' results."""
+    schedule = _until(ground, [levels[0][0]])
+    monitor, both = (_until(ground, [one[i] for one in levels]) for i in (1, 2))
     return UntilWays(schedule=schedule, monitor=monitor, both=both)
 
 
 def _until(ground: Ground, levels: list[Detection]) -> Until:
-    told = zip(SHARES, ground.days.percentiles(levels[0], SHARES), strict=True)
-    p5, median, p95 = (percentile(_swayed(found, [one.quantile(share) for one in levels[1:]])) for share, found in told)
+    others = zip(*(one.quantiles(SHARES) for one in levels[1:]), strict=True) if len(levels) > 1 else [()] * len(SHARES)
+    told = zip(ground.days.percentiles(levels[0], SHARES), others, strict=True)
+    p5, median, p95 = (percentile(_swayed(found, list(at_levels))) for found, at_levels in told)
     return Until(mean=figure(ground.mean([one.mean_each() for one in levels])), p5=p5, median=median, p95=p95)
 
 
