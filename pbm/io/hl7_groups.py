@@ -69,7 +69,7 @@ class _Walk:
 
     def take(self, fields: Fields) -> None:
         if (meet := _MEETING.get(fields[0])) is not None:
-            meet(self, fields + NONE[: max(0, LONGEST - len(fields))])
+            meet(self, fields + NONE[len(fields) :])
 
     def end_patient(self) -> None:
         """Orders that tell no specimen are of the only one that their patient has."""

@@ -13,7 +13,7 @@ No other field of PID is looked at, nor any comment. Source: HL7 version 2.8.2, 
 """
 
 from collections.abc import Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import lru_cache
 from typing import Literal
 
@@ -57,6 +57,14 @@ class _Common:
     time: str
     time_is_of: str
     zone: str
+    ages: dict[str, str] = field(default_factory=dict)
+
+    def age(self, time: str) -> str:
+        """The patient's age at a time; worked out once a day."""
+        day = time[:8]
+        if day not in self.ages:
+            self.ages[day] = _age(self.birth, day)
+        return self.ages[day]
 
 
 class ResultReader:
@@ -93,7 +101,7 @@ class ResultReader:
 
     def _read(self, signs: Delimiters, one: Observation, common: _Common, place: int, at: int) -> Read:
         fields = one.fields
-        if max(map(len, fields)) > _LONGEST_FIELD:
+        if len("".join(fields)) > _LONGEST_FIELD and max(map(len, fields)) > _LONGEST_FIELD:
             return SetAside(place, "a field too long for a result")
         test, analyser = self._test(fields[3], signs), self._analyser(signs, one)
         time = _in_iso(signs.first(fields[19]), common.zone) or _in_iso(common.time, common.zone)
@@ -118,7 +126,7 @@ class ResultReader:
             common.kind,
             common.patient,
             common.sex,
-            _age(common.birth, time),
+            common.age(time),
         )
         corrected = _CORRECTED.get(status)
         return Correction(corrected, at, reading) if corrected else reading
@@ -248,10 +256,10 @@ def _in_iso(text: str, zone: str) -> str:
     return f"{text[:8]}T{text[8:]}{own}"
 
 
-def _age(birth: str, time: str) -> str:
-    """Whole years from a birth date to a time; of the date nothing else is kept."""
+def _age(birth: str, at: str) -> str:
+    """Whole years from a birth date to a day (YYYYMMDD); of the date nothing else is kept."""
     day = birth[:8]
-    if len(day) < 4 or not (day + time[:8]).isdecimal() or len(time) < 8:
+    if len(day) < 4 or len(at) < 8 or not (day + at).isdecimal():
         return ""
-    years = int(time[:4]) - int(day[:4]) - (time[4:8] < day[4:])
+    years = int(at[:4]) - int(day[:4]) - (at[4:] < day[4:])
     return str(years) if years >= 0 else ""

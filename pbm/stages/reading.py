@@ -23,6 +23,7 @@ from pbm.records.stream import LONGEST_ANALYSER, POOLED, StreamName
 _EPOCH = datetime(1970, 1, 1)
 _MICROSECOND = timedelta(microseconds=1)
 _LONGEST_FOUND = 40
+_KNOWN_TIMES = 256
 _KNOWN_TEXTS = 65_536  # different values kept read: results repeat, digits are few
 
 
@@ -73,6 +74,7 @@ class Reader:
         self._token = lru_cache(_KNOWN_TEXTS)(
             lambda text: blake2b(text.encode(), digest_size=8, key=patient_key).hexdigest()
         )
+        self._time = lru_cache(_KNOWN_TIMES)(self._read_time)  # results of a panel share theirs
         self._value = lru_cache(_KNOWN_TEXTS)(lambda text: read_value(text, decimal))
         self._sex, self._age = lru_cache(_KNOWN_TEXTS)(read_sex), lru_cache(_KNOWN_TEXTS)(read_age_band)
 
@@ -159,7 +161,7 @@ class Reader:
             raise ReadingError("no unit given")
         raise ReadingError(f"unit is not {analyte.unit}", unit)
 
-    def _time(self, text: str) -> int:
+    def _read_time(self, text: str) -> int:
         if not text:
             raise ReadingError("no time")
         found = self._as_written(text)
