@@ -164,7 +164,7 @@ def test_a_clock_of_the_computer_that_goes_back_is_told_and_nothing_stops(
     clock = [START + 1000 * MINUTE]
 
     def now() -> int:
-        clock[0] += 1_000_000 if len(looks) != 5 else -3600_000_000
+        clock[0] += 1_000_000 if len(looks) != 5 else -3630_000_000
         looks.append(clock[0])
         return clock[0]
 
