@@ -129,13 +129,14 @@ def _one(candidate: Fixed, stream: str, history: History, seed: int) -> tuple[in
 
 def lines() -> Iterator[str]:
     """The section."""
-    h = AS_IN_A_PLAN
+    h, n, every = AS_IN_A_PLAN, len(SEEDS), 1 / BUDGET
+    early, later = BUDGET * h.training, BUDGET * h.later
     yield from f"""
-{len(SEEDS)} fault-free streams of {h.training + h.later} days with {h.per_day} results a day; one alarm in {1 / BUDGET:g} days allowed. Centre and limits are learned on the first
-{h.training} days ({BUDGET * h.training:g} alarms allowed), by the bootstrap over days with {h.draws} pseudo-histories, as `pbm tune` does; the last {h.later} days are
-counted ({BUDGET * h.later:g} allowed) and compared with the 90 % interval that the plan states as `held_out.predicted`. A count is a whole number, and an
-interval of whole numbers holds at least 90 %, mostly more. Asked for: a mean rate between 0.7 and 1.25 of the budget, and about 90 % of streams
-inside. In brackets: standard error; exact 90 % interval.
+{n} fault-free streams of {h.training + h.later} days with {h.per_day} results a day; one alarm in {every:g} days allowed. Centre and
+limits are learned on the first {h.training} days ({early:g} alarms allowed), by the bootstrap over days with {h.draws} pseudo-histories,
+as `pbm tune` does; the last {h.later} days are counted ({later:g} allowed) and compared with the 90 % interval that the plan states as
+`held_out.predicted`. A count is a whole number, and an interval of whole numbers holds at least 90 %, mostly more. Asked for: a mean rate
+between 0.7 and 1.25 of the budget, and about 90 % of streams inside. In brackets: standard error; exact 90 % interval.
 """.strip().splitlines()
     yield ""
     yield "| stream | candidate | mean rate of later alarms to the budget | streams inside the predicted interval |"

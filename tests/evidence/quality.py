@@ -134,17 +134,14 @@ def racer(runner: Runner) -> Racer:
 
 def lines() -> Iterator[str]:
     """The section."""
-    yield from (
-        f"""
-Independent standard normal results, one known shift, one false alarm in {IN_CONTROL:,} results. The search compares {{candidates}} candidates on
-{RESULTS:,} results at {onsets_for(1):,} onsets. Then every monitor's limits are set to the same simulated run length in control
-({IN_CONTROL:,} results, over {len(_in_control()):,}) and it is raced over {RUNS:,} onsets in mid-stream. Given are mean results until the alarm, and
+    tried, onsets, long = len(searched(SHIFTS[0])[0]), onsets_for(1), len(_in_control())
+    yield from f"""
+Independent standard normal results, one known shift, one false alarm in {IN_CONTROL:,} results. The search compares {tried} candidates on
+{RESULTS:,} results at {onsets:,} onsets. Then every monitor's limits are set to the same simulated run length in control
+({IN_CONTROL:,} results, over {long:,}) and it is raced over {RUNS:,} onsets in mid-stream. Given are mean results until the alarm, and
 their ratio to those of the optimal CUSUM of that shift, which no monitor can undercut by more than the error of the simulation. Asked for:
 at most {ASKED:g} for the chosen one.
-""".strip()
-        .format(candidates=len(searched(SHIFTS[0])[0]))
-        .splitlines()
-    )
+""".strip().splitlines()
     yield from ("", "| shift, SD | monitor | | results needed | to the optimum |", "|---|---|---|---|---|")
     for shift in SHIFTS:
         best = (optimum := optimal(shift)).delay(shift)
