@@ -18,6 +18,8 @@ HEAD = """
 
 Written by `python -m tests.evidence.tuning` from the modules in `tests/evidence/`; do not edit. Every draw is seeded in its module, so that
 the same versions give the same figures on every machine; these are of {versions}.
+
+Not measured on this page yet: general drift detectors against the plan's monitors, and what the search costs.
 """
 LIBRARIES = ("numpy", "scipy", "numba", "statsmodels")
 # Module and heading; a section that writes its own heading has none here.
