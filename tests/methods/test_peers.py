@@ -91,3 +91,11 @@ def test_a_stream_that_no_setting_keeps_quiet_is_told() -> None:
 def test_asking_for_the_peers_does_not_load_river() -> None:
     code = "import sys, pbm.methods.peers; sys.exit('river' in sys.modules)"
     assert subprocess.run([sys.executable, "-c", code], check=False).returncode == 0
+
+
+@each_peer
+def test_there_are_no_more_alarms_than_there_are(peer: str) -> None:
+    monitor, z = PeerMonitor(peer, KEEN[peer], LEVEL, SPREAD), stream(600)
+    count = len(monitor.alarms(z))
+    assert monitor.alarms_within(z, count) and monitor.alarms_within(z, count + 0.5)
+    assert not monitor.alarms_within(z, count - 0.5) and not monitor.alarms_within(z, 0)
