@@ -24,7 +24,7 @@ class FeedError(PbmError):
     """The live feed or its store cannot go on; nothing that was acknowledged is lost."""
 
 
-class StoreWaits(FeedError):
+class StoreWaits(FeedError):  # noqa: N818  named for what it does, which passes
     """The store cannot take anything now (its disk is full, or it is locked); the same may be tried again when that has passed."""
 
 

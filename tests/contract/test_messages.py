@@ -35,7 +35,8 @@ def in_order(items: Iterable[Item]) -> list[Result]:
 
 
 def by_lines(path: Path, lab: Lab) -> list[Result]:
-    file, items = FollowedFile(path, lab.extract), []
+    file = FollowedFile(path, lab.extract)
+    items: list[Item] = []
     reader = Reader(lab, lab.extract.decimal, lab.extract.time_format, kinds_given=lab.extract.kind is not None)
     while chunk := file.read():
         items += read_chunk(chunk, reader).items
@@ -49,7 +50,8 @@ def by_ndjson(path: Path, lab: Lab) -> list[Result]:
 
 
 def by_messages(path: Path, lab: Lab) -> list[Result]:
-    reader, framer, items = MessageReader(lab), Framer(10_000), []
+    reader, framer = MessageReader(lab), Framer(10_000)
+    items: list[Item] = []
     content = path.read_bytes().replace(b"\rMSH|", b"\r\x1c\r\x0bMSH|")
     for event in framer.feed(framed(content)):
         assert isinstance(event, Frame)

@@ -53,6 +53,7 @@ def test_a_start_inside_a_frame_begins_another() -> None:
 def test_a_frame_of_the_largest_size_is_taken_and_one_byte_more_is_not() -> None:
     assert events([framed(b"x" * LARGEST)]) == [Frame(b"x" * LARGEST)]
     too_long, after = events([framed(b"x" * (LARGEST + 1)), framed(b"after")])
+    assert isinstance(too_long, Fault)
     assert (too_long.kind, too_long.head) == ("too long", b"x" * (LARGEST + 1) + b"\x1c")
     assert after == Frame(b"after")
 
