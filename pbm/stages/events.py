@@ -92,4 +92,4 @@ def _identity(event: LabEvent) -> _Identity:
 
 
 def _is_too_old(event: LabEvent, newest: list[int]) -> bool:
-    return bool(newest) and event.kind not in CONTROLS and event.time < newest[-1] - OLD
+    return bool(newest) and event.kind not in CONTROLS and event.time < newest[0] - OLD

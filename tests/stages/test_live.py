@@ -53,6 +53,13 @@ def test_a_result_sent_twice_counts_once() -> None:
     assert batch.snapshots[0].taken == 2
 
 
+def test_wrong_dates_now_and_then_never_shut_out_what_follows() -> None:
+    some = results([140.0] * 300)
+    wrong = {place: replace(some[place], time=some[place].time + 400 * 24 * HOUR) for place in range(20, 300, 25)}
+    batch = take(live(), [wrong.get(place, one) for place, one in enumerate(some)])
+    assert len(wrong) > 2 * NEWEST and {kept.left_out for kept in batch.results} == {""}
+
+
 def test_a_further_run_of_a_specimen_within_a_day_is_kept_but_no_monitor_takes_it() -> None:
     first = results([140])[0]
     rerun = replace(first, time=first.time + HOUR, value=155.0)
