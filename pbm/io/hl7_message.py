@@ -4,6 +4,7 @@ import codecs
 from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import UTC, datetime
+from functools import lru_cache
 from hashlib import sha256
 
 from pbm.io.hl7_ack import answer, codes
@@ -17,6 +18,7 @@ from pbm.records.reading import Item, Message, Remark, SetAside
 
 TAKEN = "AA"
 REFUSED = "message refused: "
+_BEFORE = codecs.BOM_UTF8 + b"\r\n"  # bytes that may stand before a header
 
 
 @dataclass(frozen=True, slots=True)
@@ -98,9 +100,8 @@ class MessageReader:
 
 def _header(content: bytes) -> Header | None:
     """The header byte for byte: so an answer repeats its parts as they came, whatever the characters."""
-    end = content.find(b"\r", 4)
-    first = content if end < 0 else content[: end + 1]
-    return Header.of(first.removeprefix(codecs.BOM_UTF8).decode("latin-1"))
+    first = content.lstrip(_BEFORE).partition(b"\r")[0]
+    return Header.of(first.decode("latin-1"))
 
 
 def _refused(header: Header | None, refusal: RefusedMessageError, place: int, at: int) -> Received:
@@ -109,8 +110,12 @@ def _refused(header: Header | None, refusal: RefusedMessageError, place: int, at
 
 
 def _answers(header: Header | None, refusal: RefusedMessageError | None, place: int, at: int) -> list[bytes]:
-    stamp = datetime.fromtimestamp(at / 1e6, UTC).strftime("%Y%m%d%H%M%S+0000")
     return [
-        answer(header, code, refusal, stamp, f"{at:x}.{place}{code[0]}").encode("latin-1")
+        answer(header, code, refusal, _stamp(at // 1_000_000), f"{at:x}.{place}{code[0]}").encode("latin-1")
         for code in codes(header, refusal)
     ]
+
+
+@lru_cache(16)
+def _stamp(second: int) -> str:
+    return datetime.fromtimestamp(second, UTC).strftime("%Y%m%d%H%M%S+0000")

@@ -178,3 +178,10 @@ def test_a_message_is_known_by_sender_number_and_content() -> None:
 def test_a_message_without_results_is_taken() -> None:
     assert code_and_error(hl7.parse(received(LAB, message("PID|1")).answers[0].decode()))[0] == "AA"
     assert received(LAB, oru(obx(test=SODIUM))).message is not None
+
+
+@pytest.mark.parametrize("before", [b"\r\r\r\r\r\r", b"\xef\xbb\xbf", b"\r\n\r\n"])
+def test_blank_lines_and_a_byte_order_mark_before_a_message_do_no_harm(before: bytes) -> None:
+    found = received(LAB, before + oru())
+    assert [one.value for one in found.items if isinstance(one, Reading)] == ["138"]
+    assert b"MSA|AA|000001" in found.answers[0]
