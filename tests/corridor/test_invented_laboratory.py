@@ -70,7 +70,7 @@ def test_sodium_is_useful_and_halves_the_worst_case(tern_bay: Path, tmp_path: Pa
     done("tune", "sodium@line-2", "--lab", folder)
     done("appraise", "--lab", folder)
     (stream,) = json.loads((folder / "reports" / "appraisal.json").read_text())["streams"]
-    worst = stream["monitors"][0]["worst_unreliable"]
+    worst = stream["judged"]["worst_unreliable"]
     assert stream["verdict"] == "useful"
     assert worst["with_monitor"]["value"] < 0.5 * worst["alone"]["value"]
 
