@@ -17,7 +17,7 @@ class Figure(Found):
     value
         The figure.
     low, high
-        Its 90 % interval; from the bootstrap over days unless told otherwise.
+        Its 90 % interval; from the bootstrap over days and the wandering of the level from lot to lot, unless told otherwise.
     """
 
     value: float

@@ -207,7 +207,7 @@ class PeerAppraisal(Found):
     unreliable
         Expected unreliable results with it beside the controls.
     share_fewer
-        How many fewer than with the controls alone, as a share.
+        How many fewer than with the controls alone, as a share. Intervals here are those of the days alone, since all meet the same level.
     """
 
     name: str
