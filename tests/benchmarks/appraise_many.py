@@ -1,4 +1,4 @@
-"""How long `pbm appraise` takes for 40 streams of 100 days, and how much memory its processes hold together. Run by hand: it prints figures.
+"""How long `pbm appraise` takes for 40 streams of 100 days, and how much memory its processes hold. Run by hand: it prints figures.
 
 python -m tests.benchmarks.appraise_many [STREAMS [DAYS]]
 
@@ -21,7 +21,7 @@ from synthetic_streams.export import clean_lines, write_lines
 from synthetic_streams.lab_file import lab_toml
 from synthetic_streams.rows import join, patient_rows
 
-PBM = (sys.executable, "-m", "pbm.commands.main")
+PBM = (sys.executable, "-c", "from pbm.commands.main import main; main()")
 TWIN = "-twin"  # analysers of a second invented laboratory, which makes up the number
 
 
