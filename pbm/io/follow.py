@@ -79,7 +79,8 @@ class FollowedFile:
     def __init__(self, path: Path, columns: Extract, position: str = "") -> None:
         self.source = str(path.absolute())
         self.notices: list[str] = []
-        self._path, self._columns = path, columns
+        # A live file need not hold what only a history is asked for.
+        self._path, self._columns = path, columns.model_copy(update={"priority": None, "lot": None})
         self._at = Position.parse(position)
         self._heading: Heading | None = None
         self._file = self._opened()
