@@ -9,7 +9,7 @@ measured by the rates of the other weeks. Beyond the longest gap but r, u_r, the
     gaps longer than u = r (1 + (u - u_r) / (r m))^-r in as many days,
 
 the predictive tail of exponential excesses whose mean was estimated from r. The silence allowed is the u at which that count is the number
-of false notices that one is ready to bear.
+of false notices that one is ready to bear. However evenly results came, a silence in which fewer than three were to be expected is none.
 
 Sources. Excesses over a high level: "Statistical inference using extreme order statistics", Annals of Statistics 1975;3:119-131.
 Predictive tail: "Statistical prediction analysis", Cambridge University Press 1975 (from memory).
@@ -26,6 +26,7 @@ from pbm.methods.jit import Floats, Integers
 
 LONGEST = 14 * 24  # hours that a silence is looked ahead: with no result expected in so many it has no end
 TAIL_GAPS = 40
+LEAST = 3.0  # expected results in a silence worth telling
 _WEEK = HOURS_A_WEEK * MICROSECONDS_PER_HOUR
 _QUARTER = MICROSECONDS_PER_HOUR // 4  # every time zone is off by whole quarters of an hour
 
@@ -94,9 +95,9 @@ def allowed_silence(gaps: Floats, days: float, per_day: float) -> float:
     level, excesses = float(longest[-1]), longest[:-1] - longest[-1]
     wanted = per_day * days
     if wanted >= len(excesses):
-        return float(np.quantile(gaps, max(0.0, 1 - wanted / len(gaps))))
+        return max(LEAST, float(np.quantile(gaps, max(0.0, 1 - wanted / len(gaps)))))
     beyond = len(excesses) * (math.pow(len(excesses) / wanted, 1 / len(excesses)) - 1)
-    return level + float(excesses.mean()) * beyond
+    return max(LEAST, level + float(excesses.mean()) * beyond)
 
 
 def expected_between(begin: int, end: int, rates: tuple[float, ...], zone: ZoneInfo) -> float:

@@ -36,8 +36,6 @@ def learn_rhythm(time: Integers, zone: ZoneInfo, false_per_day: float) -> Rhythm
         return None
     rates = results_by_hour(time, zone)
     allowed = allowed_silence(expected_by_other_weeks(time, zone), days, false_per_day)
-    if not allowed > 0:
-        return None
     return Rhythm(
         quiet_at=_rounded(allowed), false_per_day=_rounded(false_per_day), by_hour=tuple(map(_rounded, rates.tolist()))
     )

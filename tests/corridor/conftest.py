@@ -28,7 +28,7 @@ def hdl(tmp_path_factory: pytest.TempPathFactory) -> Path:
     folder = tmp_path_factory.mktemp("hdl")
     write_hdl(folder)
     done("intake", folder / "hdl.csv", "--lab", folder)
-    done("tune", "--lab", folder, "--workers", "1")
+    done("tune", "--quick", "--lab", folder, "--workers", "1")
     return folder
 
 
@@ -38,7 +38,7 @@ def light_chain_study(tmp_path_factory: pytest.TempPathFactory) -> Path:
     folder = tmp_path_factory.mktemp("flchain")
     write_light_chain_study(folder)
     done("intake", folder / "flchain.csv", "--lab", folder)
-    done("tune", "--lab", folder, "--workers", "1")
+    done("tune", "--quick", "--lab", folder, "--workers", "1")
     return folder
 
 

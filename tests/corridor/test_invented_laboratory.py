@@ -24,7 +24,7 @@ def decided(folder: Path) -> Plan:
     return plan.model_copy(update={"made": plan.made.model_copy(update={"at": None})})
 
 
-STREAMS = ("sodium@line-2", "calcium@line-1", "alt@line-1", "tsh@immuno-1")
+STREAMS = ("calcium@line-1", "alt@line-1", "tsh@immuno-1")
 
 
 def test_the_account_of_intake_is_the_truth_of_the_generator(tern_bay: Path, tmp_path: Path) -> None:
@@ -54,20 +54,20 @@ def test_plan_and_appraisal_do_not_depend_on_the_number_of_workers_and_are_the_s
     folder = copied(tern_bay, tmp_path)
     outcomes = []
     for workers in ("1", "2"):
-        done("tune", *STREAMS, "--lab", folder, "--workers", workers)
+        done("tune", "--quick", *STREAMS, "--lab", folder, "--workers", workers)
         done("appraise", *STREAMS, "--lab", folder, "--workers", workers)
         text = json.loads((folder / "reports" / "appraisal.json").read_text())
         text.pop("plan_sha256")  # the plan holds the moment at which it was made
         outcomes.append((decided(folder), text))
         (folder / "plan.toml").unlink()
     assert outcomes[0] == outcomes[1]
-    done("tune", *STREAMS, "--lab", folder, "--seed", "2")
+    done("tune", "--quick", *STREAMS, "--lab", folder, "--seed", "2")
     assert decided(folder) != outcomes[0][0]
 
 
 def test_sodium_is_useful_and_halves_the_worst_case(tern_bay: Path, tmp_path: Path) -> None:
     folder = copied(tern_bay, tmp_path)
-    done("tune", "sodium@line-2", "--lab", folder)
+    done("tune", "--quick", "sodium@line-2", "--lab", folder)
     done("appraise", "--lab", folder)
     (stream,) = json.loads((folder / "reports" / "appraisal.json").read_text())["streams"]
     worst = stream["judged"]["worst_unreliable"]
@@ -79,7 +79,7 @@ def test_the_live_error_is_found_after_its_onset_and_before_it_has_cost_what_the
     tern_bay: Path, tmp_path: Path
 ) -> None:
     folder = copied(tern_bay, tmp_path)
-    done("tune", "sodium@line-2", "--lab", folder)
+    done("tune", "--quick", "sodium@line-2", "--lab", folder)
     lines = done("watch", "--from", str(folder / "live.csv"), "--once", "--json", "--lab", folder).splitlines()
     alarms = [json.loads(line) for line in lines if line.startswith("{")]
     (fault,) = json.loads((folder / "faults.json").read_text())["faults"]

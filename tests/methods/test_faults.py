@@ -164,5 +164,6 @@ def test_both_signs_meet_the_same_chance() -> None:
 
 def test_a_fault_is_labelled_as_people_write_it() -> None:
     assert str(Fault("shift", 0.5, "TEa", -1)) == "shift -0.5 TEa"
-    assert str(Fault("drift", 2.0, "SD", 1, over=9)) == "drift +2 SD"
+    assert str(Fault("drift", 2.0, "SD", 1, over=9)) == "drift +2 SD over 9 results"
+    assert str(Fault("sporadic", 3.0, "SD", -1, share=0.2)) == "sporadic -3 SD in 0.2 of results"
     assert str(Fault("noise", 2.0, "")) == "noise x2"
