@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from scipy.stats import boxcox_normmax
 
-from pbm.methods.chain import Preparation, Tracker, tracker_for
+from pbm.methods.chain import Preparation, Tracker, centred
 from pbm.methods.jit import Floats
 from pbm.methods.truncations import SKEWED, TruncationGrid, skewness
 
@@ -117,13 +117,13 @@ class Candidate:
             math.isfinite(self.preparation.low) + math.isfinite(self.preparation.high) + self.preparation.winsorize,
         )
 
-    def tracker(self, z: Floats) -> Tracker:
-        """The statistic centred on its in-control level over prepared values z, shape (n,)."""
+    def centred(self, z: Floats) -> tuple[Tracker, Floats]:
+        """The statistic centred on its in-control level over prepared values z, shape (n,), and its path over them."""
         more = dict(self.more)
         if "beyond" in more:
             share = more.pop("beyond")
             more["low"], more["high"] = (float(end) for end in np.nanquantile(z, (share, 1 - share)))
-        return tracker_for(z, self.statistic, self.parameter, **more)
+        return centred(z, self.statistic, self.parameter, **more)
 
 
 def preparations(x: Floats, step: float, random: np.random.Generator, grid: Grid = WHOLE_GRID) -> list[Preparation]:

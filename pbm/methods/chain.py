@@ -9,9 +9,9 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from pbm.methods.admit import admit
-from pbm.methods.alarm import REARM, Limits, episodes_before, judge
+from pbm.methods.alarm import REARM, Limits, judge
 from pbm.methods.baseline import Baseline, Mix
-from pbm.methods.jit import Floats, Integers, mapped, mapped_pairs, run_ends, scan, states_at, until
+from pbm.methods.jit import Floats, Integers, mapped, mapped_pairs, run_ends, scan, standing_at, states_at, until
 from pbm.methods.statistics import STATISTICS, Statistic
 from pbm.methods.transform import TRANSFORMS
 
@@ -155,7 +155,8 @@ class Tracker:
 
     def standing(self, z: Floats, limits: Limits, at: Integers) -> "Standing":
         """The monitor before each index of `at` (not decreasing), having run from a fresh start."""
-        return Standing(self.states_at(z, at), episodes_before(self.path(z), limits, at))
+        begun = np.array(self.start())
+        return Standing(*standing_at(self.law.step, judge, begun, z, self.par, limits, at))
 
     def first_alarms(
         self, z: Floats, standing: "Standing", starts: Integers, ends: Integers, limits: Limits
@@ -195,7 +196,12 @@ class Standing:
 
 
 def tracker_for(z: Floats, statistic: str, parameter: float, **more: float) -> Tracker:
-    """The statistic centred on its in-control level over prepared values.
+    """The statistic centred on its in-control level over prepared values; see `centred`."""
+    return centred(z, statistic, parameter, **more)[0]
+
+
+def centred(z: Floats, statistic: str, parameter: float, **more: float) -> tuple[Tracker, Floats]:
+    """The statistic centred on its in-control level over prepared values, and its path over them.
 
     Parameters
     ----------
@@ -205,6 +211,13 @@ def tracker_for(z: Floats, statistic: str, parameter: float, **more: float) -> T
         A name in the table of statistics, and its window, weight or reference.
     **more
         Its other parameters by name; the level and spread of the values are taken from z where not given.
+
+    Returns
+    -------
+    tracker
+        The statistic.
+    path : (n,)
+        From a fresh start.
 
     Raises
     ------
@@ -220,6 +233,10 @@ def tracker_for(z: Floats, statistic: str, parameter: float, **more: float) -> T
     if not set(more) <= set(wanted) <= set(known):
         raise ValueError(f"statistic {statistic} takes {wanted} beside its {law.parameter}, got {tuple(more)}")
     begun = Tracker(statistic, parameter, learned[law.begins], tuple(float(known[name]) for name in wanted))
-    path = begun.path(z) if law.settles else np.zeros(0)
-    judged = path[~np.isnan(path)]
-    return replace(begun, centre=float(judged.mean())) if len(judged) else begun
+    path = begun.path(z)
+    judged = path[~np.isnan(path)] if law.settles else np.zeros(0)
+    if not len(judged):
+        return begun, path
+    settled = replace(begun, centre=float(judged.mean()))
+    # A statistic that does not start from its centre runs the same way wherever the centre lies.
+    return settled, path if settled.start() == begun.start() else settled.path(z)

@@ -102,6 +102,34 @@ def _states_loop(step: Step) -> Callable[..., Any]:
 
 
 @cache
+def _standing_loop(step: Step, judge: Judge) -> Callable[..., Any]:
+    law, rule = compiled(step), compiled(judge)
+
+    def loop(
+        state: Floats,
+        xs: Floats,
+        par: Parameters,
+        limits: tuple[float, float, float, float],
+        at: Integers,
+        out: Floats,
+        episodes: Integers,
+    ) -> None:
+        low, high, centre, rearm = limits
+        i = 0
+        episode = 0
+        for j in range(len(at)):
+            while i < at[j]:
+                if xs[i] == xs[i]:
+                    episode = rule(episode, law(state, xs[i], par), low, high, centre, rearm)
+                i += 1
+            for c in range(len(state)):
+                out[j, c] = state[c]
+            episodes[j] = episode
+
+    return compiled(loop)
+
+
+@cache
 def _run_ends_loop(step: Step) -> Callable[..., Any]:
     law = compiled(step)
 
@@ -216,6 +244,27 @@ def states_at(step: Step, state: Floats, xs: Floats, par: Parameters, at: Intege
     out = np.empty((len(at), len(state)))
     _states_loop(step)(state.copy(), xs, par, at, out)
     return out
+
+
+def standing_at(
+    step: Step,
+    judge: Judge,
+    state: Floats,
+    xs: Floats,
+    par: Parameters,
+    limits: tuple[float, float, float, float],
+    at: Integers,
+) -> tuple[Floats, Integers]:
+    """State of the statistic and of the alarm machine before each of the given indices (not decreasing), from an armed start.
+
+    Returns
+    -------
+    (r, s), (r,)
+        One state and one episode per index.
+    """
+    out, episodes = np.empty((len(at), len(state))), np.empty(len(at), dtype=np.int64)
+    _standing_loop(step, judge)(state.copy(), xs, par, limits, at, out, episodes)
+    return out, episodes
 
 
 def run_ends(step: Step, begin: Floats, xs: Floats, par: Parameters, low: float, high: float) -> Integers:

@@ -42,8 +42,8 @@ def limited(stretch: Stretch, given: Sequence[Candidate], expected: float, upper
     for preparation, group in _by_preparation(given).items():
         z = stretch.prepared(preparation)
         for candidate in group if np.isfinite(z).sum() > 1 else []:
-            tracker = candidate.tracker(z)
-            if (limits := quick_limits(tracker.path(z), tracker.centre, expected, upper)) is not None:
+            tracker, path = candidate.centred(z)
+            if (limits := quick_limits(path, tracker.centre, expected, upper)) is not None:
                 runners.append(Runner(candidate, tracker, tracker.admissible(limits)))
     return runners
 

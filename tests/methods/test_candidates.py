@@ -75,9 +75,9 @@ def test_a_statistic_that_goes_by_order_is_not_tried_on_a_transform() -> None:
 
 def test_a_moving_share_counts_beyond_quantiles_of_the_values_that_it_takes() -> None:
     z = np.append(np.arange(1001.0), np.nan)
-    tracker = Candidate(Preparation(), "share", 50, (("beyond", 0.05),)).tracker(z)
+    tracker = Candidate(Preparation(), "share", 50, (("beyond", 0.05),)).centred(z)[0]
     assert tracker.named == {"window": 50, "low": 50.0, "high": 950.0}
-    batch = Candidate(Preparation(), "batch", 10, (("exponent", 0.5),)).tracker(z)
+    batch = Candidate(Preparation(), "batch", 10, (("exponent", 0.5),)).centred(z)[0]
     assert batch.named == {"window": 10, "exponent": 0.5}
 
 
