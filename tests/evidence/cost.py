@@ -24,8 +24,8 @@ def section() -> str:
             "These figures are of the machine that wrote the page (a shared one with "
             f"{os.cpu_count()} processors), in seconds of one processor; another gives others.",
             "",
-            f"One stream of 100,000 results, {found.rounds[0][0]} candidates, 10 sizes to either side, all three rounds: {again:.1f} s, and "
-            f"{first:.1f} s in a new process, which compiles the loops first. Asked for: at most 20 s.",
+            f"One stream of 100,000 results, {found.rounds[0][0]} candidates, 10 sizes to either side, all three rounds: {again:.1f} s, "
+            f"and {first:.1f} s in a new process, which compiles the loops first. Asked for: at most 20 s.",
             "",
             "Eight candidates of it (EWMA, moving mean, moving median, CUSUM), first round, against the same written with pandas and numpy "
             f"(`tests/benchmarks/naive_search.py`; the scores agree): {Race().ratio():.0f} times as fast. Asked for: 30.",
