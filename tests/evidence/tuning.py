@@ -1,4 +1,4 @@
-"""Write docs/evidence/tuning.md: what `pbm tune` chooses, against what is best; limits on later days; what the patient mix is worth.
+"""Write docs/evidence/tuning.md: what `pbm tune` chooses, against what is best and what is common; limits on later days; the patient mix.
 
 Run as `python -m tests.evidence.tuning` at the top of the tree. Sections run side by side, each as a process of its own.
 """
@@ -19,14 +19,15 @@ HEAD = """
 Written by `python -m tests.evidence.tuning` from the modules in `tests/evidence/`; do not edit. Every draw is seeded in its module, so that
 the same versions give the same figures on every machine; these are of {versions}.
 
-Not measured on this page yet: general drift detectors against the plan's monitors, and what the search costs.
+Not measured on this page yet: what the search costs.
 """
-LIBRARIES = ("numpy", "scipy", "numba", "statsmodels")
+LIBRARIES = ("numpy", "scipy", "numba", "statsmodels", "river")
 # Module and heading; a section that writes its own heading has none here.
 SECTIONS = {
     "quality": "The chosen monitor and the best possible one",
     "honesty": "Limits on days that taught them nothing",
     "patient_mix": "",
+    "peers": "General drift detectors and the plan's monitors",
 }
 
 
