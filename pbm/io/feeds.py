@@ -1,17 +1,19 @@
-"""The feeds at work: a file polled, standard input read, a history paced; what they bring is handed over while more is being read.
+"""The feeds at work: a file polled, standard input read, a history paced; what they bring is handed over in batches.
 
-Everything that queued while the last batch was kept goes into the next one, up to `QUEUE` chunks: nothing ever waits for a clock. When
-nothing comes for a while the taker is called with nothing, since silence may mean something too. A feed is told when its chunk is kept.
-While the store cannot take a batch it is tried again and again, and nothing more is read. SIGINT and SIGTERM stop the feeds; what was read
-by then is still handed over. Only this module and feeds_mllp.py know asyncio.
+Everything that came while the last batch was kept goes into the next one, up to `QUEUE` chunks: nothing ever waits for a clock. A batch is
+taken in the thread that reads: the way to another thread and back would be a tenth or more of the work on the message of a sender that
+waits for its answer, and would win no more than the wait for the disk. When nothing comes for a while the taker is called with nothing,
+since silence may mean something too. A feed is told when its chunk is kept. While the store cannot take a batch it is tried again and
+again, and nothing more is read. SIGINT and SIGTERM stop the feeds; what was read by then is still handed over. Only this module and
+feeds_mllp.py know asyncio.
 """
 
 import asyncio
 import os
+import queue
 import signal
 import threading
 from collections.abc import AsyncGenerator, Callable, Iterable, Iterator, Sequence
-from concurrent.futures import ThreadPoolExecutor
 from contextlib import aclosing, suppress
 
 from pbm.errors import StoreWaits
@@ -98,12 +100,14 @@ class LineFeed(Feed):
 
     async def chunks(self) -> AsyncGenerator[Chunk]:
         """Lines as they come."""
-        loop, queue = asyncio.get_running_loop(), asyncio.Queue[list[bytes] | None](1)
+        loop, come = asyncio.get_running_loop(), asyncio.Event()
+        read: queue.Queue[list[bytes] | None] = queue.Queue(QUEUE)
 
         def hand_over(lines: list[bytes] | None) -> None:
+            read.put(lines)
             # When the loop has ended meanwhile nobody waits for the lines any more.
-            with suppress(RuntimeError, asyncio.CancelledError):
-                asyncio.run_coroutine_threadsafe(queue.put(lines), loop).result()
+            with suppress(RuntimeError):
+                loop.call_soon_threadsafe(come.set)
 
         def wait_for_lines() -> None:
             for lines in _lines(self._descriptor):
@@ -112,14 +116,14 @@ class LineFeed(Feed):
 
         threading.Thread(target=wait_for_lines, daemon=True).start()
         place = 0
-        while lines := await queue.get():
-            yield Chunk(
-                self._source,
-                self._edition,
-                [read_line(number, line) for number, line in enumerate(lines, start=place + 1)],
-                str(self._edition),
-            )
-            place += len(lines)
+        while await come.wait():
+            come.clear()
+            while not read.empty():
+                if (lines := read.get_nowait()) is None:
+                    return
+                items = [read_line(number, line) for number, line in enumerate(lines, start=place + 1)]
+                yield Chunk(self._source, self._edition, items, str(self._edition))
+                place += len(lines)
 
 
 def _lines(descriptor: int) -> Iterator[list[bytes]]:
@@ -146,10 +150,10 @@ def run(feeds: Sequence[Feed], prepare: Prepare, take: Take, every: float = IDLE
     feeds
         Where results come from.
     prepare
-        Called with each chunk as it comes, while the batch before is being kept.
+        Called with each chunk as it comes.
     take
-        Called in a thread of its own, one call at a time, with the prepared chunks that queued meanwhile. If it raises `StoreWaits` it is
-        called again with the same ones until it does not, or until a signal comes; its other errors end the run.
+        Called with the prepared chunks that queued; nothing is read until it returns. If it raises `StoreWaits` it is called again with
+        the same ones until it does not, or until a signal comes; its other errors end the run.
     every
         When no chunk came for so many seconds, `take` is called without any.
     """
@@ -168,37 +172,36 @@ class _Run:
         for number in (signal.SIGINT, signal.SIGTERM):
             asyncio.get_running_loop().add_signal_handler(number, self._stopped.set)
         reading = asyncio.create_task(self._read_until_stopped())
-        with ThreadPoolExecutor(1) as worker:
-            try:
-                while batch := await self._queued(worker):
-                    await self._keep(worker, [chunk for _, chunk in batch])
-                    for feed, _ in batch:
-                        feed.kept()
-            except BaseException:
-                reading.cancel()
-                with suppress(BaseException):
-                    await reading
-                raise
-            finally:
-                for feed in self._feeds:
-                    await feed.end()
+        try:
+            while batch := await self._queued():
+                await self._keep([chunk for _, chunk in batch])
+                for feed, _ in batch:
+                    feed.kept()
+        except BaseException:
+            reading.cancel()
+            with suppress(BaseException):
+                await reading
+            raise
+        finally:
+            for feed in self._feeds:
+                await feed.end()
         await reading
 
-    async def _keep(self, worker: ThreadPoolExecutor, chunks: Sequence[Chunk]) -> None:
+    async def _keep(self, chunks: Sequence[Chunk]) -> None:
         """Have a batch kept, however long the store cannot take it."""
         while True:
             try:
-                return await asyncio.get_running_loop().run_in_executor(worker, self._take, chunks)
+                return self._take(chunks)
             except StoreWaits:
                 if self._stopped.is_set():
                     raise
                 with suppress(TimeoutError):
                     await asyncio.wait_for(self._stopped.wait(), AGAIN)
 
-    async def _queued(self, worker: ThreadPoolExecutor) -> list[tuple[Feed, Chunk]]:
+    async def _queued(self) -> list[tuple[Feed, Chunk]]:
         """What is queued, at least one chunk; nothing when all has been read."""
         batch: list[tuple[Feed, Chunk]] = []
-        given = await self._next(worker)
+        given = await self._next()
         while given is not None:
             batch.append(given)
             if self._queue.empty() or len(batch) == QUEUE:
@@ -207,14 +210,14 @@ class _Run:
         self._queue.put_nowait(None)  # met again when this batch is done
         return batch
 
-    async def _next(self, worker: ThreadPoolExecutor) -> tuple[Feed, Chunk] | None:
+    async def _next(self) -> tuple[Feed, Chunk] | None:
         """The next of the queue; while there is none, the taker is called now and then."""
         while True:
             try:
                 async with asyncio.timeout(self._every):
                     return await self._queue.get()
             except TimeoutError:
-                await self._keep(worker, [])
+                await self._keep([])
 
     async def _read_until_stopped(self) -> None:
         """Fill the queue until every feed has ended, one has failed, or a signal came; then mark its end."""
