@@ -1,6 +1,7 @@
 """Work in processes of this machine; a process that dies is told by its stream, and the other streams go on."""
 
 import os
+import signal
 import threading
 import time
 from collections.abc import Generator, Iterable, Iterator, Sequence
@@ -63,6 +64,7 @@ def _parallel(jobs: Iterable[Job[T]], workers: int) -> Iterator[Done[T]]:
 
 
 def _in_worker(job: Job[T], command: int) -> Done[T]:
+    signal.signal(signal.SIGINT, signal.SIG_IGN)  # Ctrl-C reaches the whole group; the command stops, and ends its workers
     if not any(thread.name == _Watch.NAME for thread in threading.enumerate()):
         _Watch(command).start()
     return job()

@@ -24,7 +24,7 @@ def decided(folder: Path) -> Plan:
     return plan.model_copy(update={"made": plan.made.model_copy(update={"at": None})})
 
 
-STREAMS = ("calcium@line-1", "alt@line-1", "tsh@immuno-1")
+STREAMS = ("calcium@line-1", "tsh@immuno-1")
 
 
 def test_the_account_of_intake_is_the_truth_of_the_generator(tern_bay: Path, tmp_path: Path) -> None:
