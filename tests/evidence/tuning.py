@@ -17,9 +17,7 @@ HEAD = """
 # Tuning: figures
 
 Written by `python -m tests.evidence.tuning` from the modules in `tests/evidence/`; do not edit. Every draw is seeded in its module, so that
-the same versions give the same figures on every machine; these are of {versions}.
-
-Not measured on this page yet: what the search costs.
+the same versions give the same figures on every machine (but for the last section, on cost); these are of {versions}.
 """
 LIBRARIES = ("numpy", "scipy", "numba", "statsmodels", "river")
 # Module and heading; a section that writes its own heading has none here.
@@ -28,6 +26,7 @@ SECTIONS = {
     "honesty": "Limits on days that taught them nothing",
     "patient_mix": "",
     "peers": "General drift detectors and the plan's monitors",
+    "cost": "What the search costs",
 }
 
 
