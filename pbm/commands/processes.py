@@ -64,7 +64,9 @@ def _parallel(jobs: Iterable[Job[T]], workers: int) -> Iterator[Done[T]]:
 
 
 def _in_worker(job: Job[T], command: int) -> Done[T]:
-    signal.signal(signal.SIGINT, signal.SIG_IGN)  # Ctrl-C reaches the whole group; the command stops, and ends its workers
+    signal.signal(
+        signal.SIGINT, signal.SIG_IGN
+    )  # Ctrl-C reaches the whole group; the command stops, and ends its workers
     if not any(thread.name == _Watch.NAME for thread in threading.enumerate()):
         _Watch(command).start()
     return job()

@@ -21,7 +21,9 @@ from tests.commands.many_streams import write_history
 from tests.commands.test_tune import LAB
 from tests.commands.test_work import until
 
-RUN = [sys.executable, "-c", "from pbm.commands.main import main; main()"]
+# Whoever runs the tests may have SIGINT ignored, which a child inherits.
+TERMINAL = "import signal; signal.signal(signal.SIGINT, signal.default_int_handler)"
+RUN = [sys.executable, "-c", f"{TERMINAL}; from pbm.commands.main import main; main()"]
 NA, K = StreamName("sodium", "a"), StreamName("potassium", "a/b")
 FOUND = Truncation(low=0.1 + 0.2, high=None, mode="truncate", transform="none", keeps=1 / 3, moves=1e-300)
 BY_HAND = ("--admit", "125:155", "--statistic", "ewma", "--weight", "0.1", "--no-mix")  # quick: one choice
