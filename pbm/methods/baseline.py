@@ -17,6 +17,7 @@ from typing import Any
 import numpy as np
 
 from pbm.methods.jit import Floats, Integers
+from pbm.methods.significant import significant
 
 HOURS = 168
 SIGNIFICANT = 4
@@ -215,4 +216,4 @@ def _shrunk(effects: Floats, counts: Floats, noise: float) -> list[float]:
     sampling = noise / np.maximum(counts, 1)
     between = max(float(np.average(effects**2 - sampling, weights=counts)), 0.0) if seen.any() else 0.0
     kept = np.where(seen, effects * between / (between + sampling) if between > 0 else 0.0, 0.0)
-    return [float(f"{effect:.{SIGNIFICANT}g}") for effect in kept]
+    return [significant(effect, SIGNIFICANT) for effect in kept]

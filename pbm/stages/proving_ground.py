@@ -41,6 +41,7 @@ class ProvingGround:
     training: Stretch
     split: Split
     _chances: dict[Fault, Floats] = field(default_factory=dict)
+    _not_fitted: dict[Preparation, Floats] = field(default_factory=dict)
 
     @property
     def per_day(self) -> float:
@@ -60,11 +61,13 @@ class ProvingGround:
         return faults_of(self.around.analyte)
 
     def not_fitted_to(self, preparation: Preparation) -> Floats:
-        """The training results as prepared, shape (n,), each by a patient-mix baseline that has not seen it."""
+        """The training results as prepared, shape (n,), each by a patient-mix baseline that has not seen it; worked out once."""
         if preparation.baseline is None:
             return self.training.prepared(preparation)
-        y = preparation.transformed(self.training.value, self.training.censor)
-        return cross_fitted(y, self.training.mix, self.split.days[: self.split.at])
+        if preparation not in self._not_fitted:
+            y = preparation.transformed(self.training.value, self.training.censor)
+            self._not_fitted[preparation] = cross_fitted(y, self.training.mix, self.split.days[: self.split.at])
+        return self._not_fitted[preparation]
 
     def early_onsets(self, count: int, horizon_days: float) -> Onsets:
         """Onsets on any training day but the first, for the rounds in which no baseline is fitted yet."""

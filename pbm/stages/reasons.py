@@ -1,7 +1,7 @@
 """Why a stream's monitors are what they are: what was tried, the surface of scores, the runners-up and what they would have cost."""
 
-import math
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -9,11 +9,12 @@ from pbm.methods.candidates import Candidate, More
 from pbm.methods.chain import Preparation
 from pbm.methods.in_control import slope
 from pbm.methods.search import difference_from
+from pbm.methods.significant import significant
 from pbm.methods.statistics import STATISTICS
-from pbm.records.plan import Admit
 from pbm.records.tuning import RunnerUp, Search, StreamTuning, Surface, Truncation
 from pbm.stages.monitor_search import Found
 from pbm.stages.proving_ground import ProvingGround
+from pbm.stages.to_plan import admit_in_plan
 from pbm.stages.words import SCALES, admitted_in_words, parameter_in_words
 
 SIGNIFICANT = 4
@@ -31,25 +32,25 @@ def reasons_of(ground: ProvingGround, found: Sequence[Found], together: str) -> 
     )
 
 
-def _plain(preparation: Preparation) -> tuple[float, float, bool, str, float]:
-    p = preparation
-    return p.low, p.high, p.winsorize, p.transform, p.transform_lambda
+def _plain(preparation: Preparation) -> Preparation:
+    """Truncation and transform alone."""
+    return replace(preparation, baseline=None)
 
 
-def _truncation(ground: ProvingGround, of: tuple[float, float, bool, str, float]) -> Truncation:
-    preparation = Preparation(*of)
+def _truncation(ground: ProvingGround, preparation: Preparation) -> Truncation:
+    admit = admit_in_plan(preparation)
     admitted = np.isfinite(ground.training.prepared(preparation))
     return Truncation(
-        low=_unless_open(preparation.low),
-        high=_unless_open(preparation.high),
-        mode="winsorize" if preparation.winsorize else "truncate",
+        low=admit.low,
+        high=admit.high,
+        mode=admit.mode,
         transform=preparation.transform,
         keeps=_rounded(float(admitted.mean())),
         moves=_rounded(slope(ground.training, preparation)),
     )
 
 
-def _search(ground: ProvingGround, found: Found, place: dict[tuple[float, float, bool, str, float], int]) -> Search:
+def _search(ground: ProvingGround, found: Found, place: dict[Preparation, int]) -> Search:
     mean = found.score.mean(axis=1)
     difference, error = difference_from(found.score, found.winner)
     faults = found.watch.faults
@@ -82,7 +83,7 @@ def _search(ground: ProvingGround, found: Found, place: dict[tuple[float, float,
     )
 
 
-def _surfaces(found: Found, place: dict[tuple[float, float, bool, str, float], int]) -> tuple[Surface, ...]:
+def _surfaces(found: Found, place: dict[Preparation, int]) -> tuple[Surface, ...]:
     """One for each statistic and second parameter that was compared in the first round."""
     mean = found.first_score.mean(axis=1)
     grouped: dict[tuple[str, More], dict[tuple[int, float], float]] = {}
@@ -108,16 +109,11 @@ def _surface(statistic: str, more: More, cells: dict[tuple[int, float], float]) 
 def candidate_in_words(candidate: Candidate, unit: str) -> str:
     """A candidate in one sentence part, such as "EWMA, weight 0.05, results below 125 or above 155 mmol/L left out"."""
     law, prepared = STATISTICS[candidate.statistic], candidate.preparation
-    admit = Admit(
-        low=_unless_open(prepared.low),
-        high=_unless_open(prepared.high),
-        mode="winsorize" if prepared.winsorize else "truncate",
-    )
     parts = [
         law.title,
         parameter_in_words(candidate.statistic, candidate.parameter),
         more_in_words(candidate.more),
-        admitted_in_words(admit, unit),
+        admitted_in_words(admit_in_plan(prepared), unit),
     ]
     mix = ", adjusted for patient mix" if prepared.baseline is not None else ""
     return ", ".join(part for part in parts if part) + SCALES[prepared.transform] + mix
@@ -129,9 +125,5 @@ def more_in_words(more: More) -> str:
     return ", ".join(words[name].format(x) for name, x in more)
 
 
-def _unless_open(limit: float) -> float | None:
-    return limit if math.isfinite(limit) else None
-
-
 def _rounded(x: float) -> float:
-    return float(f"{x:.{SIGNIFICANT}g}")
+    return significant(x, SIGNIFICANT)

@@ -6,6 +6,7 @@ import numpy as np
 
 from pbm.methods.clock_time import MICROSECONDS_PER_DAY
 from pbm.methods.jit import Integers
+from pbm.methods.significant import significant
 from pbm.methods.silence import allowed_silence, expected_by_other_weeks, results_by_hour
 from pbm.records.rhythm import Rhythm
 
@@ -47,4 +48,4 @@ def merged(times: list[Integers]) -> Integers:
 
 
 def _rounded(number: float) -> float:
-    return float(f"{number:.{SIGNIFICANT}g}")
+    return significant(number, SIGNIFICANT)

@@ -17,11 +17,7 @@ def chain_in_plan(preparation: Preparation, tracker: Tracker, z: Floats) -> dict
     """Truncation, transform, baseline, statistic, centre and spread by the keys of a monitor; z (n,) are its in-control values."""
     baseline = preparation.baseline
     return {
-        "admit": Admit(
-            low=_unless_open(preparation.low),
-            high=_unless_open(preparation.high),
-            mode="winsorize" if preparation.winsorize else "truncate",
-        ),
+        "admit": admit_in_plan(preparation),
         "transform": preparation.transform,
         "transform_lambda": preparation.transform_lambda if preparation.transform == "boxcox" else None,
         "baseline": None if baseline is None else baseline_in_plan(baseline),
@@ -30,6 +26,15 @@ def chain_in_plan(preparation: Preparation, tracker: Tracker, z: Floats) -> dict
         "centre": tracker.centre,
         "spread": float(np.nanstd(z)),
     }
+
+
+def admit_in_plan(preparation: Preparation) -> Admit:
+    """Truncation limits; an open side is left out."""
+    return Admit(
+        low=_unless_open(preparation.low),
+        high=_unless_open(preparation.high),
+        mode="winsorize" if preparation.winsorize else "truncate",
+    )
 
 
 def baseline_in_plan(baseline: Baseline) -> BaselinePlan:

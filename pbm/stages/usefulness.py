@@ -8,12 +8,13 @@ import numpy as np
 from pbm.methods.expected import follow
 from pbm.methods.faults import Fault
 from pbm.methods.trials import draw_onsets, trial
+from pbm.methods.verdict import WORTHWHILE
 from pbm.records.plan import Verdict
 from pbm.stages.monitor_search import WINDOWS
 from pbm.stages.proving_ground import ProvingGround
 from pbm.stages.second_monitor import Member, team_scores
 
-WORTHWHILE, SOME_GAIN = 0.1, 0.02
+SOME_GAIN = 0.02
 NEEDED_ONSETS = 250
 NEEDED_AT_MOST = 5_000
 

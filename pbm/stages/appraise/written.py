@@ -3,6 +3,7 @@
 from collections.abc import Iterable
 
 from pbm.methods.day_bootstrap import Estimate, largest
+from pbm.methods.significant import significant
 from pbm.records.figures import AloneAndWith, Figure, Percentile, WorstCase
 
 DIGITS = 7
@@ -10,7 +11,7 @@ DIGITS = 7
 
 def rounded(x: float) -> float:
     """Seven significant digits."""
-    return float(f"{x:.{DIGITS}g}")
+    return significant(x, DIGITS)
 
 
 def figure(found: Estimate) -> Figure:
